@@ -1,0 +1,1 @@
+"""Moving stock between waters: limits, plan, correction, follow."""

@@ -1,0 +1,1 @@
+"""What the water does to the animal: species tables, osmoregulation, stress, forecast."""

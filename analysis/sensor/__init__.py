@@ -1,0 +1,1 @@
+"""Whether a sensor can be believed: compensation, calibration, drift, quality, health."""

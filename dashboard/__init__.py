@@ -1,0 +1,1 @@
+"""What people see and touch: the board in the browser, the terminal command, the reports."""

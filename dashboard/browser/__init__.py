@@ -1,0 +1,1 @@
+"""The board: a Streamlit application in a browser."""

@@ -1,0 +1,1 @@
+"""Shift report and tank record."""

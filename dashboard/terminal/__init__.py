@@ -1,0 +1,1 @@
+"""The euryhale command: one room a command."""

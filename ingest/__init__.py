@@ -1,0 +1,1 @@
+"""Whatever waits, listens, writes or sends: site file, broker, worker, store, notifications."""

@@ -1,0 +1,1 @@
+"""Forwarding to the central InfluxDB, and reading back from it."""

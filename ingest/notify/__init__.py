@@ -1,0 +1,1 @@
+"""From an alarm event to a person."""

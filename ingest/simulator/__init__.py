@@ -1,0 +1,1 @@
+"""A simulated hatchery: weather, tanks, sensors with faults, publishing."""

@@ -1,0 +1,1 @@
+"""Codes and numbers to sentences, for screen, mail and terminal alike."""

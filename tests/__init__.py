@@ -1,0 +1,1 @@
+"""Tests mirror the three packages; tests/reference holds published tables, one file a source."""

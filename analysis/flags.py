@@ -82,7 +82,20 @@ class Flag(IntFlag):
 NULLING_FLAGS = Flag.NEGATIVE | Flag.NOT_FINITE | Flag.OUT_OF_RANGE | Flag.MISSING | Flag.FILLER
 """Flags that go with a null value."""
 
-FILLER_VALUES = (-9999.0, -999.0, -100.0, -99.99, -99.9, -99.0, -9999.9, -999.9, -6999.0, -7999.0, 9999.0, 99999.0)
+FILLER_VALUES = (
+    -9999.0,
+    -999.0,
+    -100.0,
+    -99.99,
+    -99.9,
+    -99.0,
+    -9999.9,
+    -999.9,
+    -6999.0,
+    -7999.0,
+    9999.0,
+    99999.0,
+)
 """Numbers that loggers write where there is no value. Common practice; -99, -99.99 and -100 were seen in public estuarine records."""
 
 
@@ -100,7 +113,12 @@ def rolled_up(flags: FlagArray) -> QualityArray:
     """Return the QARTOD quality that follows from flag words alone: 9 where null, 3 where doubted, else 1."""
     quality = np.full(flags.shape, Quality.PASS, dtype=np.uint8)
     doubted = int(
-        Flag.EXTRAPOLATED | Flag.GROSS_RANGE | Flag.RATE_OF_CHANGE | Flag.CLIMATOLOGY | Flag.MULTI_VARIATE | Flag.NEIGHBOUR
+        Flag.EXTRAPOLATED
+        | Flag.GROSS_RANGE
+        | Flag.RATE_OF_CHANGE
+        | Flag.CLIMATOLOGY
+        | Flag.MULTI_VARIATE
+        | Flag.NEIGHBOUR
     )
     quality[(flags & np.uint32(doubted)) != 0] = Quality.SUSPECT
     failed = int(Flag.NEGATIVE | Flag.OUT_OF_RANGE)

@@ -1,0 +1,137 @@
+"""What one block leaves in the store, all in one transaction."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+from typing import TYPE_CHECKING, Any, NamedTuple
+
+import msgspec
+
+from ingest.store import alarms, ledger, readings, refused, rollups
+
+if TYPE_CHECKING:
+    import sqlite3
+
+    from analysis.arrays import IntArray
+    from ingest.store.alarms import AlarmRow
+    from ingest.store.ledger import Event
+    from ingest.store.readings import ReadingRows
+    from ingest.store.refused import Refusal
+
+
+class OutboxRow(NamedTuple):
+    """A message that has to leave: to which channel, with which content."""
+
+    channel: str
+    body: dict[str, Any]
+
+
+class Occurrence(NamedTuple):
+    """An event with what hangs on it: where the alarm stands since, and the messages that must leave."""
+
+    event: Event
+    alarm: AlarmRow | None = None
+    outbox: tuple[OutboxRow, ...] = ()
+
+
+class Conflict(NamedTuple):
+    """A second reading of one moment and sensor with other values."""
+
+    measured_at: int
+    sensor: int
+    received_at: int
+    values: tuple[float, float, float]
+
+
+class StressRow(NamedTuple):
+    """What the animals of one tank feel at one moment; None is "not known"."""
+
+    measured_at: int
+    tank: int
+    cohort: str
+    stress: float | None
+    range_strain: float | None
+    change_strain: float | None
+    exposure_strain: float | None
+    thermal_strain: float | None
+    driver: str | None
+    band: str | None
+    acclimated_mOsm_kg: float | None
+    internal_mOsm_kg: float | None
+    gap_mOsm_kg: float | None
+
+
+class TankState(NamedTuple):
+    """The chain's state of one tank."""
+
+    tank: int
+    measured_at: int | None
+    body: dict[str, Any]
+
+
+@dataclass(slots=True)
+class BlockCommit:
+    """All that a block leaves. Empty parts cost nothing."""
+
+    readings: ReadingRows | None = None
+    latest: IntArray | None = None
+    sensor_states: list[bytes | None] = field(default_factory=list)
+    conflicts: list[Conflict] = field(default_factory=list)
+    refusals: list[Refusal] = field(default_factory=list)
+    counts: dict[str, int] = field(default_factory=dict)
+    stress: list[StressRow] = field(default_factory=list)
+    tank_states: list[TankState] = field(default_factory=list)
+    pending_alarms: list[AlarmRow] = field(default_factory=list)
+    occurrences: list[Occurrence] = field(default_factory=list)
+    meta: dict[str, str | int] = field(default_factory=dict)
+
+
+def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: int | None) -> list[int]:
+    """Write *block* inside the caller's transaction and return the ids of its events, in order."""
+    if block.readings is not None and len(block.readings):
+        readings.insert(connection, block.readings)
+        rollups.add_behind_mark(connection, block.readings.measured_at, block.readings.sensor, rolled_until)
+        if block.latest is not None and len(block.latest):
+            readings.upsert_latest(connection, block.readings, block.latest, block.sensor_states)
+    for conflict in block.conflicts:
+        readings.record_conflict(
+            connection,
+            measured_at=conflict.measured_at,
+            sensor=conflict.sensor,
+            received_at=conflict.received_at,
+            values=conflict.values,
+            reason="another reading of the same moment came first",
+        )
+    refused.insert(connection, block.refusals)
+    refused.count(connection, block.counts)
+    connection.executemany(f"INSERT OR REPLACE INTO stress VALUES ({', '.join('?' * 13)})", block.stress)
+    connection.executemany(
+        "INSERT OR REPLACE INTO tank_state VALUES (?, ?, ?)",
+        [(state.tank, state.measured_at, msgspec.json.encode(state.body).decode()) for state in block.tank_states],
+    )
+    for row in block.pending_alarms:
+        alarms.upsert(connection, row, event_id=None)
+    event_ids = [_write_occurrence(connection, occurrence) for occurrence in block.occurrences]
+    connection.executemany(
+        "INSERT INTO meta VALUES (?, ?) ON CONFLICT (name) DO UPDATE SET value = excluded.value",
+        list(block.meta.items()),
+    )
+    return event_ids
+
+
+def _write_occurrence(connection: sqlite3.Connection, occurrence: Occurrence) -> int:
+    event_id = ledger.append(connection, occurrence.event)
+    if occurrence.alarm is not None:
+        alarms.upsert(connection, occurrence.alarm, event_id=event_id)
+    for message in occurrence.outbox:
+        connection.execute(
+            "INSERT INTO outbox (event_id, channel, body, created_at, next_attempt_at) VALUES (?, ?, ?, ?, ?)",
+            (
+                event_id,
+                message.channel,
+                msgspec.json.encode(message.body).decode(),
+                occurrence.event.recorded_at,
+                occurrence.event.recorded_at,
+            ),
+        )
+    return event_id

@@ -94,7 +94,8 @@ def append(connection: sqlite3.Connection, event: Event) -> int:
     return event_id
 
 
-def _from_row(row: sqlite3.Row) -> Event:
+def from_row(row: sqlite3.Row) -> Event:
+    """Return the event in a row of the table `event`."""
     return Event(
         kind=row["kind"],
         subject=row["subject"],
@@ -114,14 +115,14 @@ def read(connection: sqlite3.Connection, *, kind_prefix: str = "", after_id: int
         (after_id, len(kind_prefix), kind_prefix),
     )
     for row in rows.fetchall():
-        yield int(row["id"]), _from_row(row)
+        yield int(row["id"]), from_row(row)
 
 
 def first_broken_id(connection: sqlite3.Connection) -> int | None:
     """Return the id of the first event whose hash does not follow from its content and forerunner, or None if all do."""
     previous_hash, expected_id = "", 1
     for row in connection.execute("SELECT * FROM event ORDER BY id"):
-        digest = _digest(int(row["id"]), _from_row(row), row["body"], previous_hash)
+        digest = _digest(int(row["id"]), from_row(row), row["body"], previous_hash)
         if row["id"] != expected_id or row["previous_hash"] != previous_hash or row["hash"] != digest:
             return int(row["id"])
         previous_hash, expected_id = digest, expected_id + 1

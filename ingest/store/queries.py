@@ -1,0 +1,351 @@
+"""Questions that screens and reports ask of a store: read-only, each on a short connection of its own."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Any
+
+import msgspec
+import numpy as np
+
+from ingest.store import alarms, ledger, registry, rollups
+from ingest.store.connection import reader
+from ingest.store.lock import is_held
+from ingest.store.store import store_path
+
+if TYPE_CHECKING:
+    from pathlib import Path
+
+    from analysis.arrays import FloatArray, IntArray
+    from ingest.store.alarms import AlarmRow
+    from ingest.store.ledger import Event
+
+HOUR_US = 3_600_000_000
+DAY_US = 24 * HOUR_US
+RAW_SPAN_US = 26 * HOUR_US
+Q15_SPAN_US = 62 * DAY_US
+H1_SPAN_US = 370 * DAY_US
+"""Up to these spans a chart is drawn from single readings, quarter hours, hours; beyond, from days."""
+
+
+@dataclass(frozen=True, slots=True)
+class Latest:
+    """The newest reading of one sensor; None where a value is unknown."""
+
+    sensor: str
+    measured_at: int
+    received_at: int
+    conductivity_mS_cm: float | None
+    temperature_degC: float | None
+    practical_salinity: float | None
+    absolute_salinity_g_kg: float | None
+    density_kg_m3: float | None
+    osmolality_mOsm_kg: float | None
+    flags: int
+    quality: int
+
+
+@dataclass(frozen=True, slots=True)
+class History:
+    """One sensor over time: means with extremes where a point stands for more than one reading.
+
+    All arrays have one length; NaN where nothing is known. `resolution_us` is 0 for single readings, else the
+    length of a bucket, whose time is its start. `salinity` is practical salinity, or g/kg in water that has none.
+    """
+
+    resolution_us: int
+    time_us: IntArray
+    salinity: FloatArray
+    salinity_min: FloatArray
+    salinity_max: FloatArray
+    temperature_degC: FloatArray
+    temperature_min: FloatArray
+    temperature_max: FloatArray
+    osmolality_mOsm_kg: FloatArray
+    quality: IntArray
+
+
+@dataclass(frozen=True, slots=True)
+class StressHistory:
+    """What the animals of one tank felt over time; NaN where not known."""
+
+    time_us: IntArray
+    stress: FloatArray
+    range_strain: FloatArray
+    change_strain: FloatArray
+    exposure_strain: FloatArray
+    thermal_strain: FloatArray
+    acclimated_mOsm_kg: FloatArray
+    internal_mOsm_kg: FloatArray
+    gap_mOsm_kg: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class LatestStress:
+    """The newest stress row of one tank."""
+
+    tank: str
+    measured_at: int
+    cohort: str
+    stress: float | None
+    range_strain: float | None
+    change_strain: float | None
+    exposure_strain: float | None
+    thermal_strain: float | None
+    driver: str | None
+    band: str | None
+    acclimated_mOsm_kg: float | None
+    internal_mOsm_kg: float | None
+    gap_mOsm_kg: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class Cohort:
+    """Animals of one species and stage in one tank."""
+
+    id: str
+    tank: str | None
+    animal: str
+    number: int | None
+    since: int
+    ended_at: int | None
+    body: dict[str, Any]
+
+
+@dataclass(frozen=True, slots=True)
+class Refused:
+    """A refused payload as it lies in the store."""
+
+    id: int
+    topic: str
+    received_at: int
+    payload: bytes
+    code: str
+    place: str
+    found: str
+    allowed: str
+    is_partly_kept: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Outcome:
+    """What became of a command."""
+
+    outcome: str
+    reason: str
+    decided_at: int
+
+
+def _floats(rows: list[Any], column: int) -> FloatArray:
+    return np.array([row[column] for row in rows], dtype=np.float64)
+
+
+class Queries:
+    """All questions to the store in *folder*.
+
+    Raises
+    ------
+    MissingStoreError
+        By every method, if there is no store yet.
+    """
+
+    def __init__(self, folder: Path) -> None:
+        self.folder = folder
+        self._path = store_path(folder)
+
+    def is_worker_running(self) -> bool:
+        """Return whether a worker holds the store at this moment."""
+        return is_held(self.folder)
+
+    def site_text(self) -> tuple[int, str]:
+        """Return number and text of the newest accepted site file."""
+        with reader(self._path) as connection:
+            return registry.newest_revision(connection)
+
+    def meta(self) -> dict[str, str | int]:
+        """Return the store's named single values, such as `alive_at`."""
+        with reader(self._path) as connection:
+            return {row["name"]: row["value"] for row in connection.execute("SELECT name, value FROM meta").fetchall()}
+
+    def counters(self) -> dict[str, int]:
+        """Return the counters."""
+        with reader(self._path) as connection:
+            return {
+                row["name"]: row["value"] for row in connection.execute("SELECT name, value FROM counter").fetchall()
+            }
+
+    def latest(self) -> dict[str, Latest]:
+        """Return the newest reading of every sensor that has one, by the sensor's id."""
+        with reader(self._path) as connection:
+            rows = connection.execute(
+                "SELECT slug, measured_at, received_at, conductivity_mS_cm, temperature_degC, practical_salinity,"
+                " absolute_salinity_g_kg, density_kg_m3, osmolality_mOsm_kg, flags, quality"
+                " FROM latest JOIN sensor ON sensor.id = latest.sensor"
+            ).fetchall()
+        return {row["slug"]: Latest(*row) for row in rows}
+
+    def history(self, sensor: str, *, from_us: int, to_us: int) -> History:
+        """Return one sensor over [from_us, to_us), from the table that fits the span: at most about 9,000 points."""
+        span = to_us - from_us
+        with reader(self._path) as connection:
+            row = connection.execute("SELECT id FROM sensor WHERE slug = ?", (sensor,)).fetchone()
+            number = -1 if row is None else int(row["id"])
+            if span <= RAW_SPAN_US:
+                return _raw_history(connection, number, from_us, to_us)
+            table = "q15" if span <= Q15_SPAN_US else "h1" if span <= H1_SPAN_US else "d1"
+            return _rolled_history(connection, table, number, from_us, to_us)
+
+    def day_lines(self, *, from_us: int, to_us: int) -> dict[str, tuple[IntArray, FloatArray]]:
+        """Return (time, salinity) of every sensor in quarter hours: for small lines beside many tanks."""
+        bucket = rollups.LEVELS["q15"]
+        with reader(self._path) as connection:
+            mark = rollups.rolled_until(connection) or from_us
+            rows = connection.execute(
+                "SELECT slug, bucket, salinity_sum / nullif(salinity_n, 0) FROM sensor CROSS JOIN q15 ON q15.sensor = sensor.id"
+                " WHERE bucket >= ? AND bucket < ? ORDER BY slug, bucket",
+                (from_us, to_us),
+            ).fetchall()
+            tail = connection.execute(
+                f"SELECT slug, measured_at / {bucket} * {bucket} AS bucket,"
+                " avg(CASE WHEN quality < 4 THEN coalesce(practical_salinity, absolute_salinity_g_kg) END)"
+                " FROM reading JOIN sensor ON sensor.id = reading.sensor"
+                " WHERE measured_at >= ? AND measured_at < ? GROUP BY 1, 2 ORDER BY 1, 2",
+                (max(mark // bucket * bucket, from_us), to_us),
+            ).fetchall()
+        # The open bucket stands half in the rollup, half behind the mark: the tail, read from its start, replaces it.
+        points: dict[str, dict[int, float]] = {}
+        for slug, start, value in (*rows, *tail):
+            points.setdefault(slug, {})[int(start)] = np.nan if value is None else float(value)
+        lines = {}
+        for slug, by_time in points.items():
+            times = sorted(by_time)
+            lines[slug] = (
+                np.array(times, dtype=np.int64),
+                np.array([by_time[time] for time in times], dtype=np.float64),
+            )
+        return lines
+
+    def stress_history(self, tank: str, *, from_us: int, to_us: int, most: int = 3000) -> StressHistory:
+        """Return what the animals of *tank* felt over [from_us, to_us): the worst row of each of at most *most* steps."""
+        step = max(60_000_000, (to_us - from_us) // most)
+        with reader(self._path) as connection:
+            rows = connection.execute(
+                "SELECT measured_at, max(stress), range_strain, change_strain, exposure_strain, thermal_strain,"
+                " acclimated_mOsm_kg, internal_mOsm_kg, gap_mOsm_kg FROM stress"
+                " WHERE measured_at >= ? AND measured_at < ? AND tank = (SELECT id FROM tank WHERE slug = ?)"
+                " GROUP BY measured_at / ? ORDER BY measured_at",
+                (from_us, to_us, tank, step),
+            ).fetchall()
+        times = np.array([row[0] for row in rows], dtype=np.int64)
+        return StressHistory(times, *(_floats(rows, column) for column in range(1, 9)))
+
+    def latest_stress(self, *, since_us: int) -> dict[str, LatestStress]:
+        """Return the newest stress row of each tank that has one measured since *since_us*."""
+        with reader(self._path) as connection:
+            rows = connection.execute(
+                "SELECT slug, max(measured_at), cohort, stress, range_strain, change_strain, exposure_strain, thermal_strain,"
+                " driver, band, acclimated_mOsm_kg, internal_mOsm_kg, gap_mOsm_kg FROM stress JOIN tank ON tank.id = stress.tank"
+                " WHERE measured_at >= ? GROUP BY tank",
+                (since_us,),
+            ).fetchall()
+        return {row["slug"]: LatestStress(*row) for row in rows}
+
+    def alarms(self) -> list[AlarmRow]:
+        """Return where every alarm that ever was stands now."""
+        with reader(self._path) as connection:
+            return alarms.read_all(connection)
+
+    def events(
+        self,
+        *,
+        kind_prefix: str = "",
+        subject: str | None = None,
+        from_us: int = 0,
+        to_us: int = 2**62,
+        most: int = 500,
+    ) -> list[tuple[int, Event]]:
+        """Return the newest ledger events that fit, oldest first."""
+        with reader(self._path) as connection:
+            rows = connection.execute(
+                "SELECT * FROM event WHERE substr(kind, 1, ?) = ? AND (? IS NULL OR subject = ?)"
+                " AND coalesce(measured_at, recorded_at) >= ? AND coalesce(measured_at, recorded_at) < ? ORDER BY id DESC LIMIT ?",
+                (len(kind_prefix), kind_prefix, subject, subject, from_us, to_us, most),
+            ).fetchall()
+        return [(int(row["id"]), ledger.from_row(row)) for row in reversed(rows)]
+
+    def cohorts(self) -> list[Cohort]:
+        """Return all cohorts, those that have ended too."""
+        with reader(self._path) as connection:
+            rows = connection.execute(
+                "SELECT cohort.id, slug, animal, number, since, ended_at, body FROM cohort LEFT JOIN tank ON tank.id = cohort.tank"
+            ).fetchall()
+        return [Cohort(*row[:6], msgspec.json.decode(row["body"])) for row in rows]
+
+    def tank_states(self) -> dict[str, dict[str, Any]]:
+        """Return the chain's state of each tank, by the tank's id."""
+        with reader(self._path) as connection:
+            rows = connection.execute(
+                "SELECT slug, body FROM tank_state JOIN tank ON tank.id = tank_state.tank"
+            ).fetchall()
+        return {row["slug"]: msgspec.json.decode(row["body"]) for row in rows}
+
+    def refused(self, *, most: int = 200) -> list[Refused]:
+        """Return the newest refused payloads, newest first."""
+        with reader(self._path) as connection:
+            rows = connection.execute("SELECT * FROM refused ORDER BY id DESC LIMIT ?", (most,)).fetchall()
+        return [Refused(*row[:8], bool(row["is_partly_kept"])) for row in rows]
+
+    def outcome(self, command_id: str) -> Outcome | None:
+        """Return what became of a command, or None while it waits."""
+        with reader(self._path) as connection:
+            row = connection.execute(
+                "SELECT outcome, reason, decided_at FROM command_outcome WHERE id = ?", (command_id,)
+            ).fetchone()
+        return None if row is None else Outcome(*row)
+
+    def reading_count(self) -> int:
+        """Return how many readings are stored."""
+        with reader(self._path) as connection:
+            return int(connection.execute("SELECT count(*) FROM reading").fetchone()[0])
+
+
+def _raw_history(connection: Any, sensor: int, from_us: int, to_us: int) -> History:
+    rows = connection.execute(
+        "SELECT measured_at, coalesce(practical_salinity, absolute_salinity_g_kg), temperature_degC, osmolality_mOsm_kg, quality"
+        " FROM reading WHERE measured_at >= ? AND measured_at < ? AND sensor = ? ORDER BY measured_at",
+        (from_us, to_us, sensor),
+    ).fetchall()
+    salinity, temperature = _floats(rows, 1), _floats(rows, 2)
+    return History(
+        resolution_us=0,
+        time_us=np.array([row[0] for row in rows], dtype=np.int64),
+        salinity=salinity,
+        salinity_min=salinity,
+        salinity_max=salinity,
+        temperature_degC=temperature,
+        temperature_min=temperature,
+        temperature_max=temperature,
+        osmolality_mOsm_kg=_floats(rows, 3),
+        quality=np.array([row[4] for row in rows], dtype=np.int64),
+    )
+
+
+def _rolled_history(connection: Any, table: str, sensor: int, from_us: int, to_us: int) -> History:
+    rows = connection.execute(
+        "SELECT bucket, salinity_sum / nullif(salinity_n, 0), salinity_min, salinity_max,"
+        " temperature_sum / nullif(temperature_n, 0), temperature_min, temperature_max, osmolality_sum / nullif(salinity_n, 0),"
+        f" CASE WHEN suspect_n * 2 > n THEN 3 ELSE 1 END FROM {table} WHERE sensor = ? AND bucket >= ? AND bucket < ? ORDER BY bucket",
+        (sensor, from_us, to_us),
+    ).fetchall()
+    return History(
+        resolution_us=rollups.LEVELS[table],
+        time_us=np.array([row[0] for row in rows], dtype=np.int64),
+        salinity=_floats(rows, 1),
+        salinity_min=_floats(rows, 2),
+        salinity_max=_floats(rows, 3),
+        temperature_degC=_floats(rows, 4),
+        temperature_min=_floats(rows, 5),
+        temperature_max=_floats(rows, 6),
+        osmolality_mOsm_kg=_floats(rows, 7),
+        quality=np.array([row[8] for row in rows], dtype=np.int64),
+    )

@@ -77,6 +77,8 @@ class Flag(IntFlag):
     """QARTOD gap test fail: the time since the reading before is longer than allowed."""
     WATER_KIND_DOUBTED = 1 << 21
     """The kind of water was outside the table made for it (for example beyond the tabulated dilution)."""
+    NOISE = 1 << 22
+    """The sensor jumps about more than its water does: many large second differences in a few hours."""
 
 
 NULLING_FLAGS = Flag.NEGATIVE | Flag.NOT_FINITE | Flag.OUT_OF_RANGE | Flag.MISSING | Flag.FILLER

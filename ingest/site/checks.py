@@ -6,6 +6,7 @@ gets everything at once. What has the wrong shape is passed over here; the model
 
 from __future__ import annotations
 
+from functools import cache
 from typing import TYPE_CHECKING, Any
 from zoneinfo import available_timezones
 
@@ -57,12 +58,18 @@ def ids(document: Document, section: str) -> list[str]:
     return [entry["id"] for _, entry in items(document, section) if isinstance(entry.get("id"), str)]
 
 
+@cache
+def time_zones() -> frozenset[str]:
+    """Return the names of the IANA list; the machine's disk is searched once."""
+    return frozenset(available_timezones())
+
+
 def _time_zone(document: Document) -> Iterator[Problem]:
     path = ("site", "time_zone")
     zone = document.value(path)
     if not isinstance(zone, str):
         return
-    zones = available_timezones()
+    zones = time_zones()
     if zone not in zones:
         nearest = nearest_word(zone, zones) or _zone_by_city(zone, zones)
         yield document.problem(path, zone, "a time zone of the IANA list, such as Europe/Lisbon", nearest)

@@ -20,7 +20,8 @@ Path = tuple[str | int, ...]
 _WHOLE = re.compile(r"-?(0|[1-9][0-9]{0,17})\Z")
 _DECIMAL = re.compile(r"[-+]?([0-9]+\.[0-9]*|\.[0-9]+|[0-9]+)([eE][-+]?[0-9]{1,3})?\Z")
 _LEADING_ZERO = re.compile(r"[-+]?0[0-9]")
-_BLOCK_TEXT_HINTS = (
+_HINTS = (
+    ("but got ':'", "one 'key: value' between two commas; put a text that holds ': ' in quotes"),
     ("mapping values are not allowed", "one 'key: value' a line; put a text that holds ': ' in quotes"),
     ("cannot start any token", "a text that begins with a letter; put texts that begin with @ ` % or a tab in quotes"),
     ("could not find expected ':'", "'key: value' with a colon and a space"),
@@ -120,10 +121,12 @@ def _problems_of_syntax(error: MarkedYAMLError, text: str, name: str) -> list[Pr
     tabbed = [number for number, line in enumerate(lines, 1) if "\t" in line[: len(line) - len(line.lstrip())]]
     if tabbed:
         return [Problem(name, number, "", "a tab before the first word", "spaces only") for number in tabbed]
-    mark = error.problem_mark or error.context_mark
-    number = mark.line + 1 if mark else 1
     said = f"{error.context or ''} {error.problem or ''}".strip()
-    allowed = next((hint for part, hint in _BLOCK_TEXT_HINTS if part in said), "well-formed YAML")
+    # What is never closed is best shown where it was opened.
+    is_open = "quoted scalar" in said or "while parsing a flow" in said
+    mark = (error.context_mark if is_open else None) or error.problem_mark or error.context_mark
+    number = mark.line + 1 if mark else 1
+    allowed = next((hint for part, hint in _HINTS if part in said), "well-formed YAML")
     line = lines[number - 1].strip() if number <= len(lines) else "the end of the file"
     return [Problem(name, number, "", shown(line), f"{allowed} ({said})")]
 

@@ -279,7 +279,18 @@ class Queries:
             rows = connection.execute(
                 "SELECT cohort.id, slug, animal, number, since, ended_at, body FROM cohort LEFT JOIN tank ON tank.id = cohort.tank"
             ).fetchall()
-        return [Cohort(*row[:6], msgspec.json.decode(row["body"])) for row in rows]
+        return [
+            Cohort(
+                id=row["id"],
+                tank=row["slug"],
+                animal=row["animal"],
+                number=row["number"],
+                since=row["since"],
+                ended_at=row["ended_at"],
+                body=msgspec.json.decode(row["body"]),
+            )
+            for row in rows
+        ]
 
     def tank_states(self) -> dict[str, dict[str, Any]]:
         """Return the chain's state of each tank, by the tank's id."""
@@ -293,7 +304,7 @@ class Queries:
         """Return the newest refused payloads, newest first."""
         with reader(self._path) as connection:
             rows = connection.execute("SELECT * FROM refused ORDER BY id DESC LIMIT ?", (most,)).fetchall()
-        return [Refused(*row[:8], bool(row["is_partly_kept"])) for row in rows]
+        return [Refused(**{**dict(row), "is_partly_kept": bool(row["is_partly_kept"])}) for row in rows]
 
     def outcome(self, command_id: str) -> Outcome | None:
         """Return what became of a command, or None while it waits."""

@@ -202,7 +202,7 @@ def step(
 
     With volume :math:`V(t) = V_0 + at` and constant gains :math:`F`, each of mass, salt and heat obeys
     :math:`dX/dt = F - Q_{out} X/V`, whose solution in :math:`c = X/V` is
-    :math:`c = c_0 e^{-b\tau} + F\tau\\,\phi(-b\tau)` with :math:`b = Q_{out} + a`,
+    :math:`c = c_0 e^{-b\tau} + F\tau\,\phi(-b\tau)` with :math:`b = Q_{out} + a`,
     :math:`\tau = \ln(V/V_0)/a` and :math:`\phi(x) = (e^x - 1)/x`. At constant volume that is the
     exponential law of flow-through in salt mass.
 

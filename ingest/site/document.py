@@ -19,6 +19,8 @@ Path = tuple[str | int, ...]
 
 _WHOLE = re.compile(r"-?(0|[1-9][0-9]{0,17})\Z")
 _DECIMAL = re.compile(r"[-+]?([0-9]+\.[0-9]*|\.[0-9]+|[0-9]+)([eE][-+]?[0-9]{1,3})?\Z")
+_BRACKET = re.compile(r"[\[\]{}\n]")
+_SHALLOW = f"at most {DEEPEST} levels"
 _LEADING_ZERO = re.compile(r"[-+]?0[0-9]")
 _HINTS = (
     ("but got ':'", "one 'key: value' between two commas; put a text that holds ': ' in quotes"),
@@ -97,12 +99,15 @@ def read_document(text: str, name: str) -> Document:
         allowed = f"at most {LARGEST_FILE_CHARACTERS} characters"
         document.problems.append(Problem(name, 1, "", f"{len(text)} characters", allowed))
         return document
+    if (line := _line_nested_too_deep(text)) is not None:
+        document.problems.append(Problem(name, line, "", "groups nested without end", _SHALLOW))
+        return document
     try:
-        node = YAML(typ="rt", pure=True).compose(text)
+        node = YAML(typ="rt", pure=True, plug_ins=[]).compose(text)
     except MarkedYAMLError as error:
         document.problems.extend(_problems_of_syntax(error, text, name))
     except RecursionError:
-        document.problems.append(Problem(name, 1, "", "groups nested without end", f"at most {DEEPEST} levels"))
+        document.problems.append(Problem(name, 1, "", "groups nested without end", _SHALLOW))
     except (YAMLError, ValueError) as error:
         document.problems.append(_problem_of_character(error, text, name))
     else:
@@ -113,6 +118,19 @@ def read_document(text: str, name: str) -> Document:
             Problem(name, line, document.key(path), found, allowed) for line, path, found, allowed in reading.complaints
         )
     return document
+
+
+def _line_nested_too_deep(text: str) -> int | None:
+    """Return the line in which brackets reach an absurd depth; the parser's time grows with its square."""
+    depth, line = 0, 1
+    for match in _BRACKET.finditer(text):
+        if match[0] == "\n":
+            line += 1
+        else:
+            depth = depth + 1 if match[0] in "[{" else max(depth - 1, 0)
+            if depth > 4 * DEEPEST:
+                return line
+    return None
 
 
 def _problems_of_syntax(error: MarkedYAMLError, text: str, name: str) -> list[Problem]:
@@ -153,7 +171,7 @@ class _Reading:
             return None
         self.seen.add(id(node))
         if len(path) > DEEPEST:
-            self.complain(node, path, "groups nested too deep", f"at most {DEEPEST} levels")
+            self.complain(node, path, "groups nested too deep", _SHALLOW)
             return None
         if not str(node.tag).startswith("tag:yaml.org,2002:") or "python" in str(node.tag):
             self.complain(node, path, f"the type mark {node.tag}", "plain values: no ! in a site file")

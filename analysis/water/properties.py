@@ -83,9 +83,8 @@ class WaterKind(Protocol):
     def salinity_unit(self) -> str:
         """The unit of `salinity` in this kind of water: ``1`` (practical salinity) or ``g/kg``."""
 
-    @property
-    def model_uncertainty_percent(self) -> float:
-        """Standard uncertainty of osmolality that the water model itself adds. [%]"""
+    def model_uncertainty_percent(self, temperature_degC: ArrayLike) -> FloatArray:
+        """Return what the water model itself adds to the uncertainty of osmolality. [%]"""
 
     def properties(
         self,
@@ -97,6 +96,11 @@ class WaterKind(Protocol):
         latitude: ArrayLike = np.nan,
     ) -> WaterProperties:
         """Return what the readings say of the water."""
+
+    def salinity_from_conductivity(
+        self, conductivity_mS_cm: ArrayLike, *, temperature_degC: ArrayLike, pressure_dbar: ArrayLike = 0.0
+    ) -> FloatArray:
+        """Return salinity alone, without flags: NaN where the reading cannot be used."""
 
     def conductivity_mS_cm(
         self, *, salinity: ArrayLike, temperature_degC: ArrayLike, pressure_dbar: ArrayLike = 0.0
@@ -187,8 +191,10 @@ class Seawater:
 
     name: str = "seawater"
     salinity_unit: str = "1"
-    model_uncertainty_percent: float = 0.0
-    """Seawater is the reference composition itself: its model's 0.1 to 0.3 % is stated, not added."""
+
+    def model_uncertainty_percent(self, temperature_degC: ArrayLike) -> FloatArray:
+        """Return 0: the relation is that of the reference composition; its 0.1 to 0.3 % is stated, not added."""
+        return np.zeros(np.shape(temperature_degC))
 
     def properties(
         self,
@@ -254,6 +260,14 @@ class Seawater:
                 absolute, temperature_degC=temperature, pressure_dbar=pressure
             ),
             flags=flags,
+        )
+
+    def salinity_from_conductivity(
+        self, conductivity_mS_cm: ArrayLike, *, temperature_degC: ArrayLike, pressure_dbar: ArrayLike = 0.0
+    ) -> FloatArray:
+        """Return practical salinity alone, without flags. [1]"""
+        return practical_salinity_from_conductivity(
+            conductivity_mS_cm, temperature_degC=temperature_degC, pressure_dbar=pressure_dbar
         )
 
     def conductivity_mS_cm(

@@ -76,7 +76,7 @@ def high_verdict(value: ArrayLike, *, limit: ArrayLike, deadband: ArrayLike, usa
     verdict += value >= limit - deadband
     unknown = ~np.asarray(usable) & ~np.isnan(limit)
     if unknown.any():
-        verdict[unknown] = Verdict.UNKNOWN
+        return np.where(unknown, np.int8(Verdict.UNKNOWN), verdict)
     return verdict
 
 

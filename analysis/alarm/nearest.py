@@ -202,7 +202,8 @@ def _running_rows(
     times = np.where(in_block, judged_at_us[order][source], latest.judged_at_us[tanks])
     before = is_usable(latest.value[tanks], quality=latest.quality[tanks])
     usables = np.where(in_block, usable[order][source], before)
-    at_us = _running_maximum(times.max(axis=1), start, latest.judged_at_us.max(axis=1)[tanks])
+    # Each sensor's own time never falls, since late readings are out: so the newest of them does not fall either.
+    at_us = times.max(axis=1)
     stale = np.zeros((places.tank_count, places.slot_count), dtype=np.int64)
     stale[places.tank, places.slot] = stale_after_us
     # Compared by adding, not by subtracting: the time of a sensor that never spoke is near the smallest integer.
@@ -221,15 +222,6 @@ def _running_rows(
         high_at[back],
         (picked.believable_count > 0)[back],
     )
-
-
-def _running_maximum(values: IntArray, start: IntArray, floor: IntArray) -> IntArray:
-    """Return the running maximum within each segment, never below the floor."""
-    values = np.maximum(values, floor)
-    running = values.copy()
-    for position in np.flatnonzero(np.arange(values.size) > start):
-        running[position] = max(running[position], running[position - 1])
-    return running
 
 
 def _with_block(

@@ -88,7 +88,8 @@ def salinity_band(
     is_tidal = ~np.isnan(tide_low) & ~np.isnan(tide_high)
     low = np.where(is_tidal, tide_low, point - half)
     high = np.where(is_tidal, tide_high, point + half)
-    return _tightened(low, high, low_limit, high_limit)
+    middle = np.where(is_tidal, (tide_low + tide_high) / 2, point)
+    return _tightened(low, high, low_limit, high_limit, middle=middle)
 
 
 def temperature_band(
@@ -115,7 +116,7 @@ def temperature_band(
         *(np.asarray(item, dtype=np.float64) for item in (tolerable_low_degC, tolerable_high_degC)),
     )
     _refuse("half-width of the temperature band", half, half <= 0, "above 0 K")
-    return _tightened(point - half, point + half, low_limit, high_limit, span=span_K)
+    return _tightened(point - half, point + half, low_limit, high_limit, middle=point, span=span_K)
 
 
 def _refuse(what: str, values: FloatArray, is_bad: BoolArray, allowed: str) -> None:
@@ -125,9 +126,14 @@ def _refuse(what: str, values: FloatArray, is_bad: BoolArray, allowed: str) -> N
 
 
 def _tightened(
-    low: FloatArray, high: FloatArray, low_limit: FloatArray, high_limit: FloatArray, *, span: float = SALINITY_SPAN
+    low: FloatArray,
+    high: FloatArray,
+    low_limit: FloatArray,
+    high_limit: FloatArray,
+    *,
+    middle: FloatArray,
+    span: float = SALINITY_SPAN,
 ) -> SetPointBand:
-    middle = (low + high) / 2
     is_outside = (low_limit > middle) | (high_limit < middle)
     is_low_backstop = (low_limit > low) & ~is_outside
     is_high_backstop = (high_limit < high) & ~is_outside

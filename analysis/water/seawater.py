@@ -218,6 +218,37 @@ def density_from_absolute_salinity(
     return _floats(gsw.rho_t_exact(salinity, _floats(temperature_degC), _floats(pressure_dbar)))
 
 
+def absolute_salinity_from_density(
+    density_kg_m3: ArrayLike, *, temperature_degC: ArrayLike, pressure_dbar: ArrayLike = 0.0
+) -> FloatArray:
+    """Return Absolute Salinity from density: the inverse of `density_from_absolute_salinity`.
+
+    Parameters
+    ----------
+    density_kg_m3 : array_like
+        At least that of pure water at the same temperature. [kg/m3]
+    temperature_degC : array_like
+        ITS-90 temperature. [degC]
+    pressure_dbar : array_like
+        Sea pressure. [dbar]
+
+    Returns
+    -------
+    ndarray of float64
+        NaN where the density is below that of pure water or above that of 120 g/kg. [g/kg]
+    """
+    density, temperature = _floats(density_kg_m3), _floats(temperature_degC)
+    salinity = np.full(np.broadcast_shapes(density.shape, temperature.shape, np.shape(pressure_dbar)), 20.0)
+    for _ in range(12):  # secant of fixed slope: the slope varies by 10 %, so each step gains a digit
+        found = density_from_absolute_salinity(
+            np.clip(salinity, 0.0, HIGHEST_ABSOLUTE_SALINITY_G_KG),
+            temperature_degC=temperature,
+            pressure_dbar=pressure_dbar,
+        )
+        salinity = np.clip(salinity, 0.0, HIGHEST_ABSOLUTE_SALINITY_G_KG) + (density - found) / 0.76
+    return _between(np.where(np.abs(salinity) < 1e-9, 0.0, salinity), 0.0, HIGHEST_ABSOLUTE_SALINITY_G_KG)
+
+
 def molality_from_absolute_salinity(absolute_salinity_g_kg: ArrayLike) -> FloatArray:
     """Return the molality of all particles of sea salt [mol/kg water] (TEOS-10 manual, section 2.38)."""
     salinity = _floats(absolute_salinity_g_kg)

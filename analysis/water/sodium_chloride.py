@@ -25,8 +25,11 @@ MOLAR_MASS_G_MOL: Final = 58.4428
 """Molar mass of sodium chloride (IUPAC atomic weights)."""
 
 HIGHEST_FITTED_MOLALITY: Final = 1.5
-HIGHEST_MOLALITY: Final = 2.0
-"""Up to 1.5 mol/kg the conductivity relation is fitted; to 2.0 it is continued (0.4 %) and marked. [mol/kg]"""
+HIGHEST_MOLALITY: Final = 2.1
+"""Up to 1.5 mol/kg the conductivity relation is fitted; to 2.1 it is continued (0.6 %) and marked. [mol/kg]"""
+
+HIGHEST_PITZER_MOLALITY: Final = 6.0
+"""End of Pitzer's equation for NaCl: near saturation. [mol/kg]"""
 
 # ln(kappa / m) = sum a_ij m^(i/2) ((t - 20) / 20)^j, kappa in mS/cm: our own fit of what PHREEQC 3.8.6 with its
 # phreeqc.dat computes for NaCl (0 to 40 degC, 0.0003 to 1.5 mol/kg, largest difference 0.15 %); one row for
@@ -53,16 +56,17 @@ _VOLUME_FIT = (
 )
 
 # osm_fp [mol/kg] = m * (2 + sum d_k m^(k/2)): our own fit of the exact value (`exact_osmolality_from_molality`),
-# 0 to 2 mol/kg, relative error at most 8e-6.
+# 0 to 2.1 mol/kg, relative error at most 3e-6.
 _FREEZING_POINT_FIT = (
     2.0,
-    -0.7524326229958205,
-    1.4750639653526803,
-    -1.9217427107719491,
-    1.7403609104290676,
-    -1.011131378673305,
-    0.34566411315677303,
-    -0.05208547398171948,
+    -0.753095796445,
+    1.4873393515,
+    -1.9982111368,
+    1.96529701994,
+    -1.36388120373,
+    0.648918189201,
+    -0.186927850188,
+    0.0242454851843,
 )
 
 # Moeller 1988: P(T) = a0 + a1 T + a2/T + a3 ln T + a4/(T - 263) + a5 T^2 + a6/(680 - T) + a7/(T - 227)
@@ -92,9 +96,9 @@ def _polynomial(coefficients: tuple[float, ...], x: FloatArray) -> FloatArray:
     return total
 
 
-def _possible(molality: ArrayLike) -> FloatArray:
+def _possible(molality: ArrayLike, *, highest: float = HIGHEST_MOLALITY) -> FloatArray:
     values = _floats(molality)
-    return np.where((values >= 0.0) & (values <= HIGHEST_MOLALITY * (1.0 + 1e-9)), values, np.nan)
+    return np.where((values >= 0.0) & (values <= highest * (1.0 + 1e-9)), values, np.nan)
 
 
 def _moeller(temperature_K: FloatArray, a: tuple[float, ...]) -> FloatArray:
@@ -144,7 +148,7 @@ def osmotic_coefficient_from_molality(molality_mol_kg: ArrayLike, *, temperature
     Parameters
     ----------
     molality_mol_kg : array_like
-        0 to 2. [mol/kg water]
+        0 to 6. [mol/kg water]
     temperature_degC : array_like
         -9 to 45. [degC]
 
@@ -157,7 +161,8 @@ def osmotic_coefficient_from_molality(molality_mol_kg: ArrayLike, *, temperature
     ----------
     K. S. Pitzer and G. Mayorga 1973, J. Phys. Chem. 77, 2300, eq. 3, with the parameters of `pitzer_parameters`.
     """
-    molality, temperature = _possible(molality_mol_kg), _floats(temperature_degC)
+    molality = _possible(molality_mol_kg, highest=HIGHEST_PITZER_MOLALITY)
+    temperature = _floats(temperature_degC)
     usable = np.where((temperature >= -9.0) & (temperature <= 45.0), temperature, np.nan)
     at = pitzer_parameters(usable)
     root = np.sqrt(molality)
@@ -178,7 +183,7 @@ def osmolality_from_molality(molality_mol_kg: ArrayLike) -> FloatArray:
     Parameters
     ----------
     molality_mol_kg : array_like
-        0 to 2. [mol/kg water]
+        0 to 2.1. [mol/kg water]
 
     Returns
     -------
@@ -206,7 +211,7 @@ def exact_osmolality_from_molality(molality_mol_kg: ArrayLike) -> FloatArray:
 
 
 def molality_from_osmolality(osmolality_mOsm_kg: ArrayLike) -> FloatArray:
-    """Return molality from osmolality on the freezing-point basis; NaN beyond 2 mol/kg. [mol/kg water]"""
+    """Return molality from osmolality on the freezing-point basis; NaN beyond 2.1 mol/kg. [mol/kg water]"""
     wanted = _floats(osmolality_mOsm_kg)
     highest = float(osmolality_from_molality(HIGHEST_MOLALITY))
     wanted = np.where((wanted >= 0.0) & (wanted <= highest), wanted, np.nan)
@@ -241,7 +246,7 @@ def conductivity_from_molality(molality_mol_kg: ArrayLike, *, temperature_degC: 
     Parameters
     ----------
     molality_mol_kg : array_like
-        0 to 2. [mol/kg water]
+        0 to 2.1. [mol/kg water]
     temperature_degC : array_like
         -2 to 45; fitted from 0 to 40. [degC]
 
@@ -270,7 +275,7 @@ def molality_from_conductivity(conductivity_mS_cm: ArrayLike, *, temperature_deg
     Returns
     -------
     ndarray of float64
-        0 up to 0.002 mS/cm; NaN where negative, NaN, or beyond 2 mol/kg. [mol/kg water]
+        0 up to 0.002 mS/cm; NaN where negative, NaN, or beyond 2.1 mol/kg. [mol/kg water]
     """
     conductivity, temperature = np.broadcast_arrays(_floats(conductivity_mS_cm), _floats(temperature_degC))
     salty = conductivity > BELOW_RANGE_MS_CM
@@ -310,7 +315,7 @@ def density_from_molality(
     Parameters
     ----------
     molality_mol_kg : array_like
-        0 to 2. [mol/kg water]
+        0 to 2.1. [mol/kg water]
     temperature_degC : array_like
         [degC]
     pressure_dbar : array_like

@@ -138,7 +138,7 @@ class SaltDose:
 def dose_for_osmolality(osmolality_mOsm_kg: float, *, temperature_degC: float = 25.0) -> SaltDose:
     """Return the dose of pure, dry sodium chloride for an osmolality on the freezing-point basis.
 
-    Every number of the result is NaN where the osmolality is beyond 2 mol/kg. For a damp or impure salt divide
+    Every number of the result is NaN where the osmolality is beyond 2.1 mol/kg. For a damp or impure salt divide
     the grams by its dry fraction.
     """
     molality = float(molality_from_osmolality(osmolality_mOsm_kg))

@@ -1,0 +1,1 @@
+"""Can this reading be believed? Real-time quality tests after the QARTOD manual, for all sensors at once."""

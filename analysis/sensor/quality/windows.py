@@ -1,0 +1,265 @@
+"""What the completed buckets of a sensor say of the one being filled: limits and levels that hold for a bucket.
+
+Computed once a bucket and sensor, not once a reading; a block of live readings mostly finds them in the state.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING, Final
+
+import numpy as np
+
+from analysis.sensor.quality.limits import MEMORY_BUCKETS
+from analysis.sensor.quality.state import (
+    ATTENUATED_LEVEL,
+    BEYOND,
+    COMPARED,
+    COMPARED_BEFORE,
+    COUNT,
+    FLAT_FAIL_HIGH,
+    FLAT_FAIL_LOW,
+    FLAT_JUDGED,
+    FLAT_SUSPECT_HIGH,
+    FLAT_SUSPECT_LOW,
+    HIGHEST,
+    LOWEST,
+    NEIGHBOUR_LEVEL,
+    NOISY,
+    NOISY_BEFORE,
+    RATE_LIMIT,
+    RESOLUTION,
+    SQUARES,
+    SUM,
+    TALLIES,
+    TIGHT_RATE_LIMIT,
+    VERDICTS,
+)
+from analysis.sensor.quality.thresholds import NO_NEIGHBOUR
+from analysis.sensor.quality.words import VARIABLES, Variable
+
+if TYPE_CHECKING:
+    from collections.abc import Callable
+
+    from analysis.arrays import FloatArray, IntArray
+    from analysis.sensor.quality.thresholds import Thresholds
+
+FEWEST_FOR_DEVIATION: Final = 12
+"""Readings needed before a standard deviation is used."""
+
+SHARE_OF_WINDOW: Final = 0.75
+"""Share of an attenuated-signal window's buckets that must hold readings."""
+
+
+@dataclass(slots=True)
+class Line:
+    """Tallies of one sensor's buckets in a row, the empty ones between them filled in.
+
+    Parameters
+    ----------
+    tally : ndarray of int64, (buckets, 7, 3)
+        The first `MEMORY_BUCKETS` are padding.
+    sums : ndarray of int64, (buckets + 1, 7, 3)
+        Running sums of the above.
+    """
+
+    tally: IntArray
+    sums: IntArray
+
+    def over(self, at: IntArray, width: int) -> IntArray:
+        """Return sums over the *width* buckets before each of *at*."""
+        return np.asarray(self.sums[at] - self.sums[at - width])
+
+    def lowest(self, at: IntArray, width: int, variable: int) -> IntArray:
+        """Return the lowest value in the *width* buckets before each of *at*."""
+        return np.asarray(self.tally[at[:, None] + np.arange(-width, 0), LOWEST, variable].min(axis=1))
+
+    def highest(self, at: IntArray, width: int, variable: int) -> IntArray:
+        """Return the highest value in the *width* buckets before each of *at*."""
+        return np.asarray(self.tally[at[:, None] + np.arange(-width, 0), HIGHEST, variable].max(axis=1))
+
+    def filled(self, at: IntArray, width: int) -> IntArray:
+        """Return how many of the *width* buckets before each of *at* hold readings, (at, 3)."""
+        return np.asarray((self.tally[at[:, None] + np.arange(-width, 0), COUNT] > 0).sum(axis=1))
+
+
+def line(bucket: IntArray, tally: IntArray) -> tuple[Line, IntArray]:
+    """Return buckets in a row, and the place of each of *bucket* in it.
+
+    A hole longer than the memory is closed up to one bucket more than the memory: nothing looks across it.
+    """
+    steps = np.minimum(np.diff(bucket), MEMORY_BUCKETS + 1)
+    place = np.concatenate(([MEMORY_BUCKETS], MEMORY_BUCKETS + np.cumsum(steps)))
+    length = int(place[-1]) + 1
+    full = np.zeros((length, TALLIES, VARIABLES), dtype=np.int64)
+    full[:, LOWEST], full[:, HIGHEST] = BEYOND, -BEYOND
+    full[place] = tally
+    sums = np.zeros((length + 1, TALLIES, VARIABLES), dtype=np.int64)
+    np.cumsum(full, axis=0, out=sums[1:])
+    return Line(tally=full, sums=sums), place
+
+
+def verdicts(
+    sensor: int,
+    *,
+    bucket: IntArray,
+    tally: IntArray,
+    count: int,
+    thresholds: Thresholds,
+    water_changed_us: int,
+    neighbour_tally: Callable[[int], IntArray | None],
+) -> FloatArray:
+    """Return what holds for the last *count* of a sensor's buckets, from those before each.
+
+    Parameters
+    ----------
+    sensor : int
+    bucket : ndarray of int64, (buckets,)
+        Numbers of the buckets that hold readings, rising.
+    tally : ndarray of int64, (buckets, 7, 3)
+    count : int
+        How many of the last buckets are asked for.
+    thresholds : Thresholds
+    water_changed_us : int
+        Time of the last logged water change.
+    neighbour_tally : callable
+        Returns the neighbour's tally of a bucket by number, or None.
+
+    Returns
+    -------
+    ndarray of float64, (count, 11, 3)
+        Rows `RATE_LIMIT` to `NEIGHBOUR_LEVEL` of `analysis.sensor.quality.state`.
+    """
+    row, place = line(bucket, tally)
+    at, numbers = place[-count:], bucket[-count:]
+    out = np.zeros((count, VERDICTS, VARIABLES))
+    _rate_limits(out, row, at, sensor, thresholds)
+    _noise_before(out, row, at, int(thresholds.noise_buckets[sensor]))
+    _flat_windows(out, row, at, sensor, thresholds)
+    out[:, ATTENUATED_LEVEL] = _attenuated(row, at, sensor, thresholds)
+    if thresholds.is_still[sensor]:
+        _hold_back_still_water(out, row, at, numbers, sensor, thresholds, water_changed_us, neighbour_tally)
+    if thresholds.neighbour[sensor] != NO_NEIGHBOUR:
+        out[:, NEIGHBOUR_LEVEL] = _neighbour(row, at, numbers, sensor, thresholds, neighbour_tally)
+    return out
+
+
+def _deviation(sums: IntArray) -> FloatArray:
+    """Return standard deviations from tallies (..., 7, 3); NaN where there are too few readings."""
+    count = sums[..., COUNT, :].astype(np.float64)
+    total = sums[..., SUM, :].astype(np.float64)
+    enough = count >= FEWEST_FOR_DEVIATION
+    safe = np.where(enough, count, 1.0)
+    variance = (sums[..., SQUARES, :] - total * total / safe) / safe
+    return np.where(enough, np.sqrt(np.maximum(variance, 0.0)) * RESOLUTION, np.nan)
+
+
+def _rate_limits(out: FloatArray, row: Line, at: IntArray, sensor: int, thresholds: Thresholds) -> None:
+    deviation = _deviation(row.over(at, int(thresholds.rate_buckets[sensor])))
+    floored = np.maximum(deviation, thresholds.rate_floor[:, sensor])
+    out[:, RATE_LIMIT] = floored * thresholds.rate_deviations[sensor]
+    out[:, TIGHT_RATE_LIMIT] = floored * thresholds.multi_variate_deviations[sensor]
+
+
+def _noise_before(out: FloatArray, row: Line, at: IntArray, width: int) -> None:
+    sums = row.over(at, width)
+    out[:, NOISY_BEFORE], out[:, COMPARED_BEFORE] = sums[:, NOISY], sums[:, COMPARED]
+
+
+def _flat_windows(out: FloatArray, row: Line, at: IntArray, sensor: int, thresholds: Thresholds) -> None:
+    out[:, [FLAT_SUSPECT_LOW, FLAT_FAIL_LOW]] = -BEYOND
+    out[:, [FLAT_SUSPECT_HIGH, FLAT_FAIL_HIGH]] = BEYOND
+    windows = (
+        (thresholds.flat_suspect_buckets, FLAT_SUSPECT_LOW, FLAT_SUSPECT_HIGH),
+        (thresholds.flat_fail_buckets, FLAT_FAIL_LOW, FLAT_FAIL_HIGH),
+    )
+    for variable in Variable:
+        for widths, low, high in windows:
+            width = int(widths[variable, sensor])
+            covered = row.filled(at, width)[:, variable] == width
+            out[covered, low, variable] = row.lowest(at, width, variable)[covered]
+            out[covered, high, variable] = row.highest(at, width, variable)[covered]
+            if low == FLAT_SUSPECT_LOW:
+                out[:, FLAT_JUDGED, variable] = covered & np.isfinite(thresholds.flat_tolerance[variable, sensor])
+
+
+def _attenuated(row: Line, at: IntArray, sensor: int, thresholds: Thresholds) -> FloatArray:
+    width = int(thresholds.attenuated_buckets[sensor])
+    deviation = _deviation(row.over(at, width))
+    suspect, fail = thresholds.attenuated_suspect[:, sensor], thresholds.attenuated_fail[:, sensor]
+    judged = (row.filled(at, width) >= SHARE_OF_WINDOW * width) & np.isfinite(deviation) & np.isfinite(suspect)
+    return np.where(judged, 1.0 + 2.0 * (deviation < suspect) + (deviation < fail), 0.0)
+
+
+def _hold_back_still_water(
+    out: FloatArray,
+    row: Line,
+    at: IntArray,
+    numbers: IntArray,
+    sensor: int,
+    thresholds: Thresholds,
+    water_changed_us: int,
+    neighbour_tally: Callable[[int], IntArray | None],
+) -> None:
+    """Take back flat line and attenuated signal where nothing shows that the water should have moved."""
+    moved = thresholds.moved[:, sensor] / RESOLUTION
+    bucket_us = int(thresholds.bucket_us[sensor])
+    for index, (place, number) in enumerate(zip(at, numbers, strict=True)):
+        for variable in Variable:
+            width = int(thresholds.flat_suspect_buckets[variable, sensor])
+            if _has_reason_to_move(
+                row, place, int(number), width, variable, moved, water_changed_us // bucket_us, neighbour_tally
+            ):
+                continue
+            out[index, [FLAT_JUDGED, ATTENUATED_LEVEL], variable] = 0.0
+
+
+def _has_reason_to_move(
+    row: Line,
+    place: int,
+    number: int,
+    width: int,
+    variable: Variable,
+    moved: FloatArray,
+    changed_bucket: int,
+    neighbour_tally: Callable[[int], IntArray | None],
+) -> bool:
+    if number - width <= changed_bucket < number:
+        return True
+    if variable is not Variable.TEMPERATURE and _spread(row.tally[place - width : place])[1] > moved[1]:
+        return True
+    beside = [tally for tally in map(neighbour_tally, range(number - width, number)) if tally is not None]
+    if not beside:
+        return False
+    spread = _spread(np.stack(beside))
+    return bool(spread[variable] > moved[variable] or spread[Variable.TEMPERATURE] > moved[Variable.TEMPERATURE])
+
+
+def _spread(tally: IntArray) -> IntArray:
+    """Return highest less lowest over buckets (buckets, 7, 3): negative where there was no reading."""
+    return np.asarray(tally[:, HIGHEST].max(axis=0) - tally[:, LOWEST].min(axis=0))
+
+
+def _neighbour(
+    row: Line,
+    at: IntArray,
+    numbers: IntArray,
+    sensor: int,
+    thresholds: Thresholds,
+    neighbour_tally: Callable[[int], IntArray | None],
+) -> FloatArray:
+    """Return levels of the neighbour test: mean of the bucket before against the neighbour's of the same bucket."""
+    allowed = thresholds.neighbour_difference[:, sensor]
+    levels = np.zeros((at.shape[0], VARIABLES))
+    for index, (place, number) in enumerate(zip(at, numbers, strict=True)):
+        own, other = row.tally[place - 1], neighbour_tally(int(number) - 1)
+        if other is None:
+            continue
+        judged = (own[COUNT] > 0) & (other[COUNT] > 0) & np.isfinite(allowed)
+        difference = np.abs(_mean(own) - _mean(other))
+        levels[index] = np.where(judged, 1.0 + 2.0 * (difference > np.nan_to_num(allowed)), 0.0)
+    return levels
+
+
+def _mean(tally: IntArray) -> FloatArray:
+    return np.asarray(tally[SUM] / np.maximum(tally[COUNT], 1) * RESOLUTION)

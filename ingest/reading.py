@@ -27,3 +27,28 @@ class RawReading(NamedTuple):
     temperature: float
     pressure: float
     flags: int
+
+
+class ChannelReading(NamedTuple):
+    """Decoded value of one further channel of a sensor: oxygen, pH, level, flow, mains power.
+
+    Attributes
+    ----------
+    sensor : int
+        Index in the site's list of sensors.
+    channel : str
+        Name of the channel under the sensor's `channels`.
+    measured_at_us, received_at_us : int
+        Microseconds since 1970, UTC.
+    value : float
+        In the unit that the channel's declaration names; NaN where unusable.
+    flags : int
+        Words of `analysis.flags.Flag` already known at decoding.
+    """
+
+    sensor: int
+    channel: str
+    measured_at_us: int
+    received_at_us: int
+    value: float
+    flags: int

@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, Any
 
 from ingest.site.problems import listed, nearest_word
-from ingest.site.sensors import QUANTITIES
+from ingest.site.sensors import QUANTITIES, SENML_NAME
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -82,6 +82,9 @@ def _fields(document: Document, path: Path, sensor: dict[str, Any]) -> Iterator[
         seen.setdefault(field, keys)
         if isinstance(field, str) and sensor.get("payload", "json") == "json" and "" in field.split("."):
             yield document.problem((*path, *keys), field, "names joined by single dots, such as ec.value")
+        if sensor.get("payload") in SENML and isinstance(field, str) and not SENML_NAME.match(field):
+            allowed = "a SenML name: letters, digits and - : . / _, a letter or digit first"
+            yield document.problem((*path, *keys), field, allowed)
     if sensor.get("payload", "json") != "json" and times:
         allowed = "no time field: SenML carries its own time, and a plain number has the time received"
         yield document.problem((*path, "fields", "time"), fields["time"] if fields else None, allowed)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import re
 from typing import Annotated, Literal
 
 from pydantic import Field
@@ -15,6 +16,9 @@ ConductivityUnit = Literal["mS/cm", "uS/cm", "S/m"]
 TemperatureUnit = Literal["degC", "degF", "K"]
 PressureUnit = Literal["dbar", "kPa", "bar"]
 QUANTITIES = ("conductivity", "temperature", "pressure")
+
+SENML_NAME = re.compile(r"[A-Za-z0-9][A-Za-z0-9\-:./_]*\Z")
+"""Full names of SenML records: RFC 8428 section 4.5.1."""
 
 FieldPath = Annotated[str, Field(min_length=1, max_length=200)]
 FIELD_WORDS = "the name of a field, nested names joined by dots; or null"

@@ -241,6 +241,7 @@ def test_unknown_animals_are_told_where_the_tables_are_given() -> None:
         ("low: 4.5, high: null", "low: 4.5, high: 4", "sensors[1] (l3-ct).channels.oxygen.high"),
         ("oxygen: {", "pressure: {", "sensors[1] (l3-ct).channels.pressure"),
         ("conductivity_mS_cm: [0, 80]", "conductivity_mS_cm: [80, 0]", "sensors[1] (l3-ct).span.conductivity_mS_cm"),
+        ("{conductivity: p1-ec", "{conductivity: p1 ec", "sensors[3] (p1-ct).fields.conductivity"),
         ("{Na: 1500", "{Ni: 1500", "analyses[1] (borehole).ions.Ni"),
         ("{Na: 1500", "{Na: -1", "analyses[1] (borehole).ions.Na"),
         ("tank: p1, topic: larkfen/gateway, payload: senml-cbor, fields: {conductivity: p1-ec, ",

@@ -1,0 +1,343 @@
+"""`euryhale convert`: conductivity and temperature into salinity and osmolality, one value or a whole table."""
+
+from __future__ import annotations
+
+import csv
+import json
+import math
+import sys
+from contextlib import contextmanager
+from difflib import get_close_matches
+from itertools import islice
+from pathlib import Path
+from typing import TYPE_CHECKING, Any, TextIO
+
+import numpy as np
+from tqdm import tqdm
+
+from analysis.errors import EuryhaleError, InvalidInputError
+from analysis.flags import Flag, is_filler, words
+from analysis.water.compensation import (
+    DEFAULT_COEFFICIENT_PERCENT_PER_K,
+    DEFAULT_REFERENCE_TEMPERATURE_DEGC,
+    Compensation,
+    CompensationMethod,
+)
+from analysis.water.conversion import Conversion
+from analysis.water.properties import Seawater, WaterKind
+from analysis.water.uncertainty import SensorAccuracy
+from analysis.water.units import CONDUCTIVITY_UNITS
+
+if TYPE_CHECKING:
+    import argparse
+    from collections.abc import Iterator
+
+
+HELP = "turn conductivity and temperature into salinity, density and osmolality"
+
+CAUTION = (
+    "Estimated from conductivity: no laboratory measurement. The kind of water is declared, not measured; "
+    "a fouled or drifted sensor is worse than its data sheet."
+)
+
+USAGE_ERROR = 2
+OTHER_ERROR = 1
+ROWS_AT_ONCE = 4096
+
+SHOWN = {
+    "practical_salinity": ("practical salinity", "", 4),
+    "absolute_salinity_g_kg": ("absolute salinity", "g/kg", 4),
+    "density_kg_m3": ("density", "kg/m3", 3),
+    "osmolality_mOsm_kg": ("osmolality (freezing-point basis)", "mOsm/kg", 2),
+    "osmolality_in_situ_mOsm_kg": ("osmolality at this temperature", "mOsm/kg", 2),
+    "osmotic_pressure_kPa": ("osmotic pressure", "kPa", 1),
+    "freezing_point_degC": ("freezing point", "degC", 4),
+    "oxygen_solubility_mg_L": ("oxygen solubility", "mg/L", 3),
+}
+"""The answers in their order: key, and the words, unit and decimals in which a person reads them."""
+
+INPUT_COLUMNS = ("conductivity", "temperature", "pressure")
+
+
+class UsageError(EuryhaleError):
+    """Options that do not go together."""
+
+
+def add_parser(subparsers: Any) -> None:
+    """Add this command to the parser."""
+    parser = subparsers.add_parser("convert", help=HELP, description=HELP, epilog=CAUTION)
+    one = parser.add_argument_group("one value")
+    one.add_argument("--conductivity", type=float, help="conductivity as read")
+    one.add_argument("--temperature", type=float, help="temperature of the water [degC]")
+    one.add_argument("--pressure", type=float, help="sea pressure [dbar] (default: 0)")
+    one.add_argument("--json", action="store_true", help="print one JSON object")
+    table = parser.add_argument_group("a table")
+    table.add_argument("--input", type=Path, help="CSV file with one reading a row")
+    table.add_argument("--output", type=Path, help="CSV file to write (default: standard output)")
+    table.add_argument(
+        "--column",
+        action="append",
+        default=[],
+        metavar="QUANTITY=NAME",
+        help=f"which column holds {', '.join(INPUT_COLUMNS)}; once for each",
+    )
+    _add_sensor_options(parser.add_argument_group("the sensor"))
+    _add_water_options(parser.add_argument_group("the water"))
+
+
+def _add_sensor_options(group: argparse._ArgumentGroup) -> None:
+    group.add_argument("--unit", choices=tuple(CONDUCTIVITY_UNITS), default="mS/cm", help="default: mS/cm")
+    group.add_argument(
+        "--compensated", action="store_true", help="the reading was brought to a reference temperature by the meter"
+    )
+    group.add_argument(
+        "--compensation",
+        choices=tuple(method.value for method in CompensationMethod),
+        help="how the meter compensates: linear (default) or natural-water (ISO 7888); implies --compensated",
+    )
+    group.add_argument("--coefficient", type=float, help="of linear compensation [%%/K] (default: 1.91)")
+    group.add_argument("--reference-temperature", type=float, help="of the meter [degC] (default: 25)")
+    group.add_argument(
+        "--conductivity-accuracy", type=float, default=0.5, help="stated accuracy [%% of reading] (default: 0.5)"
+    )
+    group.add_argument("--temperature-accuracy", type=float, default=0.1, help="stated accuracy [K] (default: 0.1)")
+
+
+def _add_water_options(group: argparse._ArgumentGroup) -> None:
+    group.add_argument(
+        "--water",
+        default="seawater",
+        metavar="seawater|sodium-chloride|FILE.yaml",
+        help="kind of water; a file holds a laboratory analysis of major ions (default: seawater)",
+    )
+    group.add_argument("--latitude", type=float, help="where the sea water comes from [degrees north]")
+    group.add_argument("--longitude", type=float, help="where the sea water comes from [degrees east]")
+
+
+def run(args: argparse.Namespace) -> int:
+    """Convert one value or a table."""
+    try:
+        conversion = _conversion(args)
+        if args.input is None:
+            return _convert_one(args, conversion)
+        return _convert_table(args, conversion)
+    except UsageError as error:
+        print(f"euryhale convert: {error}", file=sys.stderr)
+        return USAGE_ERROR
+    except BrokenPipeError:
+        raise  # the reader of our output has gone: the command says nothing more
+    except (UnicodeDecodeError, csv.Error) as error:
+        print(f"euryhale convert: {args.input}: found {error}; allowed: CSV in UTF-8", file=sys.stderr)
+        return OTHER_ERROR
+    except (EuryhaleError, OSError) as error:
+        print(f"euryhale convert: {error}", file=sys.stderr)
+        return OTHER_ERROR
+
+
+def _conversion(args: argparse.Namespace) -> Conversion:
+    if (args.latitude is None) != (args.longitude is None):
+        raise UsageError("--latitude and --longitude go together")
+    if args.latitude is not None and not (abs(args.latitude) <= 90.0 and abs(args.longitude) <= 360.0):
+        raise UsageError("--latitude is from -90 to 90 and --longitude from -360 to 360 degrees")
+    try:
+        accuracy = SensorAccuracy(
+            conductivity_percent=args.conductivity_accuracy, temperature_K=args.temperature_accuracy
+        )
+        compensation = _compensation(args)
+    except InvalidInputError as error:
+        raise UsageError(str(error)) from error
+    return Conversion(
+        kind=_water_kind(args.water),
+        unit=args.unit,
+        compensation=compensation,
+        accuracy=accuracy,
+        longitude=math.nan if args.longitude is None else args.longitude,
+        latitude=math.nan if args.latitude is None else args.latitude,
+    )
+
+
+def _compensation(args: argparse.Namespace) -> Compensation | None:
+    settings = (args.coefficient, args.reference_temperature)
+    if not args.compensated and args.compensation is None:
+        if settings != (None, None):
+            raise UsageError("--coefficient and --reference-temperature need --compensated")
+        return None
+    method = CompensationMethod(args.compensation or CompensationMethod.LINEAR)
+    if method is CompensationMethod.NATURAL_WATER and args.coefficient is not None:
+        raise UsageError("--coefficient belongs to linear compensation")
+    return Compensation(
+        method=method,
+        coefficient_percent_per_K=DEFAULT_COEFFICIENT_PERCENT_PER_K if settings[0] is None else settings[0],
+        reference_temperature_degC=DEFAULT_REFERENCE_TEMPERATURE_DEGC if settings[1] is None else settings[1],
+    )
+
+
+def _water_kind(word: str) -> WaterKind:
+    if word == "seawater":
+        return Seawater()
+    if word == "sodium-chloride":
+        from analysis.water.sodium_chloride_water import SodiumChlorideWater
+
+        return SodiumChlorideWater()
+    raise UsageError(f"--water: found {word!r}; allowed: seawater, sodium-chloride, or a file that ends in .yaml")
+
+
+def _convert_one(args: argparse.Namespace, conversion: Conversion) -> int:
+    if args.output is not None or args.column:
+        raise UsageError("--output and --column need --input")
+    if args.conductivity is None or args.temperature is None:
+        raise UsageError("give --conductivity and --temperature, or --input with --column")
+    found = conversion.answers(
+        np.array([args.conductivity]),
+        temperature_degC=np.array([args.temperature]),
+        pressure_dbar=np.array([0.0 if args.pressure is None else args.pressure]),
+    )
+    answer: dict[str, Any] = {key: _or_null(float(values[0])) for key, values in found.quantities.items()}
+    answer["flags"] = words(int(found.flags[0]))
+    answer["uncertainty"] = {key: _or_null(float(values[0])) for key, values in found.uncertainties.items()}
+    if args.json:
+        print(json.dumps(answer))
+    else:
+        _print_for_a_person(answer, water=conversion.kind.name)
+    return 0
+
+
+def _or_null(value: float) -> float | None:
+    return value if math.isfinite(value) else None
+
+
+def _print_for_a_person(answer: dict[str, Any], *, water: str) -> None:
+    print(f"{'kind of water':34s} {water}")
+    for key, (name, unit, decimals) in SHOWN.items():
+        value = answer[key]
+        doubt = answer["uncertainty"].get(key)
+        text = "not known" if value is None else f"{value:.{decimals}f}"
+        plus_minus = "" if doubt is None or value is None else f" ± {doubt:.2g}"
+        print(f"{name:34s} {text}{plus_minus}{'' if value is None else ' ' + unit}".rstrip())
+    if answer["flags"]:
+        print(f"{'flags':34s} {', '.join(answer['flags'])}")
+    print(f"\n{CAUTION}")
+
+
+def _convert_table(args: argparse.Namespace, conversion: Conversion) -> int:
+    if args.json or args.conductivity is not None or args.temperature is not None or args.pressure is not None:
+        raise UsageError("--json, --conductivity, --temperature and --pressure are for one value, not for --input")
+    columns = _columns(args.column)
+    if args.output is not None and args.output.resolve() == args.input.resolve():
+        raise UsageError("--output must be another file than --input")
+    with args.input.open(encoding="utf-8-sig", newline="") as source, _destination(args.output) as target:
+        first = source.readline()
+        dialect = _delimiter(first)
+        source.seek(0)
+        reader = csv.reader(source, delimiter=dialect)
+        header = next(reader, [])
+        positions = _positions(header, columns, where=str(args.input))
+        writer = csv.writer(target, delimiter=dialect, lineterminator="\n")
+        writer.writerow([*header, *SHOWN, "flags", *_doubt_names(conversion)])
+        bar = tqdm(unit=" rows", unit_scale=True, file=sys.stderr, disable=not sys.stderr.isatty(), leave=False)
+        with bar:
+            for rows in _slices(row for row in reader if row):
+                writer.writerows(_answered(rows, len(header), positions, conversion, has_comma=dialect != ","))
+                bar.update(len(rows))
+    return 0
+
+
+def _columns(pairs: list[str]) -> dict[str, str]:
+    columns: dict[str, str] = {}
+    for pair in pairs:
+        quantity, found, name = pair.partition("=")
+        if not found or not name or quantity not in INPUT_COLUMNS:
+            raise UsageError(f"--column: found {pair!r}; allowed: QUANTITY=NAME with {', '.join(INPUT_COLUMNS)}")
+        if quantity in columns:
+            raise UsageError(f"--column: {quantity} is given twice")
+        columns[quantity] = name
+    if not {"conductivity", "temperature"} <= set(columns):
+        raise UsageError("--input needs --column conductivity=NAME and --column temperature=NAME")
+    return columns
+
+
+def _delimiter(line: str) -> str:
+    return max((",", ";", "\t"), key=line.count)
+
+
+def _positions(header: list[str], columns: dict[str, str], *, where: str) -> dict[str, int]:
+    names = [name.strip() for name in header]
+    for name in columns.values():
+        if name not in names:
+            near = get_close_matches(name, names, n=1)
+            hint = f"; nearest: {near[0]}" if near else ""
+            raise UsageError(f"{where}: no column {name!r}; there are: {', '.join(names) or 'none'}{hint}")
+    return {quantity: names.index(name) for quantity, name in columns.items()}
+
+
+def _doubt_names(conversion: Conversion) -> list[str]:
+    return [f"uncertainty_{key}" for key in (conversion.salinity_key, "osmolality_mOsm_kg")]
+
+
+def _slices(rows: Iterator[list[str]]) -> Iterator[list[list[str]]]:
+    while part := list(islice(rows, ROWS_AT_ONCE)):
+        yield part
+
+
+def _answered(
+    rows: list[list[str]], width: int, positions: dict[str, int], conversion: Conversion, *, has_comma: bool
+) -> Iterator[list[str]]:
+    given = {
+        quantity: np.array([_number(row, index, has_comma=has_comma) for row in rows])
+        for quantity, index in positions.items()
+    }
+    said = np.zeros(len(rows), dtype=np.uint32)
+    for quantity, index in positions.items():
+        said |= np.array([_absence(row, index) for row in rows], dtype=np.uint32)
+        filler = is_filler(given[quantity])
+        said |= np.where(filler, np.uint32(Flag.FILLER), np.uint32(0))
+        given[quantity] = np.where(filler, np.nan, given[quantity])
+    found = conversion.answers(
+        given["conductivity"],
+        temperature_degC=given["temperature"],
+        pressure_dbar=given.get("pressure", np.zeros(len(rows))),
+    )
+    # Where the reason is known, "not finite" says nothing more.
+    flags = np.where(said != 0, (found.flags & ~np.uint32(Flag.NOT_FINITE)) | said, found.flags)
+    numbers = [*found.quantities.values()], [*found.uncertainties.values()]
+    for index, row in enumerate(rows):
+        padded = (row + [""] * width)[:width] if len(row) < width else row[:width]
+        before, after = ([_cell(values[index], has_comma=has_comma) for values in part] for part in numbers)
+        yield [*padded, *before, " ".join(words(int(flags[index]))), *after]
+
+
+def _number(row: list[str], index: int, *, has_comma: bool) -> float:
+    text = row[index].strip() if index < len(row) else ""
+    if has_comma and "." not in text:
+        text = text.replace(",", ".")
+    try:
+        return float(text)
+    except ValueError:
+        return math.nan
+
+
+def _absence(row: list[str], index: int) -> int:
+    is_there = index < len(row) and bool(row[index].strip())
+    return 0 if is_there else int(Flag.MISSING)
+
+
+def _cell(value: float, *, has_comma: bool) -> str:
+    if not math.isfinite(value):
+        return ""
+    text = f"{value:.9g}"
+    return text.replace(".", ",") if has_comma else text
+
+
+@contextmanager
+def _destination(path: Path | None) -> Iterator[TextIO]:
+    """Yield where to write: a file that appears under its name only when it is whole, or standard output."""
+    if path is None:
+        yield sys.stdout
+        return
+    part = path.with_name(path.name + ".part")
+    try:
+        with part.open("w", encoding="utf-8", newline="") as target:
+            yield target
+        part.replace(path)
+    finally:
+        part.unlink(missing_ok=True)

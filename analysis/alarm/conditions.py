@@ -12,7 +12,8 @@ from analysis.alarm.events import Verdict
 from analysis.alarm.kinds import ConditionKind
 from analysis.alarm.limits import VerdictArray, high_verdict, low_verdict
 from analysis.alarm.nearest import JudgedRows
-from analysis.arrays import BoolArray, FloatArray, IntArray
+from analysis.arrays import BoolArray, FloatArray, IntArray, QualityArray
+from analysis.flags import Quality
 
 DRY_BELOW_SALINITY = 0.5
 """A conductivity cell in air reads close to zero. Common practice: below half a unit, or a tenth of the set point
@@ -170,6 +171,23 @@ def dry_limit(set_point_salinity: ArrayLike) -> FloatArray:
     point = np.asarray(set_point_salinity, dtype=np.float64)
     limit = np.minimum(DRY_BELOW_SALINITY, DRY_SHARE_OF_SET_POINT * point)
     return np.where(point >= SALT_WATER_FROM, limit, np.nan)
+
+
+def wet_quality(salinity: FloatArray, *, quality: QualityArray, tank: IntArray, dry_below: FloatArray) -> QualityArray:
+    """Return the quality with which readings may speak about the water: fail (4) where the probe is dry.
+
+    For the salinity limits of tanks with several sensors: a dry probe then neither speaks nor hides what the
+    tank's other probe says. The condition "probe dry or tank empty" itself is judged with the quality as it was.
+
+    Parameters
+    ----------
+    salinity, quality, tank : ndarray, shape (N,)
+        Salinity, QARTOD quality and tank of each reading.
+    dry_below : ndarray of float64, one per tank
+        From `dry_limit`.
+    """
+    is_dry = salinity < dry_below[tank]
+    return np.where(is_dry, np.uint8(Quality.FAIL), quality)
 
 
 def without_dry(rows: JudgedRows, dry_below: FloatArray) -> JudgedRows:

@@ -43,6 +43,17 @@ class Conflict(NamedTuple):
     values: tuple[float, float, float]
 
 
+class ChannelRow(NamedTuple):
+    """A reading of a further quantity: oxygen, pH, level. `sensor` is the store's number."""
+
+    measured_at: int
+    sensor: int
+    channel: str
+    received_at: int
+    value: float | None
+    flags: int
+
+
 class StressRow(NamedTuple):
     """What the animals of one tank feel at one moment; None is "not known"."""
 
@@ -69,6 +80,18 @@ class TankState(NamedTuple):
     body: dict[str, Any]
 
 
+class OutcomeRow(NamedTuple):
+    """What became of a command."""
+
+    id: str
+    kind: str
+    subject: str
+    actor: str
+    outcome: str
+    reason: str
+    decided_at: int
+
+
 @dataclass(slots=True)
 class BlockCommit:
     """All that a block leaves. Empty parts cost nothing."""
@@ -76,6 +99,7 @@ class BlockCommit:
     readings: ReadingRows | None = None
     latest: IntArray | None = None
     sensor_states: list[bytes | None] = field(default_factory=list)
+    channels: list[ChannelRow] = field(default_factory=list)
     conflicts: list[Conflict] = field(default_factory=list)
     refusals: list[Refusal] = field(default_factory=list)
     counts: dict[str, int] = field(default_factory=dict)
@@ -83,6 +107,7 @@ class BlockCommit:
     tank_states: list[TankState] = field(default_factory=list)
     pending_alarms: list[AlarmRow] = field(default_factory=list)
     occurrences: list[Occurrence] = field(default_factory=list)
+    outcomes: list[OutcomeRow] = field(default_factory=list)
     meta: dict[str, str | int] = field(default_factory=dict)
 
 
@@ -93,6 +118,7 @@ def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: i
         rollups.add_behind_mark(connection, block.readings.measured_at, block.readings.sensor, rolled_until)
         if block.latest is not None and len(block.latest):
             readings.upsert_latest(connection, block.readings, block.latest, block.sensor_states)
+    connection.executemany("INSERT OR IGNORE INTO channel_reading VALUES (?, ?, ?, ?, ?, ?)", block.channels)
     for conflict in block.conflicts:
         readings.record_conflict(
             connection,
@@ -112,6 +138,11 @@ def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: i
     for row in block.pending_alarms:
         alarms.upsert(connection, row, event_id=None)
     event_ids = [_write_occurrence(connection, occurrence) for occurrence in block.occurrences]
+    connection.executemany(
+        "INSERT INTO command_outcome (id, kind, subject, actor, outcome, reason, decided_at, event_id)"
+        " VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
+        [(*row, event_ids[0] if event_ids else None) for row in block.outcomes],
+    )
     connection.executemany(
         "INSERT INTO meta VALUES (?, ?) ON CONFLICT (name) DO UPDATE SET value = excluded.value",
         list(block.meta.items()),

@@ -39,13 +39,15 @@ def reader(path: Path) -> Iterator[sqlite3.Connection]:
     Raises
     ------
     MissingStoreError
-        If there is no such file.
+        If there is no such file, or nothing in it yet.
     """
     if not path.exists():
         raise MissingStoreError(str(path))
     connection = sqlite3.connect(f"{path.resolve().as_uri()}?mode=ro", uri=True, timeout=READER_TIMEOUT_S)
     connection.row_factory = sqlite3.Row
     try:
+        if connection.execute("PRAGMA user_version").fetchone()[0] == 0:
+            raise MissingStoreError(str(path))  # The worker is just making it.
         yield connection
     finally:
         connection.close()

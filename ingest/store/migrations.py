@@ -19,12 +19,13 @@ class Migration(NamedTuple):
     statements: tuple[str, ...]
 
 
+# The columns of a key come first: the integrity check of older SQLite counts columns of a table without row ids that way.
 READING_COLUMNS = """
     measured_at INTEGER NOT NULL,
     sensor INTEGER NOT NULL,
+    derivation INTEGER NOT NULL,
     received_at INTEGER NOT NULL,
     declaration INTEGER NOT NULL,
-    derivation INTEGER NOT NULL,
     conductivity REAL,
     temperature REAL,
     pressure REAL,
@@ -41,8 +42,8 @@ READING_COLUMNS = """
 """
 
 ROLLUP_COLUMNS = """
-    bucket INTEGER NOT NULL,
     sensor INTEGER NOT NULL,
+    bucket INTEGER NOT NULL,
     n INTEGER NOT NULL,
     salinity_n INTEGER NOT NULL,
     salinity_sum REAL, salinity_min REAL, salinity_max REAL,
@@ -62,8 +63,8 @@ STORE: tuple[Migration, ...] = (
             # Slugs are never reused; a row lives for ever.
             "CREATE TABLE sensor (id INTEGER PRIMARY KEY, slug TEXT NOT NULL UNIQUE)",
             "CREATE TABLE tank (id INTEGER PRIMARY KEY, slug TEXT NOT NULL UNIQUE)",
-            "CREATE TABLE placement (sensor INTEGER NOT NULL REFERENCES sensor(id), tank INTEGER NOT NULL REFERENCES tank(id),"
-            " since INTEGER NOT NULL, PRIMARY KEY (sensor, since)) WITHOUT ROWID",
+            "CREATE TABLE placement (sensor INTEGER NOT NULL REFERENCES sensor(id), since INTEGER NOT NULL,"
+            " tank INTEGER NOT NULL REFERENCES tank(id), PRIMARY KEY (sensor, since)) WITHOUT ROWID",
             "CREATE TABLE revision (number INTEGER PRIMARY KEY, sha256 TEXT NOT NULL, text TEXT NOT NULL,"
             " differences TEXT NOT NULL, accepted_at INTEGER NOT NULL, actor TEXT NOT NULL)",
             "CREATE TABLE declaration (id INTEGER PRIMARY KEY, sensor INTEGER NOT NULL REFERENCES sensor(id),"
@@ -78,6 +79,9 @@ STORE: tuple[Migration, ...] = (
             " received_at INTEGER NOT NULL, conductivity_mS_cm REAL, temperature_degC REAL, practical_salinity REAL,"
             " absolute_salinity_g_kg REAL, density_kg_m3 REAL, osmolality_mOsm_kg REAL, flags INTEGER NOT NULL,"
             " quality INTEGER NOT NULL, state BLOB)",
+            "CREATE TABLE channel_reading (measured_at INTEGER NOT NULL, sensor INTEGER NOT NULL, channel TEXT NOT NULL,"
+            " received_at INTEGER NOT NULL, value REAL, flags INTEGER NOT NULL,"
+            " PRIMARY KEY (measured_at, sensor, channel)) WITHOUT ROWID",
             "CREATE TABLE conflict (id INTEGER PRIMARY KEY, measured_at INTEGER NOT NULL, sensor INTEGER NOT NULL,"
             " received_at INTEGER NOT NULL, conductivity REAL, temperature REAL, pressure REAL, reason TEXT NOT NULL)",
             f"CREATE TABLE q15 ({ROLLUP_COLUMNS}) WITHOUT ROWID",

@@ -30,7 +30,7 @@ def place(connection: sqlite3.Connection, *, sensor: int, tank: int, since_us: i
         "SELECT tank FROM placement WHERE sensor = ? ORDER BY since DESC LIMIT 1", (sensor,)
     ).fetchone()
     if row is None or int(row["tank"]) != tank:
-        connection.execute("INSERT OR REPLACE INTO placement VALUES (?, ?, ?)", (sensor, tank, since_us))
+        connection.execute("INSERT OR REPLACE INTO placement VALUES (?, ?, ?)", (sensor, since_us, tank))
 
 
 def declaration_number(connection: sqlite3.Connection, *, sensor: int, body: str) -> int:

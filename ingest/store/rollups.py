@@ -44,7 +44,7 @@ def _add(table: str, bucket_us: int, where: str) -> str:
         columns += [f"count({expression})", f"sum({expression})", f"min({expression})", f"max({expression})"]
     columns += [f"sum({osmolality})", f"min({osmolality})", f"max({osmolality})"]
     return (
-        f"INSERT INTO {table} SELECT measured_at / {bucket_us} * {bucket_us}, sensor, count(*), {', '.join(columns)},"
+        f"INSERT INTO {table} SELECT sensor, measured_at / {bucket_us} * {bucket_us}, count(*), {', '.join(columns)},"
         f" sum(quality IN (3, 4)) FROM reading WHERE {where} GROUP BY 1, 2"
         f" ON CONFLICT (sensor, bucket) DO UPDATE SET {_merge(table)}"
     )

@@ -1,0 +1,53 @@
+"""`euryhale watch`: the worker. It listens, judges, stores and alarms until it is told to stop."""
+
+from __future__ import annotations
+
+import signal
+import sys
+import threading
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from ingest import logs
+from ingest.clock import ReplayClock, SystemClock
+from ingest.worker import health
+from ingest.worker.worker import Worker
+
+if TYPE_CHECKING:
+    import argparse
+
+HELP = "run the worker: take readings in, judge, store and alarm"
+
+
+def add_parser(subparsers: Any) -> None:
+    """Add this command to the parser."""
+    parser = subparsers.add_parser("watch", help=HELP, description=HELP)
+    parser.add_argument("--site", type=Path, default=Path("site.yaml"), help="the site file (default: site.yaml)")
+    parser.add_argument(
+        "--clock",
+        choices=("system", "replay"),
+        default="system",
+        help="replay: the time is that of the newest reading, for records replayed with --keep-times",
+    )
+    parser.add_argument(
+        "--health-port", type=int, default=8502, help="port on this machine for /health and /metrics; 0: none"
+    )
+
+
+def run(args: argparse.Namespace) -> int:
+    """Work until told to stop."""
+    logs.set_up()
+    stop = threading.Event()
+    clock = ReplayClock() if args.clock == "replay" else SystemClock()
+    worker = Worker(args.site, clock=clock)
+    for number in (signal.SIGINT, signal.SIGTERM):
+        signal.signal(number, lambda *_: stop.set())
+    signal.signal(signal.SIGHUP, lambda *_: worker.reload_soon())
+    server = health.serve(worker, port=args.health_port) if args.health_port else None
+    try:
+        worker.run(stop)
+    finally:
+        if server is not None:
+            server.shutdown()
+    print("stopped; whatever was not yet stored waits at the broker", file=sys.stderr)
+    return 0

@@ -1,0 +1,223 @@
+"""The chain itself: a block of readings goes in, what it means comes out; the state before it is still there if a commit fails."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, Any, NamedTuple
+
+import numpy as np
+
+from analysis.alarm import bank as alarm_bank
+from analysis.alarm.conditions import limit_block, truth_block, without_dry
+from analysis.alarm.kinds import ConditionKind
+from analysis.alarm.nearest import LatestReadings, judged_rows, no_readings_yet
+from analysis.alarm.state import NEVER_US
+from analysis.flags import Flag, Quality
+from ingest.chain.water import water
+
+if TYPE_CHECKING:
+    from collections.abc import Mapping
+
+    from analysis.alarm.bank import AlarmBank
+    from analysis.alarm.events import Event
+    from analysis.alarm.state import AlarmState
+    from analysis.alarm.transition import Transition
+    from analysis.arrays import BoolArray, IntArray
+    from ingest.chain.block import RawBlock
+    from ingest.chain.roster import Roster
+    from ingest.chain.tanks import TankRoster
+    from ingest.chain.water import Water
+
+
+@dataclass(frozen=True, slots=True)
+class ChainState:
+    """All that the chain remembers between blocks, besides what the roster says."""
+
+    salinity: LatestReadings
+    temperature: LatestReadings
+    bank: AlarmBank
+
+
+class Happened(NamedTuple):
+    """A transition of one alarm of one tank."""
+
+    tank: int
+    kind: ConditionKind
+    transition: Transition
+
+
+@dataclass(frozen=True, slots=True)
+class ChainOutput:
+    """What a block, a tick or an act brought.
+
+    Attributes
+    ----------
+    state : ChainState
+        After it.
+    happened : tuple of Happened
+        In order.
+    pending : tuple of (tank, kind, AlarmState)
+        Alarms whose state changed without a transition: an on-delay that runs.
+    tanks : tuple of int
+        Tanks whose state changed.
+    """
+
+    state: ChainState
+    happened: tuple[Happened, ...] = ()
+    pending: tuple[tuple[int, ConditionKind, AlarmState], ...] = ()
+    tanks: tuple[int, ...] = ()
+
+
+def fresh_state(tanks: TankRoster, states: Mapping[tuple[ConditionKind, int], AlarmState] | None = None) -> ChainState:
+    """Return the state before any reading, with the alarms in *states* as they stood."""
+    return ChainState(
+        salinity=no_readings_yet(tanks.places),
+        temperature=no_readings_yet(tanks.places),
+        bank=alarm_bank.alarm_bank(tanks.rules, states),
+    )
+
+
+def run(roster: Roster, tanks: TankRoster, state: ChainState, block: RawBlock) -> tuple[Water, ChainOutput]:
+    """Let a block of admitted readings happen.
+
+    Parameters
+    ----------
+    roster, tanks : Roster, TankRoster
+        The site.
+    state : ChainState
+        Before the block; not changed.
+    block : RawBlock
+        Admitted readings in order (`ingest.chain.admission`).
+
+    Returns
+    -------
+    tuple of (Water, ChainOutput)
+        What each reading says of the water, late ones too, and what followed for tanks and alarms.
+    """
+    found = water(roster, block)
+    live = _live(tanks, block)
+    if not live.size:
+        return found, ChainOutput(state)
+    watcher = tanks.watcher_of[block.sensor[live]]
+    judged_at = block.measured_at_us[live]
+    quality = found.quality[live]
+    salinity, salinity_rows = judged_rows(
+        state.salinity,
+        tanks.places,
+        sensor=watcher,
+        value=found.salinity[live],
+        quality=quality,
+        judged_at_us=judged_at,
+        stale_after_us=tanks.stale_after_us,
+    )
+    temperature, temperature_rows = judged_rows(
+        state.temperature,
+        tanks.places,
+        sensor=watcher,
+        value=found.temperature_degC[live],
+        quality=np.where(np.isnan(found.temperature_degC[live]), np.uint8(Quality.MISSING), np.uint8(Quality.PASS)),
+        judged_at_us=judged_at,
+        stale_after_us=tanks.stale_after_us,
+    )
+    wet = without_dry(salinity_rows, tanks.dry_below)
+    rows = (wet, wet, temperature_rows, temperature_rows, salinity_rows)
+    observed = limit_block(tanks.conditions, rows, now_us=block.received_at_us[live])
+    bank, outcomes = alarm_bank.observe(state.bank, observed)
+    after = ChainState(salinity, temperature, bank)
+    return found, _output(state, after, outcomes, tuple(np.unique(tanks.places.tank[watcher]).tolist()))
+
+
+def tick(tanks: TankRoster, state: ChainState, *, now_us: int) -> ChainOutput:
+    """Let everything happen that time alone brings: tanks that nobody can see any more, ends of shelving, re-alarms."""
+    bank, due = alarm_bank.tick(state.bank, now_us)
+    unseen, since_us = _unwatched(tanks, state, now_us)
+    minutes = np.where(since_us > -NEVER_US, (now_us - np.maximum(since_us, 0)) / 60e6, np.nan)
+    block = truth_block(ConditionKind.UNWATCHED, unseen, at_us=now_us, now_us=now_us, value=np.round(minutes, 1))
+    bank, seen = alarm_bank.observe(bank, block)
+    return _output(state, replace(state, bank=bank), due + seen, ())
+
+
+def act(state: ChainState, *, tank: int, kind: ConditionKind, event: Event, now_us: int) -> ChainOutput:
+    """Put a person's act to one alarm."""
+    bank, outcomes = alarm_bank.act(state.bank, kind, tank, event, now_us)
+    return _output(state, replace(state, bank=bank), outcomes, ())
+
+
+def tank_body(roster: Roster, tanks: TankRoster, state: ChainState, tank: int) -> dict[str, Any]:
+    """Return what the chain remembers of one tank as plain JSON data, sensors by their ids."""
+    body: dict[str, Any] = {}
+    for name, latest in (("salinity", state.salinity), ("temperature", state.temperature)):
+        body[name] = {}
+        for watcher in np.flatnonzero(tanks.places.tank == tank).tolist():
+            place = (tank, int(tanks.places.slot[watcher]))
+            body[name][roster.sensors[tanks.watchers[watcher]]] = [
+                float(latest.value[place]),
+                int(latest.quality[place]),
+                int(latest.judged_at_us[place]),
+                int(latest.believed_at_us[place]),
+            ]
+    return body
+
+
+def restored_state(
+    roster: Roster,
+    tanks: TankRoster,
+    *,
+    bodies: Mapping[str, Mapping[str, Any]],
+    alarms: Mapping[tuple[ConditionKind, int], AlarmState],
+) -> ChainState:
+    """Return the state that was kept with `tank_body`, by the tanks' ids, and the alarms; restoring fires nothing.
+
+    Sensors and tanks that are gone are left out; new ones start fresh.
+    """
+    state = fresh_state(tanks, alarms)
+    for tank, tank_id in enumerate(tanks.tanks):
+        for name, latest in (("salinity", state.salinity), ("temperature", state.temperature)):
+            kept = bodies.get(tank_id, {}).get(name, {})
+            for watcher in np.flatnonzero(tanks.places.tank == tank).tolist():
+                entry = kept.get(roster.sensors[tanks.watchers[watcher]])
+                if entry is None:
+                    continue
+                place = (tank, int(tanks.places.slot[watcher]))
+                latest.value[place] = np.nan if entry[0] is None else entry[0]
+                latest.quality[place] = entry[1]
+                latest.judged_at_us[place] = entry[2]
+                latest.believed_at_us[place] = entry[3]
+    return state
+
+
+def _live(tanks: TankRoster, block: RawBlock) -> IntArray:
+    """Return the rows that speak for a tank now: not late, and of a sensor that sits in a tank."""
+    speaks = (tanks.watcher_of[block.sensor] >= 0) & ((block.flags & np.uint32(Flag.LATE)) == 0)
+    return np.flatnonzero(speaks)
+
+
+def _unwatched(tanks: TankRoster, state: ChainState, now_us: int) -> tuple[BoolArray, IntArray]:
+    """Return which tanks no believable sensor watches, and since when (the newest believed reading)."""
+    places = tanks.places
+    stale = np.zeros((places.tank_count, places.slot_count), dtype=np.int64)
+    stale[places.tank, places.slot] = tanks.stale_after_us
+    believed = state.salinity.believed_at_us
+    # Compared by adding: the time of a sensor that never spoke is near the smallest integer.
+    is_seen = (believed + stale >= now_us).any(axis=1)
+    has_sensor = np.zeros(places.tank_count, dtype=np.bool_)
+    has_sensor[places.tank] = True
+    has_spoken = (believed > -NEVER_US).any(axis=1)
+    # A tank whose sensors have never spoken is not yet installed; `check` tells of it, an alarm would cry for weeks.
+    return has_sensor & has_spoken & ~is_seen, believed.max(axis=1)
+
+
+def _output(
+    before: ChainState, after: ChainState, outcomes: tuple[alarm_bank.Outcome, ...], touched: tuple[int, ...]
+) -> ChainOutput:
+    happened = tuple(Happened(outcome.tank, outcome.kind, outcome.transition) for outcome in outcomes)
+    told = {(item.kind, item.tank) for item in happened}
+    pending: tuple[tuple[int, ConditionKind, AlarmState], ...] = ()
+    if after.bank is not before.bank:
+        kinds = after.bank.kinds
+        pending = tuple(
+            (tank, kinds[kind], alarm)
+            for (kind, tank), alarm in after.bank.states.items()
+            if before.bank.states.get((kind, tank)) is not alarm and (kinds[kind], tank) not in told
+        )
+    return ChainOutput(after, happened, pending, touched)

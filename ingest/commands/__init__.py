@@ -1,0 +1,1 @@
+"""What people ask for: who may, what is checked, what follows."""

@@ -1,0 +1,79 @@
+"""What the worker takes up again from the store when it starts or reloads."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import msgspec
+
+from analysis.alarm.state import state_from_dict
+from ingest.store.alarms import read_all as alarm_rows
+from ingest.store.block import OutcomeRow
+
+if TYPE_CHECKING:
+    import sqlite3
+
+    from analysis.alarm.state import AlarmState
+    from ingest.store.alarms import AlarmRow
+    from ingest.store.inbox import Command
+
+__all__ = [
+    "alarm_rows",
+    "alarm_state",
+    "animals_in_tanks",
+    "has_outcome",
+    "meta_number",
+    "meta_text",
+    "newest_times",
+    "outcome_row",
+    "tank_bodies",
+]
+
+
+def meta_number(connection: sqlite3.Connection, name: str) -> int:
+    """Return a named whole number of the store, 0 if it is not there."""
+    row = connection.execute("SELECT value FROM meta WHERE name = ?", (name,)).fetchone()
+    return 0 if row is None else int(row[0])
+
+
+def meta_text(connection: sqlite3.Connection, name: str) -> str:
+    """Return a named text of the store, empty if it is not there."""
+    row = connection.execute("SELECT value FROM meta WHERE name = ?", (name,)).fetchone()
+    return "" if row is None else str(row[0])
+
+
+def newest_times(connection: sqlite3.Connection) -> dict[str, int]:
+    """Return the newest processed measured time of each sensor, by its id. [us UTC]"""
+    rows = connection.execute(
+        "SELECT slug, measured_at FROM latest JOIN sensor ON sensor.id = latest.sensor"
+    ).fetchall()
+    return {row["slug"]: int(row["measured_at"]) for row in rows}
+
+
+def tank_bodies(connection: sqlite3.Connection) -> dict[str, dict[str, Any]]:
+    """Return what the chain remembered of each tank, by the tank's id."""
+    rows = connection.execute("SELECT slug, body FROM tank_state JOIN tank ON tank.id = tank_state.tank").fetchall()
+    return {row["slug"]: msgspec.json.decode(row["body"]) for row in rows}
+
+
+def animals_in_tanks(connection: sqlite3.Connection) -> dict[str, str]:
+    """Return which animals are in each tank now, by the tank's id; of several cohorts the one that came last."""
+    rows = connection.execute(
+        "SELECT slug, animal FROM cohort JOIN tank ON tank.id = cohort.tank WHERE ended_at IS NULL ORDER BY since, cohort.id"
+    ).fetchall()
+    return {row["slug"]: row["animal"] for row in rows}
+
+
+def alarm_state(row: AlarmRow) -> AlarmState:
+    """Return the state that the state machine kept in *row*."""
+    return state_from_dict(row.body)
+
+
+def has_outcome(connection: sqlite3.Connection, command_id: str) -> bool:
+    """Return whether a command has been decided already."""
+    return connection.execute("SELECT 1 FROM command_outcome WHERE id = ?", (command_id,)).fetchone() is not None
+
+
+def outcome_row(command: Command, outcome: str, reason: str, decided_at: int) -> OutcomeRow:
+    """Return what became of *command* as a row."""
+    return OutcomeRow(command.id, command.kind, command.subject, command.actor, outcome, reason, decided_at)

@@ -1,0 +1,1 @@
+"""The worker: receive, run the chain, commit, acknowledge; the one writer of a site's store."""

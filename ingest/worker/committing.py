@@ -1,0 +1,161 @@
+"""From what the chain found to what the store keeps."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from analysis.alarm.state import name_of, state_to_dict
+from analysis.alarm.transition import transition_to_dict
+from analysis.flags import Flag
+from ingest.chain.chain import tank_body
+from ingest.store.alarms import AlarmRow
+from ingest.store.block import ChannelRow, Conflict, Occurrence, OutboxRow, TankState
+from ingest.store.ledger import Event
+from ingest.store.readings import ReadingRows
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+
+    from analysis.alarm.kinds import ConditionKind
+    from analysis.alarm.rules import AlarmRules
+    from analysis.alarm.state import AlarmState
+    from analysis.alarm.transition import Transition
+    from analysis.arrays import IntArray
+    from ingest.chain.block import RawBlock
+    from ingest.chain.chain import ChainOutput, ChainState, Happened
+    from ingest.chain.water import Water
+    from ingest.reading import ChannelReading
+    from ingest.worker.plant import Plant
+
+DUTY = "duty"
+"""The channel of what somebody on duty has to be told; `ingest.notify` finds out who that is."""
+
+
+def reading_rows(plant: Plant, block: RawBlock, water: Water) -> ReadingRows:
+    """Return a block as rows of the store."""
+    numbers, found = plant.numbers, water.properties
+    count = len(block)
+    return ReadingRows(
+        measured_at=block.measured_at_us,
+        sensor=numbers.sensor[block.sensor],
+        received_at=block.received_at_us,
+        declaration=numbers.declaration[block.sensor],
+        derivation=np.full(count, numbers.derivation, dtype=np.int64),
+        conductivity=block.conductivity,
+        temperature=block.temperature,
+        pressure=block.pressure,
+        conductivity_mS_cm=water.conductivity_mS_cm,
+        temperature_degC=water.temperature_degC,
+        practical_salinity=found.practical_salinity,
+        absolute_salinity_g_kg=found.absolute_salinity_g_kg,
+        density_kg_m3=found.density_kg_m3,
+        osmolality_mOsm_kg=found.osmolality_mOsm_kg,
+        osmolality_in_situ_mOsm_kg=found.osmolality_in_situ_mOsm_kg,
+        flags=water.flags,
+        quality=water.quality,
+        tests=np.zeros(count, dtype=np.int64),
+    )
+
+
+def newest_rows(block: RawBlock) -> IntArray:
+    """Return the index of the newest reading of each sensor in a sorted block, late ones left out."""
+    live = np.flatnonzero((block.flags & np.uint32(Flag.LATE)) == 0)
+    backwards = live[::-1]
+    _, first = np.unique(block.sensor[backwards], return_index=True)
+    return backwards[first]
+
+
+def channel_rows(plant: Plant, channels: Sequence[ChannelReading]) -> list[ChannelRow]:
+    """Return readings of further quantities as rows of the store."""
+    numbers = plant.numbers.sensor
+    return [
+        ChannelRow(
+            reading.measured_at_us,
+            int(numbers[reading.sensor]),
+            reading.channel,
+            reading.received_at_us,
+            reading.value,
+            reading.flags,
+        )
+        for reading in channels
+    ]
+
+
+def conflict_rows(plant: Plant, raw: RawBlock, contradictions: Sequence[int]) -> list[Conflict]:
+    """Return second, different readings of one moment as rows of the store."""
+    return [
+        Conflict(
+            int(raw.measured_at_us[index]),
+            int(plant.numbers.sensor[raw.sensor[index]]),
+            int(raw.received_at_us[index]),
+            (float(raw.conductivity[index]), float(raw.temperature[index]), float(raw.pressure[index])),
+        )
+        for index in contradictions
+    ]
+
+
+def tank_states(plant: Plant, state: ChainState, tanks: Sequence[int]) -> list[TankState]:
+    """Return what the chain remembers of *tanks* as rows of the store."""
+    rows = []
+    for tank in tanks:
+        newest = int(state.salinity.judged_at_us[tank].max())
+        rows.append(TankState(int(plant.numbers.tank[tank]), newest, tank_body(plant.roster, plant.tanks, state, tank)))
+    return rows
+
+
+def subject_of(plant: Plant, tank: int) -> str:
+    """Return the ledger's word for a tank."""
+    return f"tank/{plant.tanks.tanks[tank]}"
+
+
+def occurrence(plant: Plant, happened: Happened, *, now_us: int, actor: str) -> Occurrence:
+    """Return what one transition leaves: its event, where the alarm stands, and who must be told."""
+    tank, kind, transition = happened
+    subject = subject_of(plant, tank)
+    rules = plant.tanks.rules[kind][tank]
+    body: dict[str, Any] = {"condition": kind.value, "priority": rules.priority.value, **transition_to_dict(transition)}
+    event = Event(
+        kind=f"alarm.{transition.happening.value}",
+        subject=subject,
+        measured_at=transition.measured_at_us or transition.at_us,
+        recorded_at=now_us,
+        actor=actor,
+        body=body,
+    )
+    outbox: tuple[OutboxRow, ...] = ()
+    if transition.is_announced:
+        outbox = (OutboxRow(DUTY, {"subject": subject, "condition": kind.value, "occurrence": transition.occurrence}),)
+    return Occurrence(event, _alarm_row(subject, kind, rules, transition.after, now_us, transition), outbox)
+
+
+def pending_rows(plant: Plant, output: ChainOutput, *, now_us: int) -> list[AlarmRow]:
+    """Return where alarms stand that changed without a transition."""
+    return [
+        _alarm_row(subject_of(plant, tank), kind, plant.tanks.rules[kind][tank], state, now_us, None)
+        for tank, kind, state in output.pending
+    ]
+
+
+def _alarm_row(
+    subject: str,
+    kind: ConditionKind,
+    rules: AlarmRules,
+    state: AlarmState,
+    now_us: int,
+    transition: Transition | None,
+) -> AlarmRow:
+    return AlarmRow(
+        subject=subject,
+        condition=kind.value,
+        state=name_of(state).value,
+        priority=rules.priority.value,
+        is_active=state.is_active,
+        occurrence=state.occurrence,
+        raised_at=state.raised_at_us or None,
+        value=state.raised_value if transition is None or transition.value is None else transition.value,
+        limit_value=state.raised_limit if transition is None or transition.limit is None else transition.limit,
+        updated_at=now_us,
+        body=state_to_dict(state),
+    )

@@ -1,0 +1,363 @@
+"""The worker: wiring and the one loop. Receive, run the chain, commit, and only then acknowledge."""
+
+from __future__ import annotations
+
+import sqlite3
+import threading
+from collections import Counter
+from dataclasses import replace
+from typing import TYPE_CHECKING
+
+import msgspec
+import structlog
+
+from analysis.alarm.kinds import ConditionKind
+from analysis.errors import EuryhaleError
+from ingest.chain.admission import admit
+from ingest.chain.block import RawBlock
+from ingest.chain.chain import fresh_state, restored_state, run, tick
+from ingest.clock import MICROSECONDS_PER_SECOND, ReplayClock, SystemClock
+from ingest.commands import desk
+from ingest.mqtt import Access, Intake
+from ingest.secrets import read_secret
+from ingest.site.loading import load_text
+from ingest.store import restoring
+from ingest.store.block import BlockCommit
+from ingest.store.inbox import Inbox, InboxTaker
+from ingest.store.readings import as_sent
+from ingest.store.store import Store
+from ingest.worker.bench import Bench
+from ingest.worker.committing import (
+    channel_rows,
+    conflict_rows,
+    newest_rows,
+    occurrence,
+    pending_rows,
+    reading_rows,
+    tank_states,
+)
+from ingest.worker.decoding import decode
+from ingest.worker.plant import Plant, plant
+from ingest.worker.registering import register
+from ingest.worker.schedule import Schedule
+
+if TYPE_CHECKING:
+    from collections.abc import Sequence
+    from pathlib import Path
+
+    from ingest.chain.admission import AsSent
+    from ingest.chain.chain import ChainOutput, ChainState, Happened
+    from ingest.clock import Clock
+    from ingest.mqtt import Received
+    from ingest.reading import RawReading
+    from ingest.site.models import Site
+    from ingest.store.block import Occurrence
+    from ingest.worker.registering import Numbers
+
+log = structlog.get_logger(__name__)
+
+BLOCK_LIMIT = 5_000
+"""No block holds more messages than this."""
+IDLE_WAIT_S = 0.25
+"""The inbox is looked into at least this often."""
+INBOX_EVERY_S = 0.2
+TICK_EVERY_S = 1.0
+HEARTBEAT_EVERY_S = 5.0
+ROLLUP_EVERY_S = 20.0
+ROLLUP_LAG_US = 5 * 60 * MICROSECONDS_PER_SECOND
+"""The rollups stay this far behind the newest time, so that a sensor that is a little late is swept, not added singly."""
+CHECKPOINT_EVERY_S = 60.0
+RETRY_S = (0.1, 0.5, 1.0, 2.0, 5.0)
+"""Waits between attempts to commit; the last one repeats. Nothing is acknowledged meanwhile."""
+NEVER_SPOKEN = -(2**63)
+
+
+class Worker:
+    """One site's worker.
+
+    Parameters
+    ----------
+    site_file : Path
+        Read now and at each reload.
+    clock : Clock
+        Where the time comes from.
+
+    Raises
+    ------
+    SiteFileError
+        If the site file has problems.
+    StoreLockedError
+        If another worker holds the store.
+    """
+
+    def __init__(self, site_file: Path, *, clock: Clock) -> None:
+        self._site_file = site_file
+        self._clock = clock
+        self._is_replay = isinstance(clock, ReplayClock)
+        text = site_file.read_text(encoding="utf-8")
+        site = load_text(text, site_file.name)
+        self.store = Store(site.store.folder(site_file))
+        self._inbox = InboxTaker(Inbox(self.store.folder))
+        self._inbox_seq = restoring.meta_number(self.store.connection, "inbox_seq")
+        with self.store.transaction() as connection:
+            numbers = register(
+                connection, site, text=text, actor=site.identity.default_actor.name, now_us=clock.now_us()
+            )
+        self._committed_halves = "{}"
+        self.plant = self._plant(site, text, numbers)
+        self._newest_us: list[int] = []
+        self.state: ChainState = fresh_state(self.plant.tanks)
+        self._restore()
+        # A replayed record is received now, whatever time it speaks of.
+        received_by = SystemClock() if self._is_replay else clock
+        self.intake = Intake(self._access(), self.plant.topics, clock=received_by)
+        self._wants_reload = threading.Event()
+        self._schedule = Schedule(clock)
+        self.counts: Counter[str] = Counter()
+        self.last_problem = ""
+
+    def run(self, stop: threading.Event) -> None:
+        """Work until *stop* is set; whatever goes wrong beyond repair is raised: a worker dies loudly."""
+        self.intake.start()
+        interval_s = self.plant.site.store.commit_interval_s
+        last_end_s = self._clock.monotonic_s()
+        try:
+            while not stop.is_set():
+                self._side_work(stop)
+                if not self.intake.wait(IDLE_WAIT_S):
+                    continue
+                rest_s = last_end_s + interval_s - self._clock.monotonic_s()
+                if rest_s > 0:
+                    stop.wait(rest_s)
+                messages = self.intake.take(BLOCK_LIMIT)
+                if self.process(messages, stop):
+                    self.intake.acknowledge(messages)
+                last_end_s = self._clock.monotonic_s()
+        finally:
+            self.intake.stop()
+            self._inbox.close()
+            self.store.close()
+
+    def reload_soon(self) -> None:
+        """Ask for the site file to be read anew between two blocks; safe to call from a signal handler."""
+        self._wants_reload.set()
+
+    def process(self, messages: Sequence[Received], stop: threading.Event) -> bool:
+        """Take *messages* through decoding, chain and commit; return whether they are on disk."""
+        decoded = decode(self.plant.decoder, messages)
+        commit = BlockCommit(refusals=decoded.refusals, counts=decoded.counts)
+        commit.channels = channel_rows(self.plant, decoded.channels)
+        return self._take_in(decoded.readings, commit, stop)
+
+    def _take_in(self, readings: Sequence[RawReading], commit: BlockCommit, stop: threading.Event) -> bool:
+        raw = RawBlock.from_readings(readings)
+        if self._is_replay:
+            # What is replayed counts as received when it was measured: all that follows is as it was then.
+            raw = replace(raw, received_at_us=raw.measured_at_us)
+        newest_us = list(self._newest_us)
+        admission = admit(newest_us, raw, stored=self._stored)
+        water, output = run(self.plant.roster, self.plant.tanks, self.state, admission.block)
+        if len(admission.block):
+            commit.readings = reading_rows(self.plant, admission.block, water)
+            commit.latest = newest_rows(admission.block)
+            commit.sensor_states = [None] * len(commit.latest)
+        commit.conflicts = conflict_rows(self.plant, raw, admission.contradictions)
+        commit.counts["readings"] = len(admission.block)
+        commit.counts["duplicates"] = admission.duplicates
+        commit.counts["conflicts"] = len(admission.contradictions)
+        commit.meta.update(self._waiting_halves())
+        if not self._commit(self._with_output(commit, output), stop):
+            return False
+        self._newest_us = newest_us
+        self.state = output.state
+        if isinstance(self._clock, ReplayClock) and len(admission.block):
+            self._clock.follow(int(admission.block.measured_at_us[-1]))
+        return True
+
+    def _waiting_halves(self) -> dict[str, str | int]:
+        """Return the halves of readings that wait for their partner, if they are not as last committed."""
+        halves = msgspec.json.encode(self.plant.decoder.pairing.to_dict()).decode()
+        if halves == self._committed_halves:
+            return {}
+        self._committed_halves = halves
+        return {"waiting_halves": halves}
+
+    def _with_output(self, commit: BlockCommit, output: ChainOutput) -> BlockCommit:
+        now_us = self._clock.now_us()
+        commit.tank_states = tank_states(self.plant, output.state, output.tanks)
+        commit.pending_alarms = pending_rows(self.plant, output, now_us=now_us)
+        commit.occurrences = [self._occurrence(item, now_us) for item in output.happened]
+        return commit
+
+    def _occurrence(self, happened: Happened, now_us: int) -> Occurrence:
+        return occurrence(self.plant, happened, now_us=now_us, actor=happened.transition.who)
+
+    def _commit(self, commit: BlockCommit, stop: threading.Event) -> bool:
+        """Commit, again and again if need be; False only when the worker is told to stop before it could."""
+        attempt = 0
+        while True:
+            try:
+                self.store.commit(commit)
+            except sqlite3.OperationalError as error:
+                self.last_problem = f"the store does not take the block: {error}"
+                wait_s = RETRY_S[min(attempt, len(RETRY_S) - 1)]
+                log.error("commit failed", reason=str(error), attempt=attempt + 1, wait_s=wait_s)
+                attempt += 1
+                if stop.wait(wait_s):
+                    return False
+                continue
+            self.last_problem = ""
+            self.counts.update(commit.counts)
+            return True
+
+    def _stored(self, measured_at_us: int, sensor: int) -> AsSent | None:
+        number = int(self.plant.numbers.sensor[sensor])
+        return as_sent(self.store.connection, measured_at=measured_at_us, sensor=number)
+
+    def _side_work(self, stop: threading.Event) -> None:
+        """Do what is due besides readings, each a short step."""
+        if self._wants_reload.is_set():
+            self._wants_reload.clear()
+            self.reload()
+        if self._schedule.is_due("inbox", INBOX_EVERY_S):
+            self.take_commands(stop)
+        if self._schedule.is_due("tick", TICK_EVERY_S):
+            self.tick(stop)
+        if self._schedule.is_due("heartbeat", HEARTBEAT_EVERY_S):
+            self._commit(BlockCommit(meta={"alive_at": self._clock.now_us(), **self._condition()}), stop)
+        if self._schedule.is_due("rollup", ROLLUP_EVERY_S) and self.roll_up():
+            self._schedule.make_due("rollup")
+        if self._schedule.is_due("checkpoint", CHECKPOINT_EVERY_S):
+            self.store.checkpoint()
+
+    def _condition(self) -> dict[str, str | int]:
+        return {
+            "broker_connected": int(self.intake.is_connected),
+            "broker_problem": self.intake.last_problem,
+            "dropped_by_broker": self.intake.dropped_by_broker,
+            "waiting_messages": self.intake.waiting,
+        }
+
+    def tick(self, stop: threading.Event) -> None:
+        """Let everything happen that time alone brings."""
+        overdue = self.plant.decoder.pairing.expired(self._clock.now_us())
+        if overdue:
+            self._take_in(overdue, BlockCommit(), stop)
+        output = tick(self.plant.tanks, self.state, now_us=self._clock.now_us())
+        if output.happened or output.pending:
+            if not self._commit(self._with_output(BlockCommit(), output), stop):
+                return
+            self.state = output.state
+
+    def roll_up(self) -> bool:
+        """Take one step of the rollups; return whether more is to do."""
+        newest = max(self._newest_us, default=NEVER_SPOKEN)
+        if newest == NEVER_SPOKEN:
+            return False
+        try:
+            reached = self.store.sweep_rollups(until_us=min(newest, self._clock.now_us()) - ROLLUP_LAG_US)
+        except sqlite3.OperationalError as error:
+            log.warning("rollups wait", reason=str(error))
+            return False
+        return reached is not None and reached < newest - ROLLUP_LAG_US - MICROSECONDS_PER_SECOND
+
+    def take_commands(self, stop: threading.Event) -> None:
+        """Decide on what people have asked for since the last look."""
+        for seq, command in self._inbox.after(self._inbox_seq):
+            context = Bench(self.plant, self.state, now_us=self._clock.now_us())
+            if restoring.has_outcome(self.store.connection, command.id):
+                self._inbox_seq = seq
+                continue
+            ruling = desk.rule(command, context, roles=self.plant.roles)
+            commit = BlockCommit(
+                occurrences=[*ruling.occurrences], meta={"inbox_seq": seq}, counts={f"commands.{ruling.outcome}": 1}
+            )
+            commit.outcomes.append(restoring.outcome_row(command, ruling.outcome, ruling.reason, context.now_us))
+            if not self._commit(commit, stop):
+                return
+            self._inbox_seq = seq
+            if ruling.outcome == "applied":
+                self.state = context.state
+            if ruling.has_to_reload:
+                self._wants_reload.set()
+            log.info(
+                "command", kind=command.kind, subject=command.subject, outcome=ruling.outcome, reason=ruling.reason
+            )
+
+    def reload(self) -> bool:
+        """Read the site file anew; all or nothing. Return whether the new one is at work."""
+        try:
+            text = self._site_file.read_text(encoding="utf-8")
+            site = load_text(text, self._site_file.name)
+        except (OSError, EuryhaleError) as error:
+            self.last_problem = f"the new site file is refused, the old one stays: {error}"
+            log.error("site file refused", reason=str(error))
+            return False
+        if site.store.folder(self._site_file) != self.store.folder:
+            self.last_problem = "store.path has changed: that needs a restart; the old site file stays"
+            log.error("site file refused", reason=self.last_problem)
+            return False
+        before = (self.plant, self.state, self._newest_us)
+        try:
+            with self.store.transaction() as connection:
+                numbers = register(
+                    connection,
+                    site,
+                    text=text,
+                    actor=site.identity.default_actor.name,
+                    now_us=self._clock.now_us(),
+                )
+                self.plant = self._plant(site, text, numbers)
+                self._restore()
+        except (sqlite3.Error, EuryhaleError) as error:
+            self.plant, self.state, self._newest_us = before
+            self.last_problem = f"the new site file is refused, the old one stays: {error}"
+            log.error("site file refused", reason=str(error))
+            return False
+        self.intake.resubscribe(self.plant.topics)
+        self.last_problem = ""
+        log.info("site file accepted", revision=self.plant.numbers.revision)
+        return True
+
+    def _plant(self, site: Site, text: str, numbers: Numbers) -> Plant:
+        connection = self.store.connection
+        self._committed_halves = restoring.meta_text(connection, "waiting_halves") or "{}"
+        return plant(
+            site,
+            text=text,
+            has_horizon=not self._is_replay,
+            numbers=numbers,
+            animals_in=restoring.animals_in_tanks(connection),
+            waiting_halves=msgspec.json.decode(self._committed_halves),
+        )
+
+    def _restore(self) -> None:
+        """Take up chain state and newest times from the store, by the ids of the plant."""
+        connection = self.store.connection
+        newest = restoring.newest_times(connection)
+        self._newest_us = [newest.get(sensor.id, NEVER_SPOKEN) for sensor in self.plant.site.sensors]
+        known = set(self.plant.tanks.rules)
+        index = self.plant.site.tank_index
+        alarms = {
+            (ConditionKind(row.condition), index[row.subject.removeprefix("tank/")]): restoring.alarm_state(row)
+            for row in restoring.alarm_rows(connection)
+            if row.condition in known and row.subject.removeprefix("tank/") in index
+        }
+        self.state = restored_state(
+            self.plant.roster, self.plant.tanks, bodies=restoring.tank_bodies(connection), alarms=alarms
+        )
+
+    def _access(self) -> Access:
+        broker = self.plant.site.broker
+        ca_file = None if broker.ca_file is None else (self._site_file.parent / broker.ca_file).resolve()
+        return Access(
+            host=broker.host,
+            port=broker.port,
+            client_id=broker.client_id or f"euryhale-{self.plant.site.id}",
+            is_version_5=broker.protocol == "5",
+            user=broker.user,
+            password=None if broker.secret is None else read_secret(broker.secret, site_file=self._site_file),
+            is_tls=broker.tls,
+            ca_file=ca_file,
+            status_topic=f"euryhale/{self.plant.site.id}/worker/status",
+        )

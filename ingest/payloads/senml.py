@@ -25,7 +25,8 @@ RELATIVE_BELOW_S = 2**28
 VERSION = 10
 SECONDARY_UNITS_VERSION = 26
 """10 + 2**4: the version of packs that use secondary units (RFC 9100, feature code 4)."""
-KNOWN_VERSIONS = (VERSION, SECONDARY_UNITS_VERSION)
+KNOWN_VERSIONS = (*range(VERSION + 1), SECONDARY_UNITS_VERSION)
+"""Up to 10 (the examples of RFC 8428 bear 5); above it only the feature that this reader knows."""
 
 CBOR_LABELS = {
     -1: "bver", -2: "bn", -3: "bt", -4: "bu", -5: "bv", -6: "bs",
@@ -277,7 +278,7 @@ def data_value(value: object, number: int = 1) -> bytes:
 
 def _checked_version(new: int, old: int | None, number: int) -> int:
     if new not in KNOWN_VERSIONS or (old is not None and new != old):
-        allowed = f"one version throughout: {' or '.join(map(str, KNOWN_VERSIONS))}"
+        allowed = f"one version throughout, at most {VERSION}, or {SECONDARY_UNITS_VERSION}"
         raise PayloadError(Reason.VERSION_UNKNOWN, f"record {number}", shown(new), allowed)
     return new
 

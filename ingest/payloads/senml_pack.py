@@ -158,10 +158,10 @@ def _number(record: Resolved, place: _Place, got: _Yield) -> tuple[float, int]:
     sent = record.value if record.value is not None else record.sum
     scale = place.scale(record.unit)
     if type(sent) is float and scale is not None and isfinite(sent) and sent not in place.fillers:
-        number = sent * scale.factor + scale.offset
-        if isfinite(number):
+        sent = sent * scale.factor + scale.offset
+        if isfinite(sent):
             got.usable += 1
-            return number, 0
+            return sent, 0
     value = judged(sent, fillers=place.fillers)
     if value.reason is None:
         allowed = registered_for(place.declared_unit)

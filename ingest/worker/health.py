@@ -43,6 +43,10 @@ def metrics(worker: Worker) -> str:
         lines += [f"# TYPE euryhale_{name} {kind}", f"euryhale_{name} {value}"]
     lines.append("# TYPE euryhale_events_total counter")
     lines += [f'euryhale_events_total{{kind="{name}"}} {value}' for name, value in sorted(dict(worker.counts).items())]
+    lines.append("# TYPE euryhale_step_seconds_total counter")
+    lines += [
+        f'euryhale_step_seconds_total{{step="{step}"}} {spent:.6f}' for step, spent in worker.stopwatch.spent_s.items()
+    ]
     return "\n".join(lines) + "\n"
 
 

@@ -40,6 +40,7 @@ from ingest.worker.decoding import decode
 from ingest.worker.plant import Plant, plant
 from ingest.worker.registering import register
 from ingest.worker.schedule import Schedule
+from ingest.worker.stopwatch import Stopwatch
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -70,6 +71,8 @@ CHECKPOINT_EVERY_S = 60.0
 RETRY_S = (0.1, 0.5, 1.0, 2.0, 5.0)
 """Waits between attempts to commit; the last one repeats. Nothing is acknowledged meanwhile."""
 NEVER_SPOKEN = -(2**63)
+STEPS = ("decode", "admit", "chain", "prepare", "commit", "acknowledge")
+"""The steps whose time is measured, for /metrics and `make bench`."""
 
 
 class Worker:
@@ -114,6 +117,7 @@ class Worker:
         self._wants_reload = threading.Event()
         self._schedule = Schedule(clock)
         self.counts: Counter[str] = Counter()
+        self.stopwatch = Stopwatch(STEPS)
         self.last_problem = ""
 
     def run(self, stop: threading.Event) -> None:
@@ -132,11 +136,16 @@ class Worker:
                 messages = self.intake.take(BLOCK_LIMIT)
                 if self.process(messages, stop):
                     self.intake.acknowledge(messages)
+                    self.stopwatch.lap("acknowledge")
                 last_end_s = self._clock.monotonic_s()
         finally:
             self.intake.stop()
-            self._inbox.close()
-            self.store.close()
+            self.close()
+
+    def close(self) -> None:
+        """Let go of the store."""
+        self._inbox.close()
+        self.store.close()
 
     def reload_soon(self) -> None:
         """Ask for the site file to be read anew between two blocks; safe to call from a signal handler."""
@@ -144,7 +153,9 @@ class Worker:
 
     def process(self, messages: Sequence[Received], stop: threading.Event) -> bool:
         """Take *messages* through decoding, chain and commit; return whether they are on disk."""
+        self.stopwatch.start()
         decoded = decode(self.plant.decoder, messages)
+        self.stopwatch.lap("decode")
         commit = BlockCommit(refusals=decoded.refusals, counts=decoded.counts)
         commit.channels = channel_rows(self.plant, decoded.channels)
         return self._take_in(decoded.readings, commit, stop)
@@ -156,7 +167,9 @@ class Worker:
             raw = replace(raw, received_at_us=raw.measured_at_us)
         newest_us = list(self._newest_us)
         admission = admit(newest_us, raw, stored=self._stored)
+        self.stopwatch.lap("admit")
         water, output = run(self.plant.roster, self.plant.tanks, self.state, admission.block)
+        self.stopwatch.lap("chain")
         if len(admission.block):
             commit.readings = reading_rows(self.plant, admission.block, water)
             commit.latest = newest_rows(admission.block)
@@ -166,7 +179,11 @@ class Worker:
         commit.counts["duplicates"] = admission.duplicates
         commit.counts["conflicts"] = len(admission.contradictions)
         commit.meta.update(self._waiting_halves())
-        if not self._commit(self._with_output(commit, output), stop):
+        self._with_output(commit, output)
+        self.stopwatch.lap("prepare")
+        is_stored = self._commit(commit, stop)
+        self.stopwatch.lap("commit")
+        if not is_stored:
             return False
         self._newest_us = newest_us
         self.state = output.state

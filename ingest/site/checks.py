@@ -6,14 +6,21 @@ gets everything at once. What has the wrong shape is passed over here; the model
 
 from __future__ import annotations
 
+import json
+import re
 from functools import cache
 from typing import TYPE_CHECKING, Any
 from zoneinfo import available_timezones
 
+from pydantic import ValidationError
+
+from analysis.animal import tables
+from analysis.errors import InvalidInputError
 from ingest.site.problems import listed, nearest_word
+from ingest.site.section import ANIMAL_PATTERN
 from ingest.site.sensor_checks import problems_of_sensors
-from ingest.site.tanks import MAIN_HALL
-from ingest.site.waters import PLAIN_WATER_KINDS
+from ingest.site.tanks import MAIN_HALL, SetPoint
+from ingest.site.waters import PLAIN_WATER_KINDS, Analysis
 
 if TYPE_CHECKING:
     from collections.abc import Collection, Iterator
@@ -24,7 +31,7 @@ if TYPE_CHECKING:
 LISTS_WITH_IDS = ("source_waters", "analyses", "halls", "tanks", "sensors")
 
 
-def problems_across(document: Document, *, known_animals: Collection[str] = ()) -> list[Problem]:
+def problems_across(document: Document, *, known_animals: Collection[str] | None = None) -> list[Problem]:
     """Return every problem that lies between the parts of a site file.
 
     Parameters
@@ -32,14 +39,16 @@ def problems_across(document: Document, *, known_animals: Collection[str] = ()) 
     document : Document
         The plain data of the file.
     known_animals : collection of str
-        Ids of the species tables; empty where they are not to be checked.
+        Animals that may be named; the packaged species tables where not given.
     """
     return [
         *_time_zone(document),
         *_ids(document),
         *_references(document),
         *_set_points(document),
-        *_stock(document, known_animals),
+        *_analyses(document),
+        *_stock(document),
+        *_animals(document, packaged_animals() if known_animals is None else known_animals),
         *problems_of_sensors(document),
     ]
 
@@ -130,7 +139,7 @@ def _water(document: Document, path: Path, waters: list[str]) -> Iterator[Proble
 def _set_points(document: Document) -> Iterator[Problem]:
     for path, tank in items(document, "tanks"):
         set_point = tank.get("set_point")
-        if not isinstance(set_point, dict):
+        if not isinstance(set_point, dict) or _has_unknown_key(set_point):
             continue
         at = (*path, "set_point")
         salinity, band = _number(set_point.get("salinity")), _number(set_point.get("band"))
@@ -147,30 +156,62 @@ def _set_points(document: Document) -> Iterator[Problem]:
         yield from ordered(document, (*at, "tidal_band"))
 
 
-def _stock(document: Document, known_animals: Collection[str]) -> Iterator[Problem]:
+def _has_unknown_key(set_point: dict[str, Any]) -> bool:
+    """Return whether a key of a set point is misspelt: what would follow from that is not told twice."""
+    return not SetPoint.model_fields.keys() >= set_point.keys()
+
+
+def _analyses(document: Document) -> Iterator[Problem]:
+    """Yield what only the chemistry can tell: charges that do not balance, no cation or no anion."""
+    for path, entry in items(document, "analyses"):
+        try:
+            Analysis.model_validate_json(json.dumps(entry), strict=True).ion_analysis()
+        except ValidationError:
+            continue  # told field by field
+        except InvalidInputError as error:
+            problem = document.problem((*path, "ions"), None, f"{error.what}: {error.allowed}")
+            yield problem._replace(found=str(error.found))
+
+
+def _stock(document: Document) -> Iterator[Problem]:
     for path, tank in items(document, "tanks"):
         stock = tank.get("first_stock")
         if not isinstance(stock, dict):
             continue
         set_point = tank.get("set_point")
         has_salinity = isinstance(set_point, dict) and (
-            set_point.get("salinity") is not None or set_point.get("tidal_band") is not None
+            _has_unknown_key(set_point)
+            or set_point.get("salinity") is not None
+            or set_point.get("tidal_band") is not None
         )
         if not has_salinity:
             allowed = "set_point with a salinity or a tidal_band: a stocked tank without one has no alarm of its own"
             yield document.problem((*path, "set_point"), set_point, allowed)
-        yield from _animal(document, (*path, "first_stock", "animal"), known_animals)
-    for path, _ in items(document, "species"):
-        if document.value((*path, "based_on")) is not None:
-            yield from _animal(document, (*path, "based_on"), known_animals)
 
 
-def _animal(document: Document, path: Path, known_animals: Collection[str]) -> Iterator[Problem]:
-    animal = document.value(path)
-    own = [entry["animal"] for _, entry in items(document, "species") if isinstance(entry.get("animal"), str)]
-    if known_animals and isinstance(animal, str) and animal not in known_animals and animal not in own:
-        allowed = "an animal of the species tables (euryhale species lists them) or of the section species"
-        yield document.problem(path, animal, allowed, nearest_word(animal, [*known_animals, *own]))
+def _animals(document: Document, known_animals: Collection[str]) -> Iterator[Problem]:
+    paths: list[Path] = [(*path, "first_stock", "animal") for path, _ in items(document, "tanks")]
+    paths += [(*path, "animal") for path, _ in items(document, "species")]
+    for path in paths:
+        animal = document.value(path)
+        if isinstance(animal, str) and re.match(ANIMAL_PATTERN, animal) and animal not in known_animals:
+            allowed = "an animal of the species tables; euryhale species lists them"
+            yield document.problem(path, animal, allowed, nearest_word(animal, known_animals))
+    for path, entry in items(document, "species"):
+        figures = entry.get("figures")
+        for figure in figures if isinstance(figures, dict) else ():
+            if figure not in tables.KNOWN_KEYS:
+                allowed = "a figure of the species tables, such as tolerable_low_ppt"
+                yield document.problem(
+                    (*path, "figures", figure), figure, allowed, nearest_word(figure, tables.KNOWN_KEYS)
+                )
+
+
+@cache
+def packaged_animals() -> frozenset[str]:
+    """Return the ids of the packaged species tables, and the other names of their stages."""
+    stages = tables.load()
+    return frozenset(stages).union(*(stage.aliases for stage in stages.values()))
 
 
 def ordered(document: Document, path: Path) -> Iterator[Problem]:

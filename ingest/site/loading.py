@@ -23,7 +23,7 @@ _DECIMAL_COMMA = re.compile(r"[-+]?[0-9]+,[0-9]+\Z")
 _DIGITS = re.compile(r"[0-9]+\Z")
 
 
-def load(path: Path, *, known_animals: Collection[str] = ()) -> Site:
+def load(path: Path, *, known_animals: Collection[str] | None = None) -> Site:
     """Return the site described by the file at *path*.
 
     Parameters
@@ -31,7 +31,7 @@ def load(path: Path, *, known_animals: Collection[str] = ()) -> Site:
     path : pathlib.Path
         The site file, YAML, UTF-8.
     known_animals : collection of str
-        Ids of the species tables; where given, every other animal is a problem.
+        Animals that may be named; the packaged species tables where not given.
 
     Raises
     ------
@@ -50,7 +50,7 @@ def load(path: Path, *, known_animals: Collection[str] = ()) -> Site:
     return load_text(text, path.name, known_animals=known_animals)
 
 
-def load_text(text: str, name: str = "site file", *, known_animals: Collection[str] = ()) -> Site:
+def load_text(text: str, name: str = "site file", *, known_animals: Collection[str] | None = None) -> Site:
     """Return the site that *text* describes; *name* stands in the problems. See `load`."""
     document = read_document(text, name)
     if document.data is None or not isinstance(document.data, dict):

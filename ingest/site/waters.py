@@ -7,7 +7,8 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
-from ingest.site.section import Section, Slug, Words, one_of, positive, quantity, slug, words
+from analysis.water.ions import IonAnalysis
+from ingest.site.section import Section, Slug, Words, one_of, quantity, slug, words
 
 SEAWATER = "seawater"
 SODIUM_CHLORIDE = "sodium-chloride"
@@ -39,8 +40,27 @@ class Analysis(Section):
     unit: Literal["mg/L", "mmol/L"] = one_of("mg/L", "mmol/L", default="mg/L")
     temperature_degC: float = quantity(0, 45, "degC", 25)
     density_kg_m3: float | None = quantity(980, 1300, "kg/m3", None)
-    pH: float | None = quantity(0, 14, "", None)  # noqa: N815 - the name of the quantity
-    conductivity_mS_cm: float | None = positive(300, "mS/cm, as measured at temperature_degC", None)
-    osmolality_mOsm_kg: float | None = positive(20_000, "mOsm/kg, measured by freezing point", None)
+    pH: float | None = quantity(4, 11, "", None)  # noqa: N815 - the name of the quantity
+    conductivity_mS_cm: float | None = quantity(0.01, 300, "mS/cm, as measured at temperature_degC", None)
+    osmolality_mOsm_kg: float | None = quantity(0.1, 5000, "mOsm/kg, by freezing point", None)
     laboratory: Words | None = words("who analysed", None)
     sampled_on: datetime.date | None = Field(None, description="a date as 2026-01-31")
+
+    def ion_analysis(self) -> IonAnalysis:
+        """Return the analysis as the science takes it.
+
+        Raises
+        ------
+        InvalidInputError
+            If the charges of the ions do not balance within 10 %, or cations or anions are missing.
+        """
+        return IonAnalysis(
+            name=self.id,
+            amounts={str(ion): amount for ion, amount in self.ions.items()},
+            unit=self.unit,
+            temperature_degC=self.temperature_degC,
+            density_kg_m3=self.density_kg_m3,
+            pH=self.pH,
+            conductivity_mS_cm=self.conductivity_mS_cm,
+            osmolality_mOsm_kg=self.osmolality_mOsm_kg,
+        )

@@ -87,7 +87,7 @@ sensors:
   - {id: p1-low, tank: p1, topic: larkfen/gateway, payload: senml-cbor, fields: {conductivity: p2-ec, temperature: p2-t}}
 species:
   - animal: penaeus-vannamei/pl10
-    figures: {tolerable_low: 6}
+    figures: {tolerable_low_ppt: 6}
     author: M. Lark
     reason: twelve batches without loss at 6
 """

@@ -9,6 +9,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
+from analysis.animal import tables
+from analysis.animal.overrides import with_overrides
 from ingest.site import Problem, SiteFileError, load, load_text
 from tests.ingest.site.examples import FULL, SMALL
 
@@ -64,7 +66,7 @@ def test_a_full_file_says_what_it_says() -> None:
     assert site.water_of(site.sensor("intake-ct")) == "seawater"
     assert [one.id for one in site.sensors_of_tank("p1")] == ["p1-ct", "p1-low"]
     assert site.sensor_index["intake-ct"] == 1
-    assert site.species[0].figures == {"tolerable_low": 6}
+    assert site.species[0].figures == {"tolerable_low_ppt": 6}
 
 
 def test_a_site_cannot_be_changed() -> None:
@@ -225,11 +227,34 @@ def test_a_stocked_tank_needs_a_set_point() -> None:
     assert load_text(tidal).tanks[0].first_stock is not None
 
 
-def test_unknown_animals_are_told_where_the_tables_are_given() -> None:
-    known = ["penaeus-vannamei/pl12", "salmo-salar/smolt"]
-    problem = the_problem(FULL.split("species:\n", maxsplit=1)[0], known_animals=known)
-    assert (problem.key, problem.nearest) == ("tanks[1] (l3).first_stock.animal", "penaeus-vannamei/pl12")
-    assert load_text(FULL, known_animals=known).species, "an animal of the site's own section is known"
+def test_an_animal_that_the_species_tables_do_not_hold_is_told() -> None:
+    problem = the_problem(
+        changed("animal: penaeus-vannamei/pl10, number", "animal: penaeus-vanamei/pl10, number", FULL)
+    )
+    assert (problem.key, problem.nearest) == ("tanks[1] (l3).first_stock.animal", "penaeus-vannamei/pl10")
+    own = [problem.key for problem in problems_of(FULL, known_animals=["salmo-salar/smolt"])]
+    assert own == ["tanks[1] (l3).first_stock.animal", "species[1] (penaeus-vannamei/pl10).animal"]
+
+
+def test_a_figure_that_the_species_tables_do_not_hold_is_told() -> None:
+    problem = the_problem(changed("tolerable_low_ppt", "tolerable_low", FULL))
+    assert (problem.key, problem.nearest) == (
+        "species[1] (penaeus-vannamei/pl10).figures.tolerable_low",
+        "tolerable_low_ppt",
+    )
+
+
+def test_figures_come_out_as_the_species_tables_take_them() -> None:
+    stages = with_overrides(tables.load(), load_text(FULL).species[0].entries())
+    figure = stages["penaeus-vannamei/pl10"].figures["tolerable_low_ppt"]
+    assert (figure.value, figure.sources) == (6, ("M. Lark",))
+
+
+def test_an_analysis_whose_charges_do_not_balance_is_told() -> None:
+    problem = the_problem(changed("Cl: 2600", "Cl: 260", FULL))
+    assert (problem.line, problem.key) == (28, "analyses[1] (borehole).ions")
+    assert "charge balance" in problem.allowed
+    assert abs(load_text(FULL).analyses[0].ion_analysis().charge_error_percent) < 5
 
 
 @pytest.mark.parametrize(

@@ -42,7 +42,7 @@ def test_a_tank_without_sensor_or_set_point_is_named(tmp_path: Path, capsys: pyt
 
 
 def test_every_problem_goes_to_standard_error(site_file: Path, capsys: pytest.CaptureFixture[str]) -> None:
-    site_file.write_text(FULL.replace("salinity: 31,", "salinty: 31,").replace("mS/cm\n", "mS\n"), encoding="utf-8")
+    site_file.write_text(FULL.replace("{salinity: 31,", "{salinty: 31,").replace("mS/cm\n", "mS\n"), encoding="utf-8")
     assert main(["check", str(site_file)]) == 1
     said = capsys.readouterr()
     assert said.out == ""

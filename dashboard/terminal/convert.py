@@ -127,7 +127,7 @@ def run(args: argparse.Namespace) -> int:
     except BrokenPipeError:
         raise  # the reader of our output has gone: the command says nothing more
     except (UnicodeDecodeError, csv.Error) as error:
-        print(f"euryhale convert: {args.input}: found {error}; allowed: CSV in UTF-8", file=sys.stderr)
+        print(f"euryhale convert: {args.input or args.water}: found {error}; allowed: text in UTF-8", file=sys.stderr)
         return OTHER_ERROR
     except (EuryhaleError, OSError) as error:
         print(f"euryhale convert: {error}", file=sys.stderr)
@@ -179,6 +179,10 @@ def _water_kind(word: str) -> WaterKind:
         from analysis.water.sodium_chloride_water import SodiumChlorideWater
 
         return SodiumChlorideWater()
+    if word.lower().endswith((".yaml", ".yml")):
+        from dashboard.terminal.analysis_file import water_of_analysis_file
+
+        return water_of_analysis_file(Path(word))
     raise UsageError(f"--water: found {word!r}; allowed: seawater, sodium-chloride, or a file that ends in .yaml")
 
 

@@ -3,6 +3,7 @@ from __future__ import annotations
 import argparse
 import csv
 import json
+import re
 from pathlib import Path
 
 import pytest
@@ -227,3 +228,43 @@ def test_an_unknown_unit_is_refused_by_the_parser(capsys: pytest.CaptureFixture[
         run("--conductivity", "1", "--temperature", "1", "--unit", "mho")
     assert caught.value.code == 2
     assert "uS/cm" in capsys.readouterr().err
+
+
+WELL = """\
+id: well
+name: Borehole
+ions: {Na: 1150, K: 15, Mg: 60, Ca: 120, Cl: 1900, SO4: 180, HCO3: 240}
+pH: 7.8
+"""
+
+
+def test_the_water_of_a_laboratory_analysis(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    pytest.importorskip("phreeqc", reason="the package phreeqc is missing; get it with: pip install 'euryhale[ions]'")
+    (tmp_path / "well.yaml").write_text(WELL, encoding="utf-8")
+    found = answer(capsys, "--conductivity", "6", "--temperature", "25", "--water", str(tmp_path / "well.yaml"))
+    assert found["practical_salinity"] is None
+    # The ions alone: 3.665 g/L, 111 mmol/L of particles; conductivity of such waters about 6 mS/cm at 25 degC.
+    assert found["absolute_salinity_g_kg"] == pytest.approx(3.6, rel=0.1)
+    assert found["osmolality_mOsm_kg"] == pytest.approx(0.92 * 111.0, rel=0.1)
+    assert found["uncertainty"]["osmolality_mOsm_kg"] > 0.01 * found["osmolality_mOsm_kg"]  # type: ignore[index,operator]
+
+
+@pytest.mark.parametrize(
+    ("text", "said"),
+    [
+        (None, "No such file"),
+        ("- 1\n", "the keys of an analysis"),
+        (WELL.replace("ions:", "salts:"), "did you mean ions|allowed: the keys"),
+        (WELL.replace("K: 15", "Kx: 15"), "Na, K, Ca"),
+        (WELL.replace("K: 15", "K: -15"), "from 0 up"),
+        (WELL.replace("Cl: 1900", "Cl: 100"), "charge balance"),
+        (WELL.replace("id: well", "id: [well"), "well.yaml, line"),
+    ],
+)
+def test_an_analysis_that_cannot_be_used_says_why(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], text: str | None, said: str
+) -> None:
+    if text is not None:
+        (tmp_path / "well.yaml").write_text(text, encoding="utf-8")
+    assert run("--conductivity", "6", "--temperature", "25", "--water", str(tmp_path / "well.yaml")) == 1
+    assert re.search(said, capsys.readouterr().err)

@@ -13,6 +13,7 @@ from analysis.alarm.kinds import ConditionKind
 from analysis.alarm.nearest import LatestReadings, judged_rows, no_readings_yet
 from analysis.alarm.state import NEVER_US
 from analysis.flags import Flag, Quality
+from ingest.chain.animals import animal_body, fresh_animals, restored_animals, step
 from ingest.chain.water import water
 
 if TYPE_CHECKING:
@@ -20,9 +21,11 @@ if TYPE_CHECKING:
 
     from analysis.alarm.bank import AlarmBank
     from analysis.alarm.events import Event
+    from analysis.alarm.nearest import JudgedRows
     from analysis.alarm.state import AlarmState
     from analysis.alarm.transition import Transition
-    from analysis.arrays import BoolArray, IntArray
+    from analysis.arrays import BoolArray, FloatArray, IntArray, QualityArray
+    from ingest.chain.animals import AnimalRoster, AnimalState, StressStep
     from ingest.chain.block import RawBlock
     from ingest.chain.roster import Roster
     from ingest.chain.tanks import TankRoster
@@ -35,7 +38,9 @@ class ChainState:
 
     salinity: LatestReadings
     temperature: LatestReadings
+    osmolality: LatestReadings
     bank: AlarmBank
+    animals: AnimalState
 
 
 class Happened(NamedTuple):
@@ -60,29 +65,40 @@ class ChainOutput:
         Alarms whose state changed without a transition: an on-delay that runs.
     tanks : tuple of int
         Tanks whose state changed.
+    felt : tuple of StressStep
+        What the animals felt, for the record.
     """
 
     state: ChainState
     happened: tuple[Happened, ...] = ()
     pending: tuple[tuple[int, ConditionKind, AlarmState], ...] = ()
     tanks: tuple[int, ...] = ()
+    felt: tuple[StressStep, ...] = ()
 
 
-def fresh_state(tanks: TankRoster, states: Mapping[tuple[ConditionKind, int], AlarmState] | None = None) -> ChainState:
+def fresh_state(
+    tanks: TankRoster,
+    animals: AnimalRoster,
+    states: Mapping[tuple[ConditionKind, int], AlarmState] | None = None,
+) -> ChainState:
     """Return the state before any reading, with the alarms in *states* as they stood."""
     return ChainState(
         salinity=no_readings_yet(tanks.places),
         temperature=no_readings_yet(tanks.places),
+        osmolality=no_readings_yet(tanks.places),
         bank=alarm_bank.alarm_bank(tanks.rules, states),
+        animals=fresh_animals(animals),
     )
 
 
-def run(roster: Roster, tanks: TankRoster, state: ChainState, block: RawBlock) -> tuple[Water, ChainOutput]:
+def run(
+    roster: Roster, tanks: TankRoster, animals: AnimalRoster, state: ChainState, block: RawBlock
+) -> tuple[Water, ChainOutput]:
     """Let a block of admitted readings happen.
 
     Parameters
     ----------
-    roster, tanks : Roster, TankRoster
+    roster, tanks, animals : Roster, TankRoster, AnimalRoster
         The site.
     state : ChainState
         Before the block; not changed.
@@ -92,39 +108,40 @@ def run(roster: Roster, tanks: TankRoster, state: ChainState, block: RawBlock) -
     Returns
     -------
     tuple of (Water, ChainOutput)
-        What each reading says of the water, late ones too, and what followed for tanks and alarms.
+        What each reading says of the water, late ones too, and what followed for tanks, animals and alarms.
     """
     found = water(roster, block)
     live = _live(tanks, block)
     if not live.size:
         return found, ChainOutput(state)
     watcher = tanks.watcher_of[block.sensor[live]]
-    judged_at = block.measured_at_us[live]
+    warmth = found.temperature_degC[live]
+    has_warmth = np.where(np.isnan(warmth), np.uint8(Quality.MISSING), np.uint8(Quality.PASS))
+
+    def judged(latest: LatestReadings, value: FloatArray, quality: QualityArray) -> tuple[LatestReadings, JudgedRows]:
+        return judged_rows(
+            latest,
+            tanks.places,
+            sensor=watcher,
+            value=value,
+            quality=quality,
+            judged_at_us=block.measured_at_us[live],
+            stale_after_us=tanks.stale_after_us,
+        )
+
     quality = found.quality[live]
-    salinity, salinity_rows = judged_rows(
-        state.salinity,
-        tanks.places,
-        sensor=watcher,
-        value=found.salinity[live],
-        quality=quality,
-        judged_at_us=judged_at,
-        stale_after_us=tanks.stale_after_us,
-    )
-    temperature, temperature_rows = judged_rows(
-        state.temperature,
-        tanks.places,
-        sensor=watcher,
-        value=found.temperature_degC[live],
-        quality=np.where(np.isnan(found.temperature_degC[live]), np.uint8(Quality.MISSING), np.uint8(Quality.PASS)),
-        judged_at_us=judged_at,
-        stale_after_us=tanks.stale_after_us,
-    )
+    salinity, salinity_rows = judged(state.salinity, found.salinity[live], quality)
+    temperature, temperature_rows = judged(state.temperature, warmth, has_warmth)
+    osmolality, osmolality_rows = judged(state.osmolality, found.properties.osmolality_mOsm_kg[live], quality)
     wet = without_dry(salinity_rows, tanks.dry_below)
     rows = (wet, wet, temperature_rows, temperature_rows, salinity_rows)
     observed = limit_block(tanks.conditions, rows, now_us=block.received_at_us[live])
     bank, outcomes = alarm_bank.observe(state.bank, observed)
-    after = ChainState(salinity, temperature, bank)
-    return found, _output(state, after, outcomes, tuple(np.unique(tanks.places.tank[watcher]).tolist()))
+    felt_in = osmolality_rows._replace(is_usable=wet.is_usable)
+    creatures, felt = step(animals, state.animals, osmolality=felt_in, temperature=temperature_rows)
+    after = ChainState(salinity, temperature, osmolality, bank, creatures)
+    touched = tuple(np.unique(tanks.places.tank[watcher]).tolist())
+    return found, replace(_output(state, after, outcomes, touched), felt=tuple(felt))
 
 
 def tick(tanks: TankRoster, state: ChainState, *, now_us: int) -> ChainOutput:
@@ -143,10 +160,14 @@ def act(state: ChainState, *, tank: int, kind: ConditionKind, event: Event, now_
     return _output(state, replace(state, bank=bank), outcomes, ())
 
 
-def tank_body(roster: Roster, tanks: TankRoster, state: ChainState, tank: int) -> dict[str, Any]:
+QUANTITIES = ("salinity", "temperature", "osmolality")
+
+
+def tank_body(roster: Roster, tanks: TankRoster, animals: AnimalRoster, state: ChainState, tank: int) -> dict[str, Any]:
     """Return what the chain remembers of one tank as plain JSON data, sensors by their ids."""
-    body: dict[str, Any] = {}
-    for name, latest in (("salinity", state.salinity), ("temperature", state.temperature)):
+    body: dict[str, Any] = {"animals": animal_body(animals, state.animals, tank)}
+    for name in QUANTITIES:
+        latest: LatestReadings = getattr(state, name)
         body[name] = {}
         for watcher in np.flatnonzero(tanks.places.tank == tank).tolist():
             place = (tank, int(tanks.places.slot[watcher]))
@@ -162,28 +183,39 @@ def tank_body(roster: Roster, tanks: TankRoster, state: ChainState, tank: int) -
 def restored_state(
     roster: Roster,
     tanks: TankRoster,
+    animals: AnimalRoster,
     *,
     bodies: Mapping[str, Mapping[str, Any]],
     alarms: Mapping[tuple[ConditionKind, int], AlarmState],
 ) -> ChainState:
     """Return the state that was kept with `tank_body`, by the tanks' ids, and the alarms; restoring fires nothing.
 
-    Sensors and tanks that are gone are left out; new ones start fresh.
+    Sensors, tanks and cohorts that are gone are left out; new ones start fresh.
     """
-    state = fresh_state(tanks, alarms)
+    state = fresh_state(tanks, animals, alarms)
+    kept_animals = {
+        tank: body["animals"]
+        for tank, tank_id in enumerate(tanks.tanks)
+        if (body := bodies.get(tank_id)) is not None and body.get("animals")
+    }
     for tank, tank_id in enumerate(tanks.tanks):
-        for name, latest in (("salinity", state.salinity), ("temperature", state.temperature)):
-            kept = bodies.get(tank_id, {}).get(name, {})
-            for watcher in np.flatnonzero(tanks.places.tank == tank).tolist():
-                entry = kept.get(roster.sensors[tanks.watchers[watcher]])
-                if entry is None:
-                    continue
-                place = (tank, int(tanks.places.slot[watcher]))
-                latest.value[place] = np.nan if entry[0] is None else entry[0]
-                latest.quality[place] = entry[1]
-                latest.judged_at_us[place] = entry[2]
-                latest.believed_at_us[place] = entry[3]
-    return state
+        for name in QUANTITIES:
+            _restore_latest(roster, tanks, getattr(state, name), tank, bodies.get(tank_id, {}).get(name, {}))
+    return replace(state, animals=restored_animals(animals, kept_animals))
+
+
+def _restore_latest(
+    roster: Roster, tanks: TankRoster, latest: LatestReadings, tank: int, kept: Mapping[str, Any]
+) -> None:
+    for watcher in np.flatnonzero(tanks.places.tank == tank).tolist():
+        entry = kept.get(roster.sensors[tanks.watchers[watcher]])
+        if entry is None:
+            continue
+        place = (tank, int(tanks.places.slot[watcher]))
+        latest.value[place] = np.nan if entry[0] is None else entry[0]
+        latest.quality[place] = entry[1]
+        latest.judged_at_us[place] = entry[2]
+        latest.believed_at_us[place] = entry[3]
 
 
 def _live(tanks: TankRoster, block: RawBlock) -> IntArray:

@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 import msgspec
 import numpy as np
 
+from analysis.animal.stress import BAND_WORDS, DRIVER_WORDS, Band, Driver
 from ingest.store import alarms, ledger, registry, rollups
 from ingest.store.connection import reader
 from ingest.store.lock import is_held
@@ -240,15 +241,29 @@ class Queries:
         return StressHistory(times, *(_floats(rows, column) for column in range(1, 9)))
 
     def latest_stress(self, *, since_us: int) -> dict[str, LatestStress]:
-        """Return the newest stress row of each tank that has one measured since *since_us*."""
-        with reader(self._path) as connection:
-            rows = connection.execute(
-                "SELECT slug, max(measured_at), cohort, stress, range_strain, change_strain, exposure_strain, thermal_strain,"
-                " driver, band, acclimated_mOsm_kg, internal_mOsm_kg, gap_mOsm_kg FROM stress JOIN tank ON tank.id = stress.tank"
-                " WHERE measured_at >= ? GROUP BY tank",
-                (since_us,),
-            ).fetchall()
-        return {row["slug"]: LatestStress(*row) for row in rows}
+        """Return what the animals of each tank felt last, by the tank's id, where that was measured since *since_us*."""
+        found = {}
+        for tank, body in self.tank_states().items():
+            animals = body.get("animals")
+            if animals is None or animals["state"]["updated_at_us"] < since_us:
+                continue
+            latest = animals["latest"]
+            found[tank] = LatestStress(
+                tank=tank,
+                measured_at=animals["state"]["updated_at_us"],
+                cohort=animals["cohort"],
+                stress=latest["stress"],
+                range_strain=latest["range_strain"],
+                change_strain=latest["change_strain"],
+                exposure_strain=latest["exposure_strain"],
+                thermal_strain=latest["thermal_strain"],
+                driver=DRIVER_WORDS[Driver(latest["driver"])],
+                band=BAND_WORDS[Band(latest["band"])],
+                acclimated_mOsm_kg=animals["state"]["acclimated"],
+                internal_mOsm_kg=latest["internal_mOsm_kg"],
+                gap_mOsm_kg=latest["gap_mOsm_kg"],
+            )
+        return found
 
     def alarms(self) -> list[AlarmRow]:
         """Return where every alarm that ever was stands now."""

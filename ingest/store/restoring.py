@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 import msgspec
 
 from analysis.alarm.state import state_from_dict
+from ingest.chain.animals import Stocked
 from ingest.store.alarms import read_all as alarm_rows
 from ingest.store.block import OutcomeRow
 
@@ -20,12 +21,12 @@ if TYPE_CHECKING:
 __all__ = [
     "alarm_rows",
     "alarm_state",
-    "animals_in_tanks",
     "has_outcome",
     "meta_number",
     "meta_text",
     "newest_times",
     "outcome_row",
+    "stocked_tanks",
     "tank_bodies",
 ]
 
@@ -56,12 +57,16 @@ def tank_bodies(connection: sqlite3.Connection) -> dict[str, dict[str, Any]]:
     return {row["slug"]: msgspec.json.decode(row["body"]) for row in rows}
 
 
-def animals_in_tanks(connection: sqlite3.Connection) -> dict[str, str]:
+def stocked_tanks(connection: sqlite3.Connection) -> dict[str, Stocked]:
     """Return which animals are in each tank now, by the tank's id; of several cohorts the one that came last."""
     rows = connection.execute(
-        "SELECT slug, animal FROM cohort JOIN tank ON tank.id = cohort.tank WHERE ended_at IS NULL ORDER BY since, cohort.id"
+        "SELECT slug, cohort.id, animal, body FROM cohort JOIN tank ON tank.id = cohort.tank"
+        " WHERE ended_at IS NULL ORDER BY since, cohort.id"
     ).fetchall()
-    return {row["slug"]: row["animal"] for row in rows}
+    return {
+        row["slug"]: Stocked(row["id"], row["animal"], float(msgspec.json.decode(row["body"])["used_to_salinity"]))
+        for row in rows
+    }
 
 
 def alarm_state(row: AlarmRow) -> AlarmState:

@@ -11,7 +11,7 @@ from analysis.alarm.transition import transition_to_dict
 from analysis.flags import Flag
 from ingest.chain.chain import tank_body
 from ingest.store.alarms import AlarmRow
-from ingest.store.block import ChannelRow, Conflict, Occurrence, OutboxRow, TankState
+from ingest.store.block import ChannelRow, Conflict, Occurrence, OutboxRow, StressRow, TankState
 from ingest.store.ledger import Event
 from ingest.store.readings import ReadingRows
 
@@ -101,8 +101,22 @@ def tank_states(plant: Plant, state: ChainState, tanks: Sequence[int]) -> list[T
     rows = []
     for tank in tanks:
         newest = int(state.salinity.judged_at_us[tank].max())
-        rows.append(TankState(int(plant.numbers.tank[tank]), newest, tank_body(plant.roster, plant.tanks, state, tank)))
+        rows.append(
+            TankState(
+                int(plant.numbers.tank[tank]), newest, tank_body(plant.roster, plant.tanks, plant.animals, state, tank)
+            )
+        )
     return rows
+
+
+def stress_rows(plant: Plant, output: ChainOutput) -> list[StressRow]:
+    """Return what the animals felt as rows of the store."""
+    return [
+        StressRow(
+            measured_at=item.measured_at_us, tank=int(plant.numbers.tank[item.tank]), cohort=item.cohort, **item.values
+        )
+        for item in output.felt
+    ]
 
 
 def subject_of(plant: Plant, tank: int) -> str:

@@ -16,7 +16,7 @@ from ingest.water_kinds import kinds_of
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
-    from ingest.chain.animals import AnimalRoster
+    from ingest.chain.animals import AnimalRoster, Stocked
     from ingest.chain.roster import Roster
     from ingest.chain.tanks import TankRoster
     from ingest.site.models import Site
@@ -52,7 +52,7 @@ def plant(
     *,
     text: str,
     numbers: Numbers,
-    animals_in: Mapping[str, str],
+    stocked: Mapping[str, Stocked],
     waiting_halves: Mapping[str, Any],
     has_horizon: bool = True,
 ) -> Plant:
@@ -65,8 +65,8 @@ def plant(
         The site file it was read from.
     numbers : Numbers
         The store's numbers.
-    animals_in : mapping of str to str
-        Which animals (``genus-species/stage``) are in which tank, by the tank's id.
+    stocked : mapping of str to Stocked
+        Which animals are in which tank, by the tank's id.
     waiting_halves : mapping
         Halves of readings that wait for their partner, as last committed.
     has_horizon : bool
@@ -74,7 +74,7 @@ def plant(
     """
     kinds = kinds_of(site)
     sensors = roster(site, kinds)
-    animals = animal_roster(site, kinds, animals_in)
+    animals = animal_roster(site, kinds, stocked)
     read_as = site
     if not has_horizon:
         identity = site.identity.model_copy(update={"horizon": Horizon(past_h=1_000_000)})

@@ -34,6 +34,7 @@ from ingest.worker.committing import (
     occurrence,
     pending_rows,
     reading_rows,
+    stress_rows,
     tank_states,
 )
 from ingest.worker.decoding import decode
@@ -109,7 +110,7 @@ class Worker:
         self._committed_halves = "{}"
         self.plant = self._plant(site, text, numbers)
         self._newest_us: list[int] = []
-        self.state: ChainState = fresh_state(self.plant.tanks)
+        self.state: ChainState = fresh_state(self.plant.tanks, self.plant.animals)
         self._restore()
         # A replayed record is received now, whatever time it speaks of.
         received_by = SystemClock() if self._is_replay else clock
@@ -168,7 +169,7 @@ class Worker:
         newest_us = list(self._newest_us)
         admission = admit(newest_us, raw, stored=self._stored)
         self.stopwatch.lap("admit")
-        water, output = run(self.plant.roster, self.plant.tanks, self.state, admission.block)
+        water, output = run(self.plant.roster, self.plant.tanks, self.plant.animals, self.state, admission.block)
         self.stopwatch.lap("chain")
         if len(admission.block):
             commit.readings = reading_rows(self.plant, admission.block, water)
@@ -202,6 +203,7 @@ class Worker:
     def _with_output(self, commit: BlockCommit, output: ChainOutput) -> BlockCommit:
         now_us = self._clock.now_us()
         commit.tank_states = tank_states(self.plant, output.state, output.tanks)
+        commit.stress = stress_rows(self.plant, output)
         commit.pending_alarms = pending_rows(self.plant, output, now_us=now_us)
         commit.occurrences = [self._occurrence(item, now_us) for item in output.happened]
         return commit
@@ -344,7 +346,7 @@ class Worker:
             text=text,
             has_horizon=not self._is_replay,
             numbers=numbers,
-            animals_in=restoring.animals_in_tanks(connection),
+            stocked=restoring.stocked_tanks(connection),
             waiting_halves=msgspec.json.decode(self._committed_halves),
         )
 
@@ -361,7 +363,11 @@ class Worker:
             if row.condition in known and row.subject.removeprefix("tank/") in index
         }
         self.state = restored_state(
-            self.plant.roster, self.plant.tanks, bodies=restoring.tank_bodies(connection), alarms=alarms
+            self.plant.roster,
+            self.plant.tanks,
+            self.plant.animals,
+            bodies=restoring.tank_bodies(connection),
+            alarms=alarms,
         )
 
     def _access(self) -> Access:

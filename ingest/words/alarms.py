@@ -47,6 +47,7 @@ class AlarmFacts:
     ion: str = ""
     driver: str = ""
     reason: str = ""
+    channel: str = ""
     value: float = math.nan
     limit: float = math.nan
     set_point: float = math.nan
@@ -114,6 +115,7 @@ def _values(facts: AlarmFacts, now_us: int, zone: tzinfo, language: Language) ->
             ("other_sensor", facts.other_sensor),
             ("ion", facts.ion),
             ("reason", facts.reason),
+            ("channel", facts.channel),
             ("driver", language.STRAINS.get(facts.driver, facts.driver)),
             ("left", _left(facts, language)),
         )

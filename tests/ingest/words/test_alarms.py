@@ -4,6 +4,10 @@ from __future__ import annotations
 
 import pytest
 
+from analysis.alarm.kinds import ConditionKind, NoticeKind, TaskKind
+from analysis.alarm.state import StateName
+from analysis.alarm.transition import Happening, Refusal
+from ingest.payloads.reason import Reason
 from ingest.words import trust
 from ingest.words.alarms import AlarmFacts, alarm_words, priority_letter, priority_word, stress_band
 from ingest.words.language import ENGLISH, Language
@@ -72,6 +76,20 @@ def test_stress_bands_are_those_of_the_design(stress, word):
     assert stress_band(stress) == word
 
 
+def test_every_condition_of_the_alarm_room_has_words():
+    assert {*ConditionKind, *NoticeKind, *TaskKind} <= set(ENGLISH.ALARMS)
+
+
+def test_every_state_and_refusal_of_the_alarm_room_has_words():
+    assert set(StateName) <= set(ENGLISH.ALARM_STATES)
+    assert {refusal.value for refusal in Refusal if refusal.value} <= set(ENGLISH.COMMAND_REASONS)
+
+
+def test_every_happening_of_an_alarm_and_every_reason_to_refuse_a_payload_has_words():
+    assert set(Happening) <= set(ENGLISH.ALARM_ACTS)
+    assert set(Reason) <= set(ENGLISH.REFUSALS)
+
+
 def test_priorities_are_three_words_and_three_letters():
     assert [priority_word(p) for p in ("urgent", "soon", "note")] == ["urgent", "soon", "note"]
     assert [priority_letter(p) for p in ("urgent", "soon", "note")] == ["U", "S", "N"]
@@ -90,7 +108,7 @@ def test_every_flag_and_quality_has_words():
 
 def test_a_command_without_a_worker_says_so():
     assert trust.command_words("waiting", is_worker_running=False) == "waiting: the worker is not running"
-    assert trust.command_words("refused", "role") == "refused: your role may not do this"
+    assert trust.command_words("refused", "role_too_weak") == "refused: your role may not do this"
     assert trust.command_words("refused", "the tank is being drained") == "refused: the tank is being drained"
 
 

@@ -1,0 +1,58 @@
+"""What a person asks for on a page: put into the inbox, followed until it has an outcome."""
+
+from __future__ import annotations
+
+import sqlite3
+from collections.abc import Mapping
+from dataclasses import replace
+from typing import TYPE_CHECKING
+
+from dashboard.browser.visit import Order
+from ingest.store.errors import MissingStoreError
+
+if TYPE_CHECKING:
+    from dashboard.browser.access import Access
+
+MOST_KEPT = 30
+
+
+def take(access: Access, act: Mapping[str, str]) -> Order:
+    """Send the acknowledgement that *act* asks for and return the order to follow.
+
+    Parameters
+    ----------
+    act : mapping
+        Data of the pressed button: subject, condition, occurrence, and the client's UUID `command`.
+    """
+    order = Order(
+        command_id=act["command"],
+        subject=act["subject"],
+        condition=act["condition"],
+        occurrence=int(act["occurrence"]),
+    )
+    try:
+        access.submit(
+            "alarm.acknowledge",
+            order.subject,
+            command_id=order.command_id,
+            body={"condition": order.condition, "why": "going"},
+            expected=str(order.occurrence),
+        )
+    except (sqlite3.Error, OSError):
+        return replace(order, state="unsent")
+    return order
+
+
+def followed(access: Access, orders: tuple[Order, ...]) -> tuple[Order, ...]:
+    """Return the orders with what has become of them by now; only waiting ones are asked about."""
+    return tuple(_followed(access, order) for order in orders[-MOST_KEPT:])
+
+
+def _followed(access: Access, order: Order) -> Order:
+    if order.state != "waiting":
+        return order
+    try:
+        outcome = access.outcome(order.command_id)
+    except MissingStoreError:
+        return order
+    return order if outcome is None else replace(order, state=outcome.outcome, reason=outcome.reason)

@@ -1,0 +1,237 @@
+"""What the board shows, as plain frozen data: one snapshot of the whole site a second serves every screen."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from datetime import tzinfo
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from dashboard.browser.glyphs import Balance
+from ingest.words.alarms import AlarmFacts
+
+if TYPE_CHECKING:
+    from analysis.arrays import FloatArray
+
+PRIORITY_RANK = {"urgent": 0, "soon": 1, "note": 2}
+HIDDEN_STATES = frozenset({"shelved", "suppressed_by_design", "out_of_service"})
+WAITING_STATES = frozenset({"unacknowledged", "returned_unacknowledged", "latched_unacknowledged"})
+MOST_BELIEVABLE_QUALITY = 3
+"""QARTOD: pass 1, not evaluated 2, suspect 3 still count; fail 4 and missing 9 do not."""
+
+
+@dataclass(frozen=True, slots=True)
+class Band:
+    """A set point with the limits that the alarms judge; NaN where there is none."""
+
+    target: float = math.nan
+    half_width: float = math.nan
+    low: float = math.nan
+    high: float = math.nan
+    is_tidal: bool = False
+
+    @property
+    def limits(self) -> tuple[float, float] | None:
+        """Return (low, high), or None without a band."""
+        return None if math.isnan(self.low) or math.isnan(self.high) else (self.low, self.high)
+
+
+@dataclass(frozen=True, slots=True)
+class SpeciesLimit:
+    """A limit of the animals on the tank's own axis, and where the figure comes from."""
+
+    value: float
+    is_lower: bool
+    mark: str
+
+
+@dataclass(frozen=True, slots=True)
+class Animals:
+    """The animals in a tank. Osmolalities are on the freezing-point basis, None where not known."""
+
+    cohort: str
+    id: str
+    name: str
+    number: int | None
+    tolerated_mOsm_kg: tuple[float, float] | None = None
+    optimal_mOsm_kg: tuple[float, float] | None = None
+    blood_mOsm_kg: float | None = None
+    is_blood_sampled: bool = False
+    limits: tuple[SpeciesLimit, ...] = ()
+    temperature_limits: tuple[SpeciesLimit, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class SensorSight:
+    """One sensor and its newest reading; None and NaN where nothing is known."""
+
+    id: str
+    name: str
+    tank: str | None
+    source_water: str | None
+    interval_s: float
+    stale_after_s: float
+    measured_at_us: int | None = None
+    received_at_us: int | None = None
+    conductivity_mS_cm: float = math.nan
+    temperature_degC: float = math.nan
+    salinity: float = math.nan
+    osmolality_mOsm_kg: float = math.nan
+    density_kg_m3: float = math.nan
+    flags: int = 0
+    quality: int = 9
+
+    def is_fresh(self, now_us: int) -> bool:
+        """Return whether its newest reading came within the time in which the next is due."""
+        return self.measured_at_us is not None and now_us - self.measured_at_us <= self.stale_after_s * 1e6
+
+    @property
+    def is_believable(self) -> bool:
+        """Return whether its newest salinity may be judged."""
+        return self.quality <= MOST_BELIEVABLE_QUALITY and math.isfinite(self.salinity)
+
+
+@dataclass(frozen=True, slots=True)
+class StressSight:
+    """What the animals feel: the sum, its parts, and the driver."""
+
+    measured_at_us: int
+    stress: float
+    strains: dict[str, float]
+    driver: str
+    gap_mOsm_kg: float
+
+
+@dataclass(frozen=True, slots=True)
+class AlarmSight:
+    """One alarm as it stands."""
+
+    subject: str
+    condition: str
+    state: str
+    priority: str
+    occurrence: int
+    raised_at_us: int | None
+    updated_at_us: int
+    acknowledged_by: str
+    acknowledged_at_us: int | None
+    facts: AlarmFacts
+
+    @property
+    def is_hidden(self) -> bool:
+        """Return whether it is shelved, suppressed by design or out of service."""
+        return self.state in HIDDEN_STATES
+
+    @property
+    def is_waiting(self) -> bool:
+        """Return whether nobody has taken it yet."""
+        return self.state in WAITING_STATES
+
+    @property
+    def is_present(self) -> bool:
+        """Return whether it stands on the board: raised, and not hidden."""
+        return self.state != "normal" and not self.is_hidden
+
+    @property
+    def rank(self) -> tuple[int, bool, int]:
+        """Return the order in which people should see it: the most pressing, then the unattended, then the oldest."""
+        return PRIORITY_RANK[self.priority], not self.is_waiting, self.raised_at_us or 0
+
+    @property
+    def key(self) -> str:
+        """Return a name for this very occurrence."""
+        return f"{self.subject} {self.condition} {self.occurrence}"
+
+
+@dataclass(frozen=True, slots=True)
+class DayLine:
+    """A tank's last day in quarter hours, for the small line on its card."""
+
+    times_s: FloatArray
+    values: FloatArray
+
+
+NO_DAY = DayLine(np.empty(0), np.empty(0))
+
+
+@dataclass(frozen=True, slots=True)
+class TankSight:
+    """One tank with all that is known about it now."""
+
+    id: str
+    name: str
+    hall: str
+    hall_name: str
+    volume_L: float
+    water: str
+    salinity_unit: str
+    salinity: Band
+    temperature: Band
+    animals: Animals | None
+    sensors: tuple[SensorSight, ...]
+    shown: SensorSight | None
+    stress: StressSight | None
+    alarms: tuple[AlarmSight, ...]
+    day: DayLine
+    is_unwatched: bool
+
+    @property
+    def priority(self) -> str:
+        """Return the most pressing priority of its present alarms; empty when there is none."""
+        return self.alarms[0].priority if self.alarms else ""
+
+    @property
+    def needs_somebody(self) -> bool:
+        """Return whether it stands first on the board."""
+        return self.priority in ("urgent", "soon") or self.is_unwatched
+
+    @property
+    def balance(self) -> Balance:
+        """Return its osmotic balance."""
+        animals = self.animals
+        water = self.shown.osmolality_mOsm_kg if self.shown is not None and self.shown.is_believable else math.nan
+        return Balance(
+            water=water if math.isfinite(water) else None,
+            blood=None if animals is None else animals.blood_mOsm_kg,
+            tolerated=None if animals is None else animals.tolerated_mOsm_kg,
+            optimal=None if animals is None else animals.optimal_mOsm_kg,
+        )
+
+
+@dataclass(frozen=True, slots=True)
+class Snapshot:
+    """The whole site at one moment."""
+
+    now_us: int
+    site_name: str
+    zone: tzinfo
+    zone_name: str
+    salinity_label: str
+    is_worker_running: bool
+    has_store: bool
+    alive_at_us: int | None
+    tanks: tuple[TankSight, ...] = ()
+    waters: tuple[SensorSight, ...] = ()
+    """Sensors that sit in source waters, not in tanks."""
+    alarms: tuple[AlarmSight, ...] = ()
+    """Present alarms, the most pressing first."""
+    hidden_alarms: tuple[AlarmSight, ...] = ()
+    today: tuple[tuple[int, str], ...] = ()
+    """(raised at, priority) of what was raised since the site's midnight."""
+
+    @property
+    def is_watching(self) -> bool:
+        """Return whether somebody judges what comes in."""
+        return self.has_store and self.is_worker_running
+
+    def tank(self, tank_id: str) -> TankSight | None:
+        """Return the tank of this id."""
+        return next((tank for tank in self.tanks if tank.id == tank_id), None)
+
+    def subject_name(self, subject: str) -> str:
+        """Return what people call the subject of an alarm: the tank's name, or the site's."""
+        kind, _, name = subject.partition("/")
+        tank = self.tank(name) if kind == "tank" else None
+        return tank.name if tank is not None else (name or self.site_name)

@@ -11,6 +11,7 @@ from ingest.simulator.hatchery import Hatchery
 from ingest.simulator.payloads import encoder_for
 from ingest.simulator.scenario import Scenario
 from ingest.simulator.sensors import SimulatedSensor
+from ingest.simulator.weather import US_PER_HOUR
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -84,8 +85,9 @@ class Feed:
             yield from next(streams[owner])
 
     def forget_before(self, time_us: int) -> None:
-        """Drop what is known of the time before *time_us*."""
-        self._hatchery.forget_before(time_us)
+        """Drop what is known of the time before *time_us*, but for what a running fault still looks back to."""
+        longest_h = max((event.lasts_h for event in self.scenario.sensor_events), default=0.0)
+        self._hatchery.forget_before(time_us - round(longest_h * US_PER_HOUR))
 
     def _messages(self, number: int, rows: Sent) -> Iterator[list[tuple[int, str, bytes]]]:
         """Yield the messages of each reading of one sensor."""

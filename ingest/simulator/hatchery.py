@@ -7,6 +7,7 @@ the same moment with the same seed finds the same water, and a live feed goes on
 
 from __future__ import annotations
 
+from bisect import bisect_right
 from dataclasses import dataclass
 from typing import TYPE_CHECKING, Final
 
@@ -14,20 +15,17 @@ import numpy as np
 
 from analysis.errors import InvalidInputError
 from analysis.tank import Exchange, Inflow, TankWater, step, tank_water
-from analysis.water.properties import Seawater
-from analysis.water.sodium_chloride_water import SodiumChlorideWater
 from ingest.simulator.scenario import Scenario, TankEvent, TankRun
 from ingest.simulator.weather import US_PER_HOUR, Weather, smooth_noise
+from ingest.water_kinds import kinds_of
 
 if TYPE_CHECKING:
-    from collections.abc import Iterator
+    from collections.abc import Iterator, Mapping
 
     from analysis.arrays import FloatArray
     from analysis.water.properties import WaterKind
     from ingest.site.models import Site
     from ingest.site.tanks import Tank
-
-KINDS: Final[dict[str, WaterKind]] = {"seawater": Seawater(), "sodium-chloride": SodiumChlorideWater()}
 
 COARSE_S: Final = 600
 FINE_S: Final = 30
@@ -50,19 +48,6 @@ HEADER_PART_COLD: Final = 0.1
 """How far the header tanks' water is from the set point towards the intake's temperature."""
 DAILY_CHANGE_LOCAL_H: Final = 8.5
 DAILY_CHANGE_LASTS_H: Final = 1.0 / 3.0
-
-
-def kind_of(name: str) -> WaterKind:
-    """Return the kind of water of this name.
-
-    Raises
-    ------
-    InvalidInputError
-        It is neither of the two that the simulator has.
-    """
-    if name not in KINDS:
-        raise InvalidInputError("water of a simulated tank", found=name, allowed=", ".join(KINDS))
-    return KINDS[name]
 
 
 @dataclass(frozen=True, slots=True)
@@ -102,9 +87,10 @@ class Hatchery:
         self.site = site
         self.scenario = scenario
         self.anchor_us = anchor_us
+        self.kinds = _known_kinds(site)
         longitude = site.identity.position.longitude if site.identity.position else 0.0
         self.weather = Weather(seed, anchor_us, longitude, scenario.rains)
-        self._plant = _Plant(site, scenario, seed=seed, weather=self.weather)
+        self._plant = _Plant(self, seed=seed)
         self._second = _grid_floor(_seconds(start_us, anchor_us))
         self._water = self._plant.first_water(self._second)
         self._moments: list[int] = []
@@ -117,9 +103,13 @@ class Hatchery:
         seconds = _seconds(times_us, self.anchor_us)
         if np.size(seconds):
             self._advance(float(np.max(seconds)))
+            first = max(0, bisect_right(self._moments, float(np.min(seconds))) - 1)
+        else:
+            first = len(self._moments) - 1
+        moments = self._moments[first:]
         return TrueWater(
-            np.interp(seconds, self._moments, np.array([row[tank] for row in self._salinities])),
-            np.interp(seconds, self._moments, np.array([row[tank] for row in self._temperatures])),
+            np.interp(seconds, moments, [row[tank] for row in self._salinities[first:]]),
+            np.interp(seconds, moments, [row[tank] for row in self._temperatures[first:]]),
         )
 
     def source_water_at(self, source: str, times_us: FloatArray) -> TrueWater:
@@ -141,7 +131,7 @@ class Hatchery:
     def forget_before(self, time_us: int) -> None:
         """Drop what is known of the water before *time_us*: a feed that runs for weeks need not grow."""
         second = float(_seconds(time_us, self.anchor_us))
-        keep = max(0, int(np.searchsorted(self._moments, second)) - 1)
+        keep = max(0, bisect_right(self._moments, second) - 1)
         del self._moments[:keep], self._salinities[:keep], self._temperatures[:keep]
 
     def _advance(self, second: float) -> None:
@@ -162,12 +152,13 @@ class Hatchery:
 class _Plant:
     """Pipes, heaters and weather: what flows into and out of each tank in each span of time."""
 
-    def __init__(self, site: Site, scenario: Scenario, *, seed: int, weather: Weather) -> None:
+    def __init__(self, hatchery: Hatchery, *, seed: int) -> None:
+        site, scenario, weather = hatchery.site, hatchery.scenario, hatchery.weather
         runs = [scenario.run_of(tank.id) for tank in site.tanks]
         set_points = [_set_salinity(tank) for tank in site.tanks]
         set_temperatures = [tank.set_point.temperature_degC if tank.set_point else None for tank in site.tanks]
         self.g_kg_per_salinity = np.array(
-            [float(kind_of(tank.water).absolute_salinity_from_salinity(1.0)) for tank in site.tanks]
+            [float(hatchery.kinds[tank.water].absolute_salinity_from_salinity(1.0)) for tank in site.tanks]
         )
         self.is_outdoors = np.array([run.is_outdoors for run in runs])
         self._seed = seed
@@ -267,6 +258,17 @@ class _Plant:
             if event.kind == kind:
                 sizes[:, tank] += event.size * event.part_of(edges_h)
         return sizes
+
+
+def _known_kinds(site: Site) -> Mapping[str, WaterKind]:
+    kinds = kinds_of(site)
+    for number, tank in enumerate(site.tanks):
+        if tank.water not in kinds:
+            where = f"tanks[{number}].water"
+            raise InvalidInputError(
+                "water of a simulated tank", found=tank.water, allowed=", ".join(kinds), where=where
+            )
+    return kinds
 
 
 def _seconds(times_us: FloatArray | int, anchor_us: int) -> FloatArray:

@@ -13,7 +13,7 @@ import numpy as np
 from analysis.water.compensation import Compensation, CompensationMethod, specific_conductance_from_conductivity
 from analysis.water.units import CONDUCTIVITY_UNITS, PRESSURE_UNITS, TEMPERATURE_UNITS, LinearUnit
 from ingest.simulator.chance import normal, uniform
-from ingest.simulator.hatchery import TrueWater, kind_of
+from ingest.simulator.hatchery import TrueWater
 from ingest.simulator.payloads import Readings
 from ingest.simulator.weather import US_PER_HOUR
 
@@ -89,7 +89,7 @@ class SimulatedSensor:
         self._seed = (seed, 7, number)
         site = hatchery.site
         self._tank = None if sensor.tank is None else site.tank_index[sensor.tank]
-        self._kind = kind_of(site.water_of(sensor))
+        self._kind = hatchery.kinds[site.water_of(sensor)]
         self._depth_dbar = 0.0 if sensor.tank is None else hatchery.scenario.run_of(sensor.tank).depth_dbar
         self._events = list(hatchery.scenario.events_of_sensor(sensor.id))
         self._layer = self._find_layer()
@@ -101,6 +101,9 @@ class SimulatedSensor:
 
     def sent(self, times_us: IntArray) -> Sent:
         """Return what the sensor sends at *times_us*; where it is silent there is no row."""
+        if not times_us.size:
+            nothing = np.empty(0)
+            return Sent(times_us, Readings(times_us, nothing, nothing, nothing), np.empty(0, dtype=bool))
         felt = self._felt(times_us)
         time_us = times_us.copy()
         is_sent, is_readable = np.ones(times_us.size, dtype=bool), np.ones(times_us.size, dtype=bool)

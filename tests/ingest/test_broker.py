@@ -4,15 +4,15 @@ import os
 import signal
 import subprocess
 import sys
-import threading
 from pathlib import Path
 
 import paho.mqtt.client as paho
 import pytest
-from paho.mqtt.enums import CallbackAPIVersion, MQTTProtocolVersion
+from paho.mqtt.enums import CallbackAPIVersion
 
 from ingest.broker import MOSQUITTO_LINES, Broker, BrokerError, available_kind, free_port, has_mosquitto
 from tests.harness.broker import NEEDS_EMBEDDED, NEEDS_MOSQUITTO
+from tests.harness.listener import Listener
 from tests.harness.process import is_gone, wait_until
 
 KINDS = [
@@ -27,30 +27,8 @@ time.sleep(600)
 """
 
 
-class Listener:
-    """A durable session that keeps what it gets."""
-
-    def __init__(self, broker: Broker, protocol: MQTTProtocolVersion = MQTTProtocolVersion.MQTTv311) -> None:
-        durable = {} if protocol == MQTTProtocolVersion.MQTTv5 else {"clean_session": False}
-        self.client = paho.Client(
-            CallbackAPIVersion.VERSION2, client_id="listener", protocol=protocol, **durable
-        )
-        self.payloads: list[bytes] = []
-        self.subscribed = threading.Event()
-        self.client.on_message = lambda _client, _data, message: self.payloads.append(message.payload)
-        self.client.on_connect = lambda client, *_: client.subscribe("water/#", qos=1)
-        self.client.on_subscribe = lambda *_: self.subscribed.set()
-        self.client.connect(broker.host, broker.port)
-        self.client.loop_start()
-        assert self.subscribed.wait(30)
-
-    def leave(self) -> None:
-        self.client.disconnect()
-        self.client.loop_stop()
-
-
-def publish(broker: Broker, count: int) -> None:
-    client = paho.Client(CallbackAPIVersion.VERSION2, client_id="speaker")
+def publish(broker: Broker, count: int, *, protocol: int = paho.MQTTv311) -> None:
+    client = paho.Client(CallbackAPIVersion.VERSION2, client_id="speaker", protocol=protocol)
     client.max_inflight_messages_set(200)
     client.connect(broker.host, broker.port)
     client.loop_start()
@@ -64,7 +42,7 @@ def publish(broker: Broker, count: int) -> None:
 @pytest.mark.parametrize("kind", KINDS)
 def test_a_message_goes_through(kind: str, tmp_path: Path) -> None:
     with Broker(kind, folder=tmp_path) as broker:
-        listener = Listener(broker)
+        listener = Listener(broker, "water/#")
         publish(broker, 50)
         wait_until(lambda: len(listener.payloads) == 50, what="50 messages")
         listener.leave()
@@ -74,9 +52,9 @@ def test_a_message_goes_through(kind: str, tmp_path: Path) -> None:
 @pytest.mark.parametrize("kind", KINDS)
 def test_mqtt_5_is_spoken(kind: str, tmp_path: Path) -> None:
     with Broker(kind, folder=tmp_path, protocol="5") as broker:
-        listener = Listener(broker, MQTTProtocolVersion.MQTTv5)
-        listener.client.publish("water/level", "7", qos=1)
-        wait_until(lambda: listener.payloads == [b"7"], what="the message")
+        listener = Listener(broker, "water/#", protocol="5")
+        publish(broker, 3, protocol=paho.MQTTv5)
+        wait_until(lambda: listener.payloads == [b"0", b"1", b"2"], what="the messages")
         listener.leave()
 
 
@@ -131,15 +109,13 @@ def test_only_loopback_is_bound(kind: str, tmp_path: Path) -> None:
 
 @pytest.mark.mosquitto
 @pytest.mark.parametrize(("how", "may_be_lost"), [("stop in order", 0), ("power cut", 1000)])
-def test_the_queue_of_an_absent_worker_outlives_the_broker(
-    mosquitto: Broker, how: str, may_be_lost: int
-) -> None:
-    Listener(mosquitto).leave()
+def test_the_queue_of_an_absent_worker_outlives_the_broker(mosquitto: Broker, how: str, may_be_lost: int) -> None:
+    Listener(mosquitto, "water/#").leave()
     publish(mosquitto, 3000)  # three times what a broker left to its defaults would keep
     if how == "power cut":
         mosquitto.kill()
     mosquitto.restart()
-    listener = Listener(mosquitto)
+    listener = Listener(mosquitto, "water/#")
     wait_until(lambda: len(listener.payloads) >= 3000 - may_be_lost, what="the queue")
     listener.leave()
     assert [int(payload) for payload in listener.payloads] == list(range(len(listener.payloads)))

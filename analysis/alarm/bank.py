@@ -135,8 +135,9 @@ def observe(bank: AlarmBank, block: ObservedBlock) -> tuple[AlarmBank, tuple[Out
 def _touched(bank: AlarmBank, block: ObservedBlock, kind_index: IntArray) -> BoolArray:
     """Return, shape (kinds, readings), where an observation could change the alarm it meets in the bank."""
     pair = (kind_index[:, None], block.tank[None, :])
-    against = np.where(bank.is_active[pair], Verdict.FALSE, Verdict.TRUE)
-    touched: BoolArray = block.verdict == against
+    # The counterpart of `machine.is_identity`: FALSE can change an active alarm, TRUE and NEAR one that is not.
+    is_beyond = (block.verdict == Verdict.TRUE) | (block.verdict == Verdict.NEAR)
+    touched: BoolArray = np.where(bank.is_active[pair], block.verdict == Verdict.FALSE, is_beyond)
     touched |= bank.has_pending[pair]
     touched |= bank.due_at_us[pair] <= block.now_us
     if block.is_worse is not None:

@@ -27,6 +27,8 @@ class Verdict(IntEnum):
     """Beyond the limit."""
     UNKNOWN = 3
     """No usable reading: the state is held; missing is never normal."""
+    NEAR = 4
+    """As `BETWEEN`, but so near the limit that noise alone may hold it inside."""
 
 
 @dataclass(frozen=True, slots=True)

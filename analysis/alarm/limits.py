@@ -24,6 +24,10 @@ SALINITY_SPAN = 42.0
 DEADBAND_SHARE_OF_HALF_WIDTH = 0.25
 """Common practice: a deadband that fills the band would never let the alarm return."""
 
+NEAR_SHARE_OF_DEADBAND = 0.25
+"""How much of the deadband next to the limit is called near. Common practice: more than the noise of a sound
+probe, far less than the deadband."""
+
 
 def is_usable(value: ArrayLike, *, quality: ArrayLike) -> BoolArray:
     """Return whether a value may be judged: it is a number, and neither fail (4) nor missing (9).
@@ -62,8 +66,8 @@ def high_verdict(value: ArrayLike, *, limit: ArrayLike, deadband: ArrayLike, usa
     Returns
     -------
     ndarray of int8
-        `Verdict` values: `TRUE` above the limit, `FALSE` below the limit less the deadband, `BETWEEN`
-        otherwise, `UNKNOWN` where the value is not usable.
+        `Verdict` values: `TRUE` above the limit, `FALSE` below the limit less the deadband, between them `NEAR`
+        next to the limit and else `BETWEEN`; `UNKNOWN` where the value is not usable.
 
     References
     ----------
@@ -72,11 +76,13 @@ def high_verdict(value: ArrayLike, *, limit: ArrayLike, deadband: ArrayLike, usa
     value = np.asarray(value, dtype=np.float64)
     limit = np.asarray(limit, dtype=np.float64)
     # TRUE is 2 and BETWEEN is 1: two comparisons add up to the verdict. With no limit both are false.
-    verdict = (value > limit).astype(np.int8)
-    verdict += value >= limit - deadband
+    verdict = (value > limit).astype(np.int8) + (value >= limit - deadband)
+    if (verdict == Verdict.BETWEEN).any():
+        is_near = (verdict == Verdict.BETWEEN) & (value >= limit - NEAR_SHARE_OF_DEADBAND * np.asarray(deadband))
+        verdict = np.where(is_near, np.int8(Verdict.NEAR), verdict)
     unknown = ~np.asarray(usable) & ~np.isnan(limit)
     if unknown.any():
-        return np.where(unknown, np.int8(Verdict.UNKNOWN), verdict)
+        verdict = np.where(unknown, np.int8(Verdict.UNKNOWN), verdict)
     return verdict
 
 

@@ -96,7 +96,7 @@ def is_identity(state: AlarmState, verdict: Verdict) -> bool:
         return True
     if state.has_pending:
         return False
-    return verdict is not (Verdict.FALSE if state.is_active else Verdict.TRUE)
+    return verdict is not Verdict.FALSE if state.is_active else verdict in {Verdict.FALSE, Verdict.BETWEEN}
 
 
 def _entry(

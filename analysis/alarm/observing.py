@@ -21,21 +21,31 @@ def observed(
     """
     if event.verdict is Verdict.UNKNOWN or event.measured_at_us < state.judged_at_us:
         return state, ()
-    against = Verdict.FALSE if state.is_active else Verdict.TRUE
-    if event.verdict is against:
+    before = state
+    if not state.is_active and rules.min_hit_percent < ALL:
+        state = _tolerantly_counted(state, rules, event)
+    elif event.verdict is (Verdict.FALSE if state.is_active else Verdict.TRUE):
         state = _counted(state, rules, event)
-        if _is_run_complete(state, rules, event):
-            return (_returned if state.is_active else _raised)(state, rules, event, now_us)
-        return state, ()
-    state = _doubted(state, rules, event)
+    elif state.has_pending:
+        state = _without_run(state, event)
+    if _is_run_complete(state, rules, event):
+        return (_returned if state.is_active else _raised)(state, rules, event, now_us)
     if event.is_worse and event.verdict is Verdict.TRUE:
         return _worsened(state, event, now_us)
-    return state, ()
+    return (before if state == before else state), ()
+
+
+ALL = 100
+"""Per cent."""
+
+
+def _reading_us(event: Observation) -> int:
+    return event.measured_at_us if event.reading_at_us is None else event.reading_at_us
 
 
 def _counted(state: AlarmState, rules: AlarmRules, event: Observation) -> AlarmState:
     """Begin or continue the run of readings that speak against the present flag."""
-    reading_us = event.measured_at_us if event.reading_at_us is None else event.reading_at_us
+    reading_us = _reading_us(event)
     is_gap = reading_us - state.pending_last_us > microseconds(rules.max_gap_s)
     if not state.has_pending or is_gap:
         return replace(
@@ -57,25 +67,33 @@ def _counted(state: AlarmState, rules: AlarmRules, event: Observation) -> AlarmS
     )
 
 
-def _doubted(state: AlarmState, rules: AlarmRules, event: Observation) -> AlarmState:
-    """Count a reading that does not speak against the present flag: it ends the run, or is tolerated in it."""
-    if not state.has_pending:
-        return state
-    readings = state.pending_readings + 1
-    is_tolerated = (
-        not state.is_active
-        and event.verdict is Verdict.BETWEEN
-        and state.pending_hits * 100 >= rules.min_hit_percent * readings
+def _tolerantly_counted(state: AlarmState, rules: AlarmRules, event: Observation) -> AlarmState:
+    """Begin, continue or end a run in which some readings may lie inside the limit, but none back by the deadband."""
+    reading_us = _reading_us(event)
+    if state.has_pending and reading_us == state.pending_last_us:
+        return replace(state, judged_at_us=event.measured_at_us)
+    is_gap = reading_us - state.pending_last_us > microseconds(rules.max_gap_s)
+    is_new = not state.has_pending or is_gap
+    window_from_us = reading_us - microseconds(rules.on_delay_s + rules.jitter_s)
+    old = () if is_new else state.pending_marks
+    # Where the interval is longer than the delay, the last readings count even though they are older than it.
+    enough = old[max(len(old) + 1 - rules.min_readings, 0) :]
+    recent = tuple(mark for mark in old if mark[0] >= window_from_us)
+    marks = (*max(recent, enough, key=len), (reading_us, int(event.verdict)))
+    if event.verdict is Verdict.FALSE or all(verdict == Verdict.BETWEEN for _, verdict in marks):
+        return _without_run(state, event) if state.has_pending else state
+    return replace(
+        state,
+        pending_since_us=event.measured_at_us if is_new else state.pending_since_us,
+        pending_readings=len(marks),
+        pending_hits=sum(verdict == Verdict.TRUE for _, verdict in marks),
+        pending_last_us=reading_us,
+        pending_marks=marks,
+        judged_at_us=event.measured_at_us,
     )
-    if is_tolerated:
-        reading_us = event.measured_at_us if event.reading_at_us is None else event.reading_at_us
-        if reading_us - state.pending_last_us <= microseconds(rules.max_gap_s):
-            return replace(
-                state,
-                pending_readings=readings,
-                pending_last_us=reading_us,
-                judged_at_us=event.measured_at_us,
-            )
+
+
+def _without_run(state: AlarmState, event: Observation) -> AlarmState:
     return replace(state, **_NO_RUN, judged_at_us=event.measured_at_us)
 
 
@@ -84,13 +102,17 @@ _NO_RUN: dict[str, Any] = {
     "pending_readings": 0,
     "pending_hits": 0,
     "pending_last_us": 0,
+    "pending_marks": (),
 }
 
 
 def _is_run_complete(state: AlarmState, rules: AlarmRules, event: Observation) -> bool:
+    if event.verdict is not (Verdict.FALSE if state.is_active else Verdict.TRUE):
+        return False
     delay_s = rules.off_delay_s if state.is_active else rules.on_delay_s
-    elapsed_us = event.measured_at_us - state.pending_since_us
-    return state.pending_hits >= rules.min_readings and elapsed_us >= microseconds(delay_s)
+    elapsed_us = event.measured_at_us - state.pending_since_us + microseconds(rules.jitter_s)
+    is_long = elapsed_us >= microseconds(delay_s) and state.pending_hits >= rules.min_readings
+    return is_long and (state.is_active or state.pending_hits * ALL >= rules.min_hit_percent * state.pending_readings)
 
 
 def _entry(

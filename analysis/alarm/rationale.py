@@ -18,6 +18,7 @@ from analysis.alarm.rules import AlarmRules, Priority
 
 MOST_PAUSE_S = 900.0
 """An acknowledgement means "I am going" and pauses calls for at most a quarter of an hour."""
+JITTER_INTERVALS = 0.25
 GAP_INTERVALS = 3.0
 """Readings further apart than this many of the sensor's own intervals do not belong to one run."""
 
@@ -321,6 +322,7 @@ def first_rules(kind: Kind, *, interval_s: float, priority: Priority | None = No
         off_delay_s=record.off_delay_s,
         min_readings=record.min_readings,
         max_gap_s=GAP_INTERVALS * interval_s,
+        jitter_s=JITTER_INTERVALS * interval_s,
         min_hit_percent=record.min_hit_percent,
         is_latching=record.is_latching,
         is_ack_required=record.is_ack_required,

@@ -40,9 +40,14 @@ class AlarmRules:
     max_gap_s: float = 30.0
     """Two readings further apart than this do not belong to one run: time without data is not "still
     exceeded"."""
+    jitter_s: float = 0.0
+    """How unevenly readings come: a delay that is a whole number of intervals is over this much early, so that a
+    reading a moment early does not cost another interval."""
     min_hit_percent: int = 100
-    """Share of the readings in a running on-delay that must lie beyond the limit; the others must at least lie
-    within the deadband. 100: the limit must be exceeded for the whole delay (OPC 10000-9 B.1.5)."""
+    """100: the limit must be exceeded in every reading for the whole on-delay (OPC 10000-9 B.1.5). Less: for the
+    whole on-delay no reading was back by the deadband, the run began near or beyond the limit, and this share of
+    the readings of the on-delay lies beyond. Noise at the limit then neither starts the delay anew with every
+    reading that falls inside, nor raises without a delay."""
     is_latching: bool = False
     is_ack_required: bool = True
     re_alarm_s: float = 900.0
@@ -56,7 +61,7 @@ class AlarmRules:
     """Top priority: quiet hours never cover it and waking goes on after a return to normal."""
 
     def __post_init__(self) -> None:
-        for name in ("on_delay_s", "off_delay_s", "max_gap_s", "re_alarm_s", "max_shelve_s"):
+        for name in ("on_delay_s", "off_delay_s", "max_gap_s", "jitter_s", "re_alarm_s", "max_shelve_s"):
             value = getattr(self, name)
             if not value >= 0:
                 raise InvalidInputError(name, found=value, allowed="0 or more seconds")

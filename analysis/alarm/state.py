@@ -100,11 +100,14 @@ class AlarmState:
     pending_since_us: int = 0
     """First measured time of a run of readings that speak against the present flag `is_active`."""
     pending_readings: int = 0
-    """Readings in that run, those that lie inside the deadband included."""
+    """Readings in that run, tolerated ones included."""
     pending_hits: int = 0
     """Readings in that run that speak against `is_active` outright."""
     pending_last_us: int = 0
     """Own measured time of the last reading counted in the run."""
+    pending_marks: tuple[tuple[int, int], ...] = ()
+    """Own measured time and verdict of the run's readings within the on-delay, where the rules tolerate some
+    inside the limit; `pending_readings` and `pending_hits` are then counted from these."""
     judged_at_us: int = 0
     """Measured time of the last observation that changed anything; older observations are late."""
 
@@ -161,7 +164,7 @@ def state_to_dict(state: AlarmState) -> dict[str, Any]:
         if isinstance(value, Shelving):
             value = value.value
         elif isinstance(value, tuple):
-            value = list(value)
+            value = [list(item) if isinstance(item, tuple) else item for item in value]
         body[name] = value
     return body
 
@@ -182,4 +185,6 @@ def state_from_dict(body: dict[str, Any]) -> AlarmState:
         values["shelving"] = Shelving(values["shelving"])
     if "suppressed_by" in values:
         values["suppressed_by"] = tuple(values["suppressed_by"])
+    if "pending_marks" in values:
+        values["pending_marks"] = tuple((time_us, verdict) for time_us, verdict in values["pending_marks"])
     return AlarmState(**values)

@@ -143,7 +143,8 @@ def _alarms(
     """Run the machine, leaping from one reading that can change something to the next."""
     judge = high_verdict if proposed.is_high else low_verdict
     verdict = judge(value, limit=proposed.limit, deadband=proposed.deadband, usable=usable)
-    leaps = {False: np.flatnonzero(verdict == Verdict.TRUE), True: np.flatnonzero(verdict == Verdict.FALSE)}
+    is_beyond = (verdict == Verdict.TRUE) | (verdict == Verdict.NEAR)
+    leaps = {False: np.flatnonzero(is_beyond), True: np.flatnonzero(verdict == Verdict.FALSE)}
     state, row, raised_row, run_row = AlarmState(), 0, -1, 0
     found: list[PastAlarm] = []
     while row < verdict.size:

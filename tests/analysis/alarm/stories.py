@@ -46,8 +46,8 @@ def after(
 def readings(
     state: AlarmState, rules: AlarmRules, story: str, *, start_s: int = 0, interval_s: int = 10
 ) -> tuple[AlarmState, list[Transition]]:
-    """Let readings happen: T beyond the limit, B within the deadband, F back, U unknown, a dot for none."""
-    words = {"T": Verdict.TRUE, "B": Verdict.BETWEEN, "F": Verdict.FALSE, "U": Verdict.UNKNOWN}
+    """Let readings happen: T beyond the limit, N near it, B in the deadband, F back, U unknown, a dot for none."""
+    words = {verdict.name[0]: verdict for verdict in Verdict}
     events: list[tuple[Event, int]] = []
     for position, letter in enumerate(story):
         if letter != ".":

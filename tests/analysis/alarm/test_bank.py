@@ -24,7 +24,7 @@ from tests.analysis.alarm.stories import MINUTE, SECOND
 
 LOW, HIGH = ConditionKind.SALINITY_LOW, ConditionKind.SALINITY_HIGH
 TANKS = 4
-QUICK = AlarmRules(on_delay_s=20, off_delay_s=20, max_gap_s=35, re_alarm_s=60)
+QUICK = AlarmRules(on_delay_s=20, off_delay_s=20, max_gap_s=35, re_alarm_s=60, min_hit_percent=50)
 CONDITIONS = (
     LimitCondition(LOW, np.array([29.0, 29, np.nan, 10]), np.full(TANKS, 0.4), is_high=False),
     LimitCondition(HIGH, np.array([33.0, 33, 33, np.nan]), np.full(TANKS, 0.4), is_high=True),
@@ -103,7 +103,7 @@ def observed_one_by_one(block: ObservedBlock) -> tuple[dict, list]:
     return {key: state for key, state in states.items() if state != AlarmState()}, history
 
 
-@given(st.lists(st.tuples(st.integers(0, 3), st.integers(0, 3), st.integers(0, 3), st.integers(0, 15)), max_size=60))
+@given(st.lists(st.tuples(st.integers(0, 3), st.integers(0, 4), st.integers(0, 4), st.integers(0, 15)), max_size=60))
 def test_quiet_path_equals_a_step_for_every_observation(rows) -> None:
     time_us = 1000 * SECOND + np.cumsum([row[3] for row in rows], dtype=np.int64) * SECOND
     block = ObservedBlock(

@@ -30,12 +30,12 @@ def test_published_clear_point() -> None:
     deadband = float(deadband_of_band(100.0, span=SALINITY_SPAN))
     values = np.array([35.001, 35.0, clear + 1e-6, clear - 1e-6])
     verdicts = high_verdict(values, limit=35.0, deadband=deadband, usable=True)
-    assert verdicts.tolist() == [Verdict.TRUE, Verdict.BETWEEN, Verdict.BETWEEN, Verdict.FALSE]
+    assert verdicts.tolist() == [Verdict.TRUE, Verdict.NEAR, Verdict.BETWEEN, Verdict.FALSE]
 
 
 def test_low_limit_mirrors_the_high_one() -> None:
     verdicts = low_verdict([28.9, 29.0, 29.39, 29.5], limit=29.0, deadband=0.4, usable=True)
-    assert verdicts.tolist() == [Verdict.TRUE, Verdict.BETWEEN, Verdict.BETWEEN, Verdict.FALSE]
+    assert verdicts.tolist() == [Verdict.TRUE, Verdict.NEAR, Verdict.BETWEEN, Verdict.FALSE]
 
 
 def test_no_limit_is_never_exceeded_and_never_unknown() -> None:

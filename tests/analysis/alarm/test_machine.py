@@ -78,6 +78,13 @@ def test_two_readings_raise_where_the_interval_is_longer_than_the_delay() -> Non
     assert [entry.measured_at_us for entry in history] == [600 * SECOND]
 
 
+def test_a_reading_a_moment_early_does_not_cost_another_interval() -> None:
+    rules = AlarmRules(on_delay_s=60, max_gap_s=30, jitter_s=2.5)
+    story = [(seen(Verdict.TRUE, at), round(at * SECOND)) for at in (0.2, 10, 20.1, 30, 40, 50, 59.9)]
+    assert after(AlarmState(), rules, story)[0].is_active
+    assert not after(AlarmState(), DELAYED, story)[0].is_active
+
+
 def test_gap_in_the_delay_is_not_still_exceeded() -> None:
     """A reading before and one after a silence prove nothing about the time between."""
     state, history = readings(AlarmState(), DELAYED, "TT" + "......" + "T")
@@ -121,15 +128,48 @@ def test_late_observations_neither_raise_nor_return() -> None:
     assert late == state
 
 
-def test_noise_on_the_limit_is_tolerated_where_the_rules_say_so() -> None:
-    """Half of the readings beyond the limit and the rest within the deadband: the water is at the limit."""
-    tolerant = AlarmRules(on_delay_s=60, max_gap_s=30, min_hit_percent=50)
-    _, strict_history = readings(AlarmState(), DELAYED, "TBTBTBT")
-    _, history = readings(AlarmState(), tolerant, "TBTBTBT")
-    assert not strict_history
-    assert [entry.measured_at_us for entry in history] == [60 * SECOND]
-    for story in ("TBBTBBTBBTBB", "TTTFTTTFTTTF", "TBBBBBBT"):
-        assert not readings(AlarmState(), tolerant, story)[1], story
+TOLERANT = AlarmRules(on_delay_s=60, max_gap_s=30, min_hit_percent=50)
+
+
+@pytest.mark.parametrize(
+    ("story", "raised_at_s"),
+    [
+        ("TTTTTTTT", 60),  # a step is raised when the on-delay is over
+        ("TBTBTBT", 60),  # half of the readings beyond, the others in the deadband
+        ("NNNNNTNTTT", 90),  # creeping over the limit: near it for the whole on-delay, half of it beyond
+        ("TBBBBTTTT", 80),
+    ],
+)
+def test_noise_on_the_limit_is_tolerated_where_the_rules_say_so(story: str, raised_at_s: int) -> None:
+    _, history = readings(AlarmState(), TOLERANT, story)
+    assert [entry.measured_at_us for entry in history] == [raised_at_s * SECOND]
+
+
+@pytest.mark.parametrize(
+    "story", ["TTTFTTTFTTTF", "TBBBBBBBBT", "NNNNNNNNNNNN", "BBBBBBTTT", "NBBBBBBBBB", "TT......TT"]
+)
+def test_tolerance_raises_nothing_without_the_whole_delay_and_half_of_the_readings(story: str) -> None:
+    assert not readings(AlarmState(), TOLERANT, story)[1]
+
+
+@pytest.mark.parametrize("percent", [50, 100])
+@pytest.mark.parametrize("interval_s", [1, 7, 10, 60, 90, 600])
+@pytest.mark.parametrize("on_delay_s", [0, 20, 60])
+def test_whatever_stays_beyond_is_raised_within_the_delay_and_two_readings(
+    percent: int, interval_s: int, on_delay_s: int
+) -> None:
+    rules = AlarmRules(on_delay_s=on_delay_s, max_gap_s=3 * interval_s, min_hit_percent=percent)
+    _, (raised,) = readings(AlarmState(), rules, "T" * (100 if interval_s == 1 else 12), interval_s=interval_s)
+    wanted = max(-(-on_delay_s // interval_s), 1) * interval_s
+    assert raised.measured_at_us == wanted * SECOND
+
+
+def test_without_tolerance_every_reading_inside_starts_the_delay_anew() -> None:
+    assert not readings(AlarmState(), DELAYED, "TBTBTBTNTTTTTT")[1]
+
+
+def test_a_run_that_only_lingers_in_the_deadband_is_forgotten() -> None:
+    assert not readings(AlarmState(), TOLERANT, "TBBBBBBB")[0].has_pending
 
 
 def test_standing_alarm_is_the_same_object_at_every_further_reading() -> None:

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from hypothesis import given
@@ -74,19 +76,21 @@ def test_excursions_end_at_gaps_and_ignore_what_is_unusable() -> None:
 
 
 @given(
-    st.lists(st.sampled_from([31.0, 28.0, 28.0, 29.2, float("nan")]), min_size=1, max_size=80),
+    st.lists(st.sampled_from([31.0, 28.0, 28.0, 29.2, 29.05, float("nan")]), min_size=1, max_size=80),
     st.lists(st.sampled_from([10, 10, 10, 40]), min_size=80, max_size=80),
+    st.sampled_from([50, 100]),
 )
-def test_leaping_gives_what_a_step_for_every_reading_gives(values: list[float], waits: list[int]) -> None:
+def test_leaping_gives_what_a_step_for_every_reading_gives(values: list[float], waits: list[int], percent: int) -> None:
     value = np.array(values)
     times = 1000 * SECOND + np.cumsum(waits[: value.size]) * SECOND
     quality = np.ones(value.size, dtype=np.uint8)
-    proposed = ProposedLimit(29.0, 0.4, is_high=False, rules=RULES)
+    rules = replace(RULES, min_hit_percent=percent)
+    proposed = ProposedLimit(29.0, 0.4, is_high=False, rules=rules)
     found = replayed(value, measured_at_us=times, quality=quality, proposed=proposed, reference_limit=29.0)
     verdicts = low_verdict(value, limit=29.0, deadband=0.4, usable=is_usable(value, quality=quality))
     state, raised, returned = AlarmState(), [], []
     for verdict, at_us in zip(verdicts.tolist(), times.tolist(), strict=True):
-        state, entries = step(state, RULES, Observation(Verdict(verdict), at_us), at_us)
+        state, entries = step(state, rules, Observation(Verdict(verdict), at_us), at_us)
         for entry in entries:
             (raised if entry.is_announced else returned).append(at_us)
     assert [alarm.raised_at_us for alarm in found.alarms] == raised

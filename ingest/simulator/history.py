@@ -5,7 +5,7 @@ from __future__ import annotations
 import threading
 from typing import TYPE_CHECKING
 
-from analysis.alarm.state import WAITING_STATES
+from analysis.alarm.state import WAITING_STATES, StateName
 from ingest.clock import ReplayClock
 from ingest.mqtt import Received
 from ingest.simulator.feed import simulate
@@ -19,9 +19,9 @@ if TYPE_CHECKING:
     from ingest.simulator.scenario import Scenario
 
 DAY_US = 86_400_000_000
-SLICE_US = 15 * 60 * 1_000_000
+SLICE_US = 30 * 60 * 1_000_000
 """So much of the history is handed to the worker at once; people answer alarms between two slices."""
-STEP_S = 120.0
+STEP_S = 300.0
 """Time between the readings of a sensor in the history."""
 
 
@@ -101,20 +101,24 @@ class _Duty:
         self._name, self._role = actor.name, actor.role
 
     def answer(self, now_us: int) -> None:
-        """Acknowledge whatever waits."""
+        """Acknowledge whatever waits, and release what is latched and over."""
         plant, bank = self._worker.plant, self._worker.state.bank
         for (kind, tank), state in bank.states.items():
-            if state.name not in WAITING_STATES:
+            if state.name in WAITING_STATES:
+                act, why = "alarm.acknowledge", "seen on the round"
+            elif state.name is StateName.LATCHED_ACKNOWLEDGED:
+                act, why = "alarm.reset", "looked after; all is well again"
+            else:
                 continue
             self._inbox.submit(
                 Command(
-                    kind="alarm.acknowledge",
+                    kind=act,
                     subject=f"tank/{plant.tanks.tanks[tank]}",
                     actor=self._name,
                     role=self._role,
                     submitted_at=now_us,
                     expires_at=now_us + DEFAULT_LIFE_US,
-                    body={"condition": bank.kinds[kind].value, "why": "seen on the round"},
+                    body={"condition": bank.kinds[kind].value, "why": why},
                     expected=str(state.occurrence),
                 )
             )

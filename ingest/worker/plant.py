@@ -55,6 +55,7 @@ def plant(
     stocked: Mapping[str, Stocked],
     waiting_halves: Mapping[str, Any],
     has_horizon: bool = True,
+    least_interval_s: float = 0.0,
 ) -> Plant:
     """Build a plant.
 
@@ -71,7 +72,15 @@ def plant(
         Halves of readings that wait for their partner, as last committed.
     has_horizon : bool
         Whether measured times far in the past are refused; a replayed record may be of any age.
+    least_interval_s : float
+        No sensor is expected to send more often than this: for a record that has been thinned.
     """
+    if least_interval_s:
+        sensors_as = [
+            sensor.model_copy(update={"interval_s": max(sensor.interval_s, least_interval_s)})
+            for sensor in site.sensors
+        ]
+        site = site.model_copy(update={"sensors": tuple(sensors_as)})
     kinds = kinds_of(site)
     sensors = roster(site, kinds)
     animals = animal_roster(site, kinds, stocked)

@@ -85,6 +85,8 @@ class Worker:
         Read now and at each reload.
     clock : Clock
         Where the time comes from.
+    least_interval_s : float
+        No sensor is expected to send more often than this: for a record that has been thinned.
 
     Raises
     ------
@@ -94,7 +96,8 @@ class Worker:
         If another worker holds the store.
     """
 
-    def __init__(self, site_file: Path, *, clock: Clock) -> None:
+    def __init__(self, site_file: Path, *, clock: Clock, least_interval_s: float = 0.0) -> None:
+        self._least_interval_s = least_interval_s
         self._site_file = site_file
         self._clock = clock
         self._is_replay = isinstance(clock, ReplayClock)
@@ -345,6 +348,7 @@ class Worker:
             site,
             text=text,
             has_horizon=not self._is_replay,
+            least_interval_s=self._least_interval_s,
             numbers=numbers,
             stocked=restoring.stocked_tanks(connection),
             waiting_halves=msgspec.json.decode(self._committed_halves),

@@ -69,6 +69,11 @@ class IonicWater:
         """The analysis' id."""
         return self.table.name
 
+    @property
+    def highest_salinity(self) -> float:
+        """Grams per kilogram of solution at the end of the table."""
+        return float(self._salinity(np.asarray(self._highest_factor)))
+
     @classmethod
     def from_analysis(cls, analysis: IonAnalysis) -> IonicWater:
         """Return the water of an analysis, calibrated by its own osmolality where the laboratory measured it.

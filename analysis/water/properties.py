@@ -83,6 +83,10 @@ class WaterKind(Protocol):
     def salinity_unit(self) -> str:
         """The unit of `salinity` in this kind of water: ``1`` (practical salinity) or ``g/kg``."""
 
+    @property
+    def highest_salinity(self) -> float:
+        """The saltiest water that the model knows, in the unit of `salinity`."""
+
     def model_uncertainty_percent(self, temperature_degC: ArrayLike) -> FloatArray:
         """Return what the water model itself adds to the uncertainty of osmolality. [%]"""
 
@@ -191,6 +195,11 @@ class Seawater:
 
     name: str = "seawater"
     salinity_unit: str = "1"
+
+    @property
+    def highest_salinity(self) -> float:
+        """Practical salinity at the end of the equation of state."""
+        return HIGHEST_PRACTICAL_SALINITY
 
     def model_uncertainty_percent(self, temperature_degC: ArrayLike) -> FloatArray:
         """Return 0: the relation is that of the reference composition; its 0.1 to 0.3 % is stated, not added."""

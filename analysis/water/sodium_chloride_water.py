@@ -11,6 +11,7 @@ from analysis.flags import Flag
 from analysis.water.properties import WaterProperties, has_plain_readings, mark, screened
 from analysis.water.sodium_chloride import (
     HIGHEST_FITTED_MOLALITY,
+    HIGHEST_MOLALITY,
     MOLAR_MASS_G_MOL,
     absolute_salinity_from_molality,
     conductivity_from_molality,
@@ -38,6 +39,11 @@ class SodiumChlorideWater:
 
     name: str = "sodium-chloride"
     salinity_unit: str = "g/kg"
+
+    @property
+    def highest_salinity(self) -> float:
+        """Grams per kilogram of solution at the end of the conductivity relation."""
+        return float(absolute_salinity_from_molality(HIGHEST_MOLALITY))
 
     def model_uncertainty_percent(self, temperature_degC: ArrayLike) -> FloatArray:
         """Return what the model adds to osmolality: 0.6 % from 15 degC, 1.1 % to 10 degC, between them between."""

@@ -110,7 +110,8 @@ class PackedCaps:
 
 
 CAPS_SOURCE: Final = {
-    "un-ionised ammonia": "common practice; Chin and Chen 1987 (Aquaculture 66, 247) give 0.13 mg N/L for Penaeus monodon postlarvae (from memory)",
+    "un-ionised ammonia": "common practice; 0.13 mg N/L for Penaeus monodon postlarvae in Chin and Chen 1987, "
+    "Aquaculture 66, 247 (from memory)",
     "oxygen": "common practice (from memory)",
     "density": "common practice: 300-500 postlarvae a litre during acclimation (from memory)",
     "hours packed": "common practice (from memory)",

@@ -146,7 +146,9 @@ def _best_section(problem: Problem, place: Place, *, minute: float) -> Move | No
         if len(problem.task.sources) > 1 and not is_reachable(problem, candidate):
             continue
         litres = flows[number] * lengths[number]
-        return Move(minute, float(lengths[number]), float(litres.sum()), tuple(float(v) for v in litres), 0.0, candidate)
+        return Move(
+            minute, float(lengths[number]), float(litres.sum()), tuple(float(v) for v in litres), 0.0, candidate
+        )
     return None
 
 

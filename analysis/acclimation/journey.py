@@ -175,7 +175,7 @@ class Standing:
     stress_after_h, hours : float
         Stress after that many hours at the destination. [0-100], [h]
     needs_yes : bool
-        True from the tolerable limit on, or where it is not known: a named person must agree.
+        True beyond the tolerable limit, or where it is not known: a named person must agree.
     """
 
     range_strain: float
@@ -201,4 +201,4 @@ def standing_at_destination(
         state=arrived.state,
     )
     known = float(strain[0])
-    return Standing(known, float(after.stress[-1]), STANDING_HOURS, not known < TOLERABLE_STRAIN)
+    return Standing(known, float(after.stress[-1]), STANDING_HOURS, not known <= TOLERABLE_STRAIN + 1e-3)

@@ -34,6 +34,8 @@ STRESS_CAP: Final = 60.0
 SMOLT_TEMPERATURE_SHIFT_K: Final = 4.0
 COMMON: Final = "common practice"
 _LOWEST_DEGC: Final = -5.0
+_UNLIMITED: Final = 1e9
+_BOTH_WAYS: Final[tuple[Direction, ...]] = ("down", "up")
 
 
 @dataclass(frozen=True, slots=True)
@@ -256,28 +258,26 @@ def _merged(found: Sequence[PublishedRate], attribute: Callable[[PublishedRate],
     return "; ".join(dict.fromkeys(attribute(rate) for rate in reversed(found)))
 
 
-def _rolling_from(found: Sequence[PublishedRate], *, name: str, window_min: float) -> RollingLimit:
-    law = law_from_rates(found)
-    return RollingLimit(
-        limit=Limit(name, _in_words(found), _merged(found, lambda r: r.source), _merged(found, lambda r: r.certainty)),
-        quantity="salinity",
-        window_min=window_min,
-        down=law,
-        up=law,
-    )
-
-
 def _hour_limit(stage: Stage, direction: Direction) -> RollingLimit:
-    return _rolling_from(
-        rates(stage.id, direction=direction, per="h"), name="salinity per hour", window_min=HOUR_WINDOW_MIN
-    )
+    return _rolling(stage, direction, per="h", name="salinity per hour", window_min=HOUR_WINDOW_MIN)
 
 
 def _day_limit(stage: Stage, direction: Direction) -> RollingLimit | None:
-    found = rates(stage.id, direction=direction, per="d")
-    if not found:
+    if not rates(stage.id, direction=direction, per="d"):
         return None
-    return _rolling_from(found, name="salinity per day", window_min=DAY_WINDOW_MIN)
+    return _rolling(stage, direction, per="d", name="salinity per day", window_min=DAY_WINDOW_MIN)
+
+
+def _rolling(stage: Stage, direction: Direction, *, per: Per, name: str, window_min: float) -> RollingLimit:
+    """Return the limit for both directions; its words and source are those of the way that is asked for."""
+    found = rates(stage.id, direction=direction, per=per)
+    laws = {way: _law(rates(stage.id, direction=way, per=per)) for way in _BOTH_WAYS}
+    words = Limit(name, _in_words(found), _merged(found, lambda r: r.source), _merged(found, lambda r: r.certainty))
+    return RollingLimit(words, "salinity", window_min, laws["down"], laws["up"])
+
+
+def _law(found: Sequence[PublishedRate]) -> RateLaw:
+    return law_from_rates(found) if found else constant_rate(_UNLIMITED)
 
 
 def step_limit(stage: Stage, *, direction: Direction, home_salinity: float, hour: RollingLimit) -> RollingLimit:
@@ -287,7 +287,8 @@ def step_limit(stage: Stage, *, direction: Direction, home_salinity: float, hour
     known a step of 1, marked assumed. Never less than the rate per hour makes in ten minutes.
     """
     far, figure, word = _abrupt_median(stage, direction)
-    floor = hour.down.allowed_at(home_salinity) * STEP_WINDOW_MIN / HOUR_WINDOW_MIN
+    law = hour.up if direction == "up" else hour.down
+    floor = law.allowed_at(home_salinity) * STEP_WINDOW_MIN / HOUR_WINDOW_MIN
     if figure is None:
         allowed, source, certainty = ASSUMED_STEP, "no abrupt median or tolerable limit is known", "assumed"
     else:
@@ -335,7 +336,11 @@ def _ph_limits() -> tuple[RollingLimit, RollingLimit]:
     hour, step = constant_rate(COMMON_PH_PER_H), constant_rate(COMMON_PH_STEP)
     return (
         RollingLimit(
-            Limit("pH per hour", f"{COMMON_PH_PER_H:g} an hour", "JORY_ACC", "memory"), "ph", HOUR_WINDOW_MIN, hour, hour
+            Limit("pH per hour", f"{COMMON_PH_PER_H:g} an hour", "JORY_ACC", "memory"),
+            "ph",
+            HOUR_WINDOW_MIN,
+            hour,
+            hour,
         ),
         RollingLimit(
             Limit("pH per step", f"{COMMON_PH_STEP:g} in any 10 minutes", COMMON, COMMON),
@@ -381,7 +386,9 @@ def _rolling_overridden(rolling: RollingLimit, override: Override) -> RollingLim
     if override.value is None:
         return replace(rolling, cap=float("inf"), limit=_overridden(rolling.limit, "lifted", override))
     law = constant_rate(override.value, lowest=_LOWEST_DEGC if rolling.quantity == "temperature_degC" else 0.0)
-    per = {STEP_WINDOW_MIN: "in any 10 minutes", HOUR_WINDOW_MIN: "an hour", DAY_WINDOW_MIN: "a day"}[rolling.window_min]
+    per = {STEP_WINDOW_MIN: "in any 10 minutes", HOUR_WINDOW_MIN: "an hour", DAY_WINDOW_MIN: "a day"}[
+        rolling.window_min
+    ]
     unit = " K" if rolling.quantity == "temperature_degC" else ""
     limit = _overridden(rolling.limit, f"{override.value:g}{unit} {per}", override)
     return replace(rolling, down=law, up=law, cap=1.0, limit=limit)

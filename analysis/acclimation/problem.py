@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Final
 import numpy as np
 from scipy.optimize import nnls
 
-from analysis.acclimation.scenarios import NOMINAL, ScenarioTank, Scenarios, Sources, scenarios_of, sources_of, tank_of
+from analysis.acclimation.scenarios import NOMINAL, Scenarios, ScenarioTank, Sources, scenarios_of, sources_of, tank_of
 from analysis.acclimation.task import Method
 from analysis.acclimation.windows import Mark, Windows
 
@@ -18,7 +18,7 @@ if TYPE_CHECKING:
     from analysis.acclimation.task import AcclimationTask, Water
     from analysis.arrays import FloatArray
 
-BLEND_STEP: Final = 0.1
+BLEND_STEP: Final = 0.2
 COARSE_BLEND_STEP: Final = 0.25
 SUM_WEIGHT: Final = 1e3
 
@@ -79,6 +79,10 @@ class Problem:
             Any shape whose last axis is the scenario.
         """
         total = np.zeros(tank.salinity.shape[:-1])
+        if not any(limit.quantity == "salinity" for limit in self.rolling):
+            total = np.abs(
+                tank.salinity[..., NOMINAL] - self.target.salinity
+            )  # no rate: any measure of distance will do
         for limit in self.rolling:
             if not np.isfinite(limit.cap) or limit.quantity == "ph":
                 continue
@@ -103,10 +107,10 @@ class Problem:
 
 
 def problem_of(task: AcclimationTask, limits: Limits, *, slowness: float = 1.0, work: Work | None = None) -> Problem:
-    """Return the problem of a task; *slowness* below 1 keeps every salinity limit with that share of its cap."""
+    """Return the problem of a task; *slowness* below 1 keeps every limit with that share of its cap."""
     scenarios = scenarios_of(task)
     tank = tank_of(task, scenarios)
-    rolling = tuple(limit for limit in limits.rolling if _can_matter(limit, task))
+    rolling = tuple(limit for limit in limits.rolling if _can_matter(limit, task, slowness))
     windows = Windows(rolling, task.allowances.late_min, slowness=slowness)
     windows = _with_past(windows, task, scenarios.count)
     wants_temperature = bool(np.isfinite(task.target.temperature_degC))
@@ -124,7 +128,7 @@ def problem_of(task: AcclimationTask, limits: Limits, *, slowness: float = 1.0, 
     )
 
 
-def _can_matter(limit: RollingLimit, task: AcclimationTask) -> bool:
+def _can_matter(limit: RollingLimit, task: AcclimationTask, slowness: float) -> bool:
     """Return False for a limit that is lifted, on something unknown, or wider than all there is to change."""
     if not np.isfinite(limit.cap):
         return False
@@ -135,13 +139,15 @@ def _can_matter(limit: RollingLimit, task: AcclimationTask) -> bool:
     if limit.quantity == "ph" and not np.isfinite(levels).all():
         return False
     span = float(np.nanmax(levels) - np.nanmin(levels))
-    return span > limit.down.allowed_at(float(np.nanmin(levels))) * limit.cap
+    return span > limit.down.allowed_at(float(np.nanmin(levels))) * limit.cap * slowness
 
 
 def _with_past(windows: Windows, task: AcclimationTask, count: int) -> Windows:
     marks = []
     for past in sorted(task.past, key=lambda past: -past.minutes_before):
-        levels = np.array([[getattr(past.water, limit.quantity)] * count for limit in windows.limits]).reshape(-1, count)
+        levels = np.array([[getattr(past.water, limit.quantity)] * count for limit in windows.limits]).reshape(
+            -1, count
+        )
         pairs = list(zip(windows.limits, levels, strict=True))
         down = np.array([limit.down.effort(level) for limit, level in pairs]).reshape(levels.shape)
         up = np.array([limit.up.effort(level) for limit, level in pairs]).reshape(levels.shape)
@@ -153,7 +159,7 @@ def _blends(task: AcclimationTask, *, fine: bool) -> FloatArray:
     count = len(task.sources)
     if count == 0:
         return np.zeros((1, 0))
-    step = (BLEND_STEP if count <= 2 else 2 * BLEND_STEP) if fine else COARSE_BLEND_STEP
+    step = BLEND_STEP if fine else COARSE_BLEND_STEP
     parts = round(1.0 / step)
     if count > 3:
         parts = 2

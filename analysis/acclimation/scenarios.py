@@ -226,9 +226,7 @@ def exchanged(tank: ScenarioTank, sources: Sources, amounts: Amounts) -> Scenari
     return replace(tank, water=after, ph=mixed_ph(tank, kept.volume_L, sources.waters, added))
 
 
-def mixed_ph(
-    tank: ScenarioTank, kept: FloatArray, waters: Sequence[SourceWater], added: FloatArray
-) -> FloatArray:
+def mixed_ph(tank: ScenarioTank, kept: FloatArray, waters: Sequence[SourceWater], added: FloatArray) -> FloatArray:
     """Return the mean of pH by volume; NaN where the pH of any of the waters is not known.
 
     Parameters

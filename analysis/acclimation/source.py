@@ -99,9 +99,7 @@ class SourceWater:
         if not (np.isfinite(self.salinity) and 0.0 <= self.salinity <= 119.0):
             raise InvalidInputError("salinity", found=self.salinity, allowed="0 to 119", where=where)
         if not (np.isfinite(self.temperature_degC) and -2.0 <= self.temperature_degC <= 45.0):
-            raise InvalidInputError(
-                "temperature", found=self.temperature_degC, allowed="-2 to 45 degC", where=where
-            )
+            raise InvalidInputError("temperature", found=self.temperature_degC, allowed="-2 to 45 degC", where=where)
         if not self.max_L_per_h > 0.0:
             raise InvalidInputError("highest flow", found=self.max_L_per_h, allowed="more than 0 L/h", where=where)
         if not self.available_L >= 0.0:

@@ -15,14 +15,13 @@ import numpy as np
 
 from analysis.acclimation.problem import direct_blend, highest_litres, is_reachable
 from analysis.acclimation.scenarios import NOMINAL, Amounts, ScenarioTank, exchanged
-from analysis.acclimation.task import Method
 
 if TYPE_CHECKING:
     from analysis.acclimation.problem import Problem
     from analysis.acclimation.windows import Windows
     from analysis.arrays import BoolArray, FloatArray, IntArray
 
-PROBES: Final = 96
+PROBES: Final = 40
 """Candidates of one look, shared by all blends: more of them cost little, another look costs much."""
 LEAST_PROBES: Final = 4
 MOST_DRAINED_SHARE: Final = 0.5
@@ -31,7 +30,10 @@ SHORTEST_STEP_MIN: Final = 5.0
 HORIZON_MIN: Final = 60.0 * 24.0 * 90.0
 MOST_STEPS: Final = 2000
 SMALL_GAIN_H: Final = 1e-9
-COMFORT_WEIGHT: Final = 1e-4
+DRIFT_WEIGHT_H_K: Final = 1e-4
+"""Of blends that gain the same, the one that moves the temperature least. [h/K]"""
+WATER_WEIGHT_H: Final = 0.1
+"""A blend that needs a whole tank volume more must gain this much by it. [h]"""
 
 
 @dataclass(frozen=True, slots=True)
@@ -160,7 +162,9 @@ def next_working_minute(problem: Problem, minute: float) -> float:
 def best_move(problem: Problem, place: Place, pace: Pace, *, minute: float) -> Move | None:
     """Return the step at *minute* that leaves the least to do; None where no step gains enough."""
     marked = place.windows.marked(place.tank, minute=minute, duration_min=0.0)
-    is_short = not problem.has_target_temperature and marked.limits and marked.room(minute=minute) < pace.least_room
+    is_short = (
+        not problem.has_target_temperature and bool(marked.marks) and marked.room(minute=minute) < pace.least_room
+    )
     if is_short and float(problem.remaining_h(place.tank)) > problem.window_h * pace.least_room:
         return None
     blends = _blends_here(problem, place.tank)
@@ -174,7 +178,12 @@ def best_move(problem: Problem, place: Place, pace: Pace, *, minute: float) -> M
     durations = step_durations(problem, trial)
     allowed = marked.allows(after, minute=minute, duration_min=durations) & (trial_units > 0) & fits
     allowed &= _lands(problem, place.tank, after)
-    return _chosen(problem, place, pace, after, allowed, trial=trial, durations=durations, minute=minute)
+    least_gain = 0.5 * pace.least_room * problem.window_h if problem.has_target_temperature else SMALL_GAIN_H
+    if is_short:
+        least_gain = float("inf")  # only what arrives is worth a step now
+    return _chosen(
+        problem, place, after, allowed, trial=trial, durations=durations, minute=minute, least_gain_h=least_gain
+    )
 
 
 def _blends_here(problem: Problem, tank: ScenarioTank) -> FloatArray:
@@ -188,7 +197,9 @@ def _most_units(problem: Problem, place: Place, blends: FloatArray, unit: float)
     task, volume = problem.task, place.tank.volume_L
     if problem.doses_salt:
         assert task.salt is not None  # noqa: S101 - said by doses_salt
-        most_kg = min(task.salt.available_kg - place.used_kg, MOST_DRAINED_SHARE * float(volume.min()) / task.salt.litres_per_kg)
+        most_kg = min(
+            task.salt.available_kg - place.used_kg, MOST_DRAINED_SHARE * float(volume.min()) / task.salt.litres_per_kg
+        )
         return np.array([max(0, int(np.floor(most_kg / unit + 1e-9)))], dtype=np.int64)
     most = highest_litres(problem, place.tank, place.used_L)
     with np.errstate(divide="ignore", invalid="ignore"):
@@ -205,7 +216,12 @@ def amounts_of(problem: Problem, blends: FloatArray, units: IntArray, unit: floa
     salt = problem.task.salt
     if problem.doses_salt and salt is not None:
         none = np.zeros(len(units))
-        return Amounts(none, np.zeros((len(units), len(problem.task.sources))), units * unit, salt.dry_fraction)
+        return Amounts(
+            none,
+            np.zeros((len(units), len(problem.task.sources))),
+            np.asarray(units * unit, dtype=np.float64),
+            salt.dry_fraction,
+        )
     add = rounded_litres(blends, units, unit)
     total = add.sum(axis=1)
     return Amounts(total if problem.drains else np.zeros_like(total), add, np.zeros_like(total))
@@ -238,7 +254,9 @@ def _is_past(problem: Problem, tank: ScenarioTank, after: ScenarioTank) -> BoolA
     target = problem.target
     before = float(tank.salinity[NOMINAL])
     sign = -1.0 if before > target.salinity else 1.0
-    slack = max(problem.task.tolerance_salinity - abs(before - target.salinity), 0.0) if _is_near(problem, tank) else 0.0
+    slack = (
+        max(problem.task.tolerance_salinity - abs(before - target.salinity), 0.0) if _is_near(problem, tank) else 0.0
+    )
     past = sign * (after.salinity[:, NOMINAL] - target.salinity) > slack
     if problem.has_target_temperature:
         warm = float(tank.temperature_degC[NOMINAL])
@@ -301,26 +319,25 @@ def _most_allowed(
 def _chosen(
     problem: Problem,
     place: Place,
-    pace: Pace,
     after: ScenarioTank,
     allowed: BoolArray,
     *,
     trial: Amounts,
     durations: FloatArray,
     minute: float,
+    least_gain_h: float,
 ) -> Move | None:
     remaining = problem.remaining_h(after)
     drift = np.abs(after.temperature_degC[:, NOMINAL] - problem.task.start.temperature_degC)
     water = trial.add_L.sum(axis=1) / problem.task.vessel.volume_L
-    score = np.where(allowed, remaining + COMFORT_WEIGHT * (drift + water), np.inf)
+    score = np.where(allowed, remaining + DRIFT_WEIGHT_H_K * drift + WATER_WEIGHT_H * water, np.inf)
     before = float(problem.remaining_h(place.tank))
-    least_gain = 0.5 * pace.least_room * problem.window_h if problem.has_target_temperature else 0.0
     for number in np.argsort(score, kind="stable"):
         if not np.isfinite(score[number]):
             return None
         candidate = after.at(int(number))
         gain = before - remaining[number]
-        if gain <= SMALL_GAIN_H or (gain < least_gain and not problem.has_arrived(candidate)):
+        if gain <= SMALL_GAIN_H or (gain < least_gain_h and not problem.has_arrived(candidate)):
             return None
         if len(problem.task.sources) > 1 and not is_reachable(problem, candidate):
             continue

@@ -55,7 +55,7 @@ class Windows:
     marks : tuple of Mark
         Oldest first.
     slowness : float
-        1, or less: every salinity limit is kept with this share of its cap.
+        1, or less: every limit is kept with this share of its cap.
     """
 
     limits: tuple[RollingLimit, ...]
@@ -65,8 +65,7 @@ class Windows:
 
     def cap(self, number: int) -> float:
         """Return the effort that limit *number* allows within its window."""
-        limit = self.limits[number]
-        return limit.cap * (self.slowness if limit.quantity == "salinity" else 1.0)
+        return self.limits[number].cap * self.slowness
 
     def efforts(self, tank: ScenarioTank) -> tuple[list[FloatArray], list[FloatArray], list[FloatArray]]:
         """Return levels and effort coordinates of the tank, one array a limit."""
@@ -77,9 +76,7 @@ class Windows:
                 known[limit.quantity] = tank.level(limit.quantity)
             levels.append(known[limit.quantity])
         down = [limit.down.effort(level) for limit, level in zip(self.limits, levels, strict=True)]
-        up = [
-            down[n] if limit.up is limit.down else limit.up.effort(levels[n]) for n, limit in enumerate(self.limits)
-        ]
+        up = [down[n] if limit.up is limit.down else limit.up.effort(levels[n]) for n, limit in enumerate(self.limits)]
         return levels, down, up
 
     def marked(self, tank: ScenarioTank, *, minute: float, duration_min: float) -> Windows:

@@ -317,6 +317,9 @@ def first_rules(kind: Kind, *, interval_s: float, priority: Priority | None = No
         Another priority (a tank left unwatched alarms at the tank's own).
     """
     record = RATIONALE[kind]
+    own = record.priority if priority is None else priority
+    # A note waits as long as it may; whatever can wake somebody is back after a quarter of an hour at the latest.
+    most_s = record.time_to_respond_s if own is Priority.NOTE else MOST_PAUSE_S
     return AlarmRules(
         on_delay_s=record.on_delay_s,
         off_delay_s=record.off_delay_s,
@@ -326,10 +329,10 @@ def first_rules(kind: Kind, *, interval_s: float, priority: Priority | None = No
         min_hit_percent=record.min_hit_percent,
         is_latching=record.is_latching,
         is_ack_required=record.is_ack_required,
-        re_alarm_s=min(record.time_to_respond_s, MOST_PAUSE_S),
+        re_alarm_s=min(record.time_to_respond_s, most_s),
         max_shelve_s=record.max_shelve_s,
         is_reshelvable=not record.is_top,
-        priority=record.priority if priority is None else priority,
+        priority=own,
         is_top=record.is_top,
     )
 

@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from analysis.flags import FILLER_VALUES
+from ingest.tables.encoding import WESTERN
 from ingest.tables.error import CellRemark, TableError, shown
 from ingest.tables.layout import SAMPLE_ROWS, Hints, Layout, layout_of, position_of
 from ingest.tables.numbers import number_column
@@ -204,13 +205,13 @@ class Table:
     def _blocks(self, file: TextIO, rows: int) -> Iterator[tuple[list[int], list[list[str]]]]:
         """Yield line numbers and cells of the rows that follow the header."""
         before = self.layout.first_line - 1
-        for _ in islice(file, before):
-            pass
         blank_joined = self.layout.separator == " "
         reader = csv.reader(file, delimiter=self.layout.separator, skipinitialspace=blank_joined)
         lines: list[int] = []
         cells: list[list[str]] = []
         try:
+            for _ in islice(file, before):
+                pass
             for row in reader:
                 if not any(row):
                     continue
@@ -236,7 +237,9 @@ class Table:
 
     @contextmanager
     def _opened(self) -> Iterator[TextIO]:
-        with _readable(self.path), self.path.open(encoding=self.layout.encoding, newline="") as file:
+        # cp1252 is what is left when it is not UTF-8: a byte that it lacks need not stop the numbers.
+        errors = "replace" if self.layout.encoding == WESTERN else "strict"
+        with _readable(self.path), self.path.open(encoding=self.layout.encoding, errors=errors, newline="") as file:
             yield file
 
     def _places(self, names: Mapping[str, str]) -> dict[str, int]:

@@ -41,8 +41,8 @@ _DATES = (
 )
 _TIMES = ("%H:%M", "%H:%M:%S", "%H:%M:%S.%f", "%I:%M %p", "%I:%M:%S %p", "%H:%M:%S,%f", "")
 CANDIDATES = tuple(f"{day} {clock}".strip() for day in _DATES for clock in _TIMES)
-ENOUGH = 0.9
-"""Share of the first rows that must fit: a file may hold lines that are no readings."""
+ENOUGH = 0.5
+"""Share of the first rows that must fit: a file may hold lines that are no readings. The best share wins."""
 EARLY = 20
 REMEMBERED = 100_000
 _EPOCH_DAY = date(1970, 1, 1).toordinal()

@@ -64,9 +64,7 @@ def has_mosquitto() -> bool:
 
 def mosquitto_path() -> str | None:
     """Return the path of the mosquitto broker; it is often in a folder that only root has on the path."""
-    return shutil.which("mosquitto") or shutil.which(
-        "mosquitto", path="/usr/sbin:/usr/local/sbin:/opt/homebrew/sbin"
-    )
+    return shutil.which("mosquitto") or shutil.which("mosquitto", path="/usr/sbin:/usr/local/sbin:/opt/homebrew/sbin")
 
 
 def has_embedded() -> bool:
@@ -80,9 +78,7 @@ def available_kind() -> BrokerKind:
         return "mosquitto"
     if has_embedded():
         return "embedded"
-    raise MissingPackageError(
-        "iotcore", extra="demo", need="starting a broker where mosquitto is not installed"
-    )
+    raise MissingPackageError("iotcore", extra="demo", need="starting a broker where mosquitto is not installed")
 
 
 def free_port(host: str = "127.0.0.1") -> int:
@@ -118,7 +114,7 @@ class Broker:
     protocol : {"3.1.1", "5"}
         What the embedded broker speaks on its port. mosquitto speaks both.
     lines : sequence of str
-        Further lines of mosquitto's configuration, after the listener's own.
+        Further lines of mosquitto's configuration, the last of all: they win over ours.
     is_anonymous : bool
         Whether mosquitto takes clients without a password.
     """
@@ -171,9 +167,7 @@ class Broker:
         if self.is_alive:
             return self
         if is_listening(self.host, self.port):
-            raise BrokerError(
-                f"port {self.port} on {self.host} is taken by another program; choose a free one, or 0"
-            )
+            raise BrokerError(f"port {self.port} on {self.host} is taken by another program; choose a free one, or 0")
         self.folder.mkdir(parents=True, exist_ok=True)
         command = self._mosquitto_command() if self.kind == "mosquitto" else self._embedded_command()
         with self.log_path.open("ab") as log:
@@ -228,9 +222,7 @@ class Broker:
         while not is_listening(self.host, self.port):
             if not self.is_alive or time.monotonic() > limit:
                 self._end(signal.SIGKILL)
-                raise BrokerError(
-                    f"the {self.kind} broker does not listen on {self.host}:{self.port}{self._log_end()}"
-                )
+                raise BrokerError(f"the {self.kind} broker does not listen on {self.host}:{self.port}{self._log_end()}")
             time.sleep(POLL_S)
 
     def _log_end(self) -> str:
@@ -251,21 +243,18 @@ class Broker:
         lines = [
             f"listener {self.port} {self.host}",
             f"allow_anonymous {str(self._is_anonymous).lower()}",
-            *self._lines,
             f"persistence_location {self.folder.resolve()}/",
             *MOSQUITTO_LINES,
         ]
         if hasattr(os, "geteuid") and os.geteuid() == 0:
             lines.append("user root")  # else it changes to a user that cannot write in our folder
-        return lines
+        return [*lines, *self._lines]
 
     def _embedded_command(self) -> list[str]:
         if not has_embedded():
             raise MissingPackageError("iotcore", extra="demo", need="the embedded broker")
         if self._lines or not self._is_anonymous:
-            raise BrokerError(
-                "passwords and further lines are for mosquitto; the embedded broker takes none here"
-            )
+            raise BrokerError("passwords and further lines are for mosquitto; the embedded broker takes none here")
         config = self.folder / "embedded.toml"
         config.write_text(self._embedded_config(), encoding="utf-8")
         return [sys.executable, "-P", "-c", _EMBEDDED_PROGRAM, str(config)]

@@ -120,7 +120,9 @@ class Publisher:
     ) -> None:
         self.stop()
 
-    def _on_connect(self, _client: paho.Client, _data: Any, _flags: Any, reason: Any, _properties: Any) -> None:
+    def _on_connect(self, _client: paho.Client, _data: Any, _flags: Any, reason: Any, properties: Any) -> None:
+        # MQTT 5: a client that has more in flight than the broker takes is thrown out.
+        self._in_flight = min(self._in_flight, getattr(properties, "ReceiveMaximum", self._in_flight))
         with self._change:
             self._problem = f"refuses the client: {reason}" if reason.is_failure else ""
             self._change.notify_all()

@@ -46,6 +46,22 @@ def test_everything_handed_over_arrives_in_order_and_is_acknowledged(kind, proto
         assert [int(payload) for payload in heard.payloads] == list(range(2000))
 
 
+@pytest.mark.mosquitto
+def test_a_broker_of_version_5_that_takes_few_at_a_time_is_heeded(tmp_path):
+    """mosquitto throws a client out that has more in flight than it said it takes."""
+    with (
+        Broker("mosquitto", folder=tmp_path, protocol="5", lines=["max_inflight_messages 7"]) as broker,
+        Publisher(access(broker, is_version_5=True)) as publisher,
+    ):
+        publisher.wait_connected()
+        for number in range(500):
+            publisher.publish("pond/1", str(number).encode())
+            assert publisher.waiting <= 7
+        publisher.confirm()
+        assert publisher.acknowledged == 500
+        assert "disconnect" not in broker.log_path.read_text(encoding="utf-8").lower()
+
+
 def test_no_broker_is_said_with_its_place():
     port = free_port()
     refused = pytest.raises(PublishingError, match=f"127.0.0.1:{port} did not answer")

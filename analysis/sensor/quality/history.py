@@ -267,7 +267,8 @@ def _judge_flat_lines(
 ) -> None:
     judged = verdict[FLAT_JUDGED] > 0
     levels[QualityTest.FLAT_LINE] = groups.per_row(judged)
-    allowed = np.floor(thresholds.flat_tolerance[:, groups.sensor] / RESOLUTION + 0.5)
+    due = windows.shrunk(verdict[FLAT_SUSPECT_LOW].T * RESOLUTION).T
+    allowed = np.floor(due * thresholds.flat_tolerance[:, groups.sensor] / RESOLUTION + 0.5)
     candidates = judged & (verdict[FLAT_SUSPECT_HIGH] - verdict[FLAT_SUSPECT_LOW] <= allowed)
     if not candidates.any():
         return

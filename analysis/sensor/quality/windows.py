@@ -47,6 +47,9 @@ if TYPE_CHECKING:
 FEWEST_FOR_DEVIATION: Final = 12
 """Readings needed before a standard deviation is used."""
 
+FULL_SIZE: Final = np.array([5.0, 0.0, 3.0])
+"""Below 5 mS/cm, or 3 of salinity, less movement is due: EPS and MIN_VAR shrink in proportion. Temperature: never."""
+
 SHARE_OF_WINDOW: Final = 0.75
 """Share of an attenuated-signal window's buckets that must hold readings."""
 
@@ -183,10 +186,17 @@ def _flat_windows(out: FloatArray, row: Line, at: IntArray, sensor: int, thresho
                 out[:, FLAT_JUDGED, variable] = covered & np.isfinite(thresholds.flat_tolerance[variable, sensor])
 
 
+def shrunk(level: FloatArray) -> FloatArray:
+    """Return the factor for thresholds on how much a value must move, by its level, (..., 3): 1 in salt water."""
+    share = np.clip(level / np.where(FULL_SIZE > 0.0, FULL_SIZE, 1.0), 0.0, 1.0)
+    return np.where(FULL_SIZE > 0.0, share, 1.0)
+
+
 def _attenuated(row: Line, at: IntArray, sensor: int, thresholds: Thresholds) -> FloatArray:
     width = int(thresholds.attenuated_buckets[sensor])
-    deviation = _deviation(row.over(at, width))
-    suspect, fail = thresholds.attenuated_suspect[:, sensor], thresholds.attenuated_fail[:, sensor]
+    sums = row.over(at, width)
+    deviation, due = _deviation(sums), shrunk(_mean(sums))
+    suspect, fail = due * thresholds.attenuated_suspect[:, sensor], due * thresholds.attenuated_fail[:, sensor]
     judged = (row.filled(at, width) >= SHARE_OF_WINDOW * width) & np.isfinite(deviation) & np.isfinite(suspect)
     return np.where(judged, 1.0 + 2.0 * (deviation < suspect) + (deviation < fail), 0.0)
 
@@ -203,36 +213,38 @@ def _hold_back_still_water(
 ) -> None:
     """Take back flat line and attenuated signal where nothing shows that the water should have moved."""
     moved = thresholds.moved[:, sensor] / RESOLUTION
-    bucket_us = int(thresholds.bucket_us[sensor])
+    changed_bucket = water_changed_us // int(thresholds.bucket_us[sensor])
+    tolerance = thresholds.flat_tolerance[:, sensor] / RESOLUTION
     for index, (place, number) in enumerate(zip(at, numbers, strict=True)):
         for variable in Variable:
-            width = int(thresholds.flat_suspect_buckets[variable, sensor])
-            if _has_reason_to_move(
-                row, place, int(number), width, variable, moved, water_changed_us // bucket_us, neighbour_tally
-            ):
-                continue
-            out[index, [FLAT_JUDGED, ATTENUATED_LEVEL], variable] = 0.0
+            lying = _flat_for(row.tally[place - MEMORY_BUCKETS : place], variable, float(tolerance[variable]))
+            windows = (
+                (FLAT_JUDGED, max(lying, int(thresholds.flat_suspect_buckets[variable, sensor]))),
+                (ATTENUATED_LEVEL, int(thresholds.attenuated_buckets[sensor])),
+            )
+            for verdict, width in windows:
+                own = row.tally[place - width : place]
+                beside = [tally for tally in map(neighbour_tally, range(number - width, number)) if tally is not None]
+                if not (number - width <= changed_bucket < number or _has_moved(own, beside, variable, moved)):
+                    out[index, verdict, variable] = 0.0
 
 
-def _has_reason_to_move(
-    row: Line,
-    place: int,
-    number: int,
-    width: int,
-    variable: Variable,
-    moved: FloatArray,
-    changed_bucket: int,
-    neighbour_tally: Callable[[int], IntArray | None],
-) -> bool:
-    if number - width <= changed_bucket < number:
+def _flat_for(tally: IntArray, variable: Variable, tolerance: float) -> int:
+    """Return for how many of the last buckets the line has been flat: it may have been due to move in any."""
+    highest = np.maximum.accumulate(tally[::-1, HIGHEST, variable])
+    lowest = np.minimum.accumulate(tally[::-1, LOWEST, variable])
+    is_flat = (highest - lowest <= tolerance) & (tally[::-1, COUNT, variable] > 0)
+    return int(is_flat.shape[0] if is_flat.all() else np.argmin(is_flat))
+
+
+def _has_moved(own: IntArray, beside: list[IntArray], variable: Variable, moved: FloatArray) -> bool:
+    warmth = Variable.TEMPERATURE
+    if variable is not warmth and _spread(own)[warmth] > moved[warmth]:
         return True
-    if variable is not Variable.TEMPERATURE and _spread(row.tally[place - width : place])[1] > moved[1]:
-        return True
-    beside = [tally for tally in map(neighbour_tally, range(number - width, number)) if tally is not None]
     if not beside:
         return False
     spread = _spread(np.stack(beside))
-    return bool(spread[variable] > moved[variable] or spread[Variable.TEMPERATURE] > moved[Variable.TEMPERATURE])
+    return bool(spread[variable] > moved[variable] or spread[warmth] > moved[warmth])
 
 
 def _spread(tally: IntArray) -> IntArray:
@@ -262,4 +274,4 @@ def _neighbour(
 
 
 def _mean(tally: IntArray) -> FloatArray:
-    return np.asarray(tally[SUM] / np.maximum(tally[COUNT], 1) * RESOLUTION)
+    return np.asarray(tally[..., SUM, :] / np.maximum(tally[..., COUNT, :], 1) * RESOLUTION)

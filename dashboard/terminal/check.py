@@ -16,6 +16,7 @@ if TYPE_CHECKING:
 
     from ingest.site.models import Site
     from ingest.site.problems import Problem
+    from ingest.site.sensors import Sensor
 
 HELP = "check a site file and say what is installed"
 BROKEN = 1
@@ -77,8 +78,12 @@ def summary(site: Site) -> list[str]:
         f"{_count(len(site.sensors), 'sensor')}, {_count(len(site.source_waters), 'source water')}",
         f"broker {broker.host}, port {broker.port}, MQTT {broker.protocol}{secure}, as {site.client_id}",
     ]
-    width = max((len(tank.id) for tank in site.tanks), default=0)
+    width = max((len(place.id) for place in (*site.tanks, *site.source_waters)), default=0)
     lines += [f"  {tank.id:<{width}}  {_about(site, tank.id)}" for tank in site.tanks]
+    for water in site.source_waters:
+        sensors = [sensor for sensor in site.sensors if sensor.source_water == water.id]
+        if sensors:
+            lines.append(f"  {water.id:<{width}}  {water.kind}, source water; {_sensors(sensors)}")
     unwatched = [tank.id for tank in site.tanks if not site.sensors_of_tank(tank.id)]
     if unwatched:
         lines.append(f"no sensor sits in: {', '.join(unwatched)}")
@@ -100,9 +105,12 @@ def _about(site: Site, tank_id: str) -> str:
         parts.append(f"salinity {tank.set_point.salinity:g}" + (f" ± {band:g}" if band is not None else ""))
     if tank.first_stock is not None:
         parts.append(f"{tank.first_stock.number:,} {tank.first_stock.animal}")
-    sensors = site.sensors_of_tank(tank_id)
-    parts.append(", ".join(f"{sensor.id} ({sensor.reports})" for sensor in sensors) or "no sensor")
+    parts.append(_sensors(site.sensors_of_tank(tank_id)))
     return "; ".join(parts)
+
+
+def _sensors(sensors: Sequence[Sensor]) -> str:
+    return ", ".join(f"{sensor.id} ({sensor.reports})" for sensor in sensors) or "no sensor"
 
 
 def _count(number: int, thing: str) -> str:

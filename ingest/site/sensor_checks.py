@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING, Any
 
 from ingest.site.problems import listed, nearest_word
 from ingest.site.sensors import QUANTITIES, SENML_NAME
+from ingest.topics import fault_of_topic
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -14,7 +15,6 @@ if TYPE_CHECKING:
     from ingest.site.problems import Problem
 
 SENML = ("senml-json", "senml-cbor")
-LONGEST_TOPIC_BYTES = 65_535
 
 
 def problems_of_sensors(document: Document) -> Iterator[Problem]:
@@ -149,7 +149,7 @@ def _topics(document: Document, path: Path, sensor: dict[str, Any], taken: dict[
         yield document.problem((*path, "topic"), None, "an MQTT topic; this key must be there")
     for keys, text in _topic_texts(sensor):
         at = (*path, *keys)
-        if (fault := _fault_of_topic(text)) is not None:
+        if (fault := fault_of_topic(text)) is not None:
             yield document.problem(at, text, fault)
             continue
         # A SenML topic may carry the records of several sensors: there the SenML names tell them apart.
@@ -172,16 +172,3 @@ def _topic_texts(sensor: dict[str, Any]) -> list[tuple[tuple[str, ...], str]]:
         return [(("topic",), topic)] if isinstance(topic, str) else []
     prefix = f"{topic}/" if isinstance(topic, str) else ""
     return [(keys, prefix + field) for keys, field in _named(sensor)]
-
-
-def _fault_of_topic(topic: str) -> str | None:
-    """Return what is wrong with a topic, None where nothing is."""
-    if "+" in topic or "#" in topic:
-        return "one topic a sensor, no wildcard (+ or #): it would also take the readings of other sensors"
-    if topic.startswith("$"):
-        return "a topic that does not begin with $: those belong to the broker"
-    if topic.startswith("/") or topic.endswith("/") or "//" in topic:
-        return "levels with a name each, joined by single slashes"
-    if len(topic.encode("utf-8", "replace")) > LONGEST_TOPIC_BYTES or "\0" in topic or topic != topic.strip():
-        return f"at most {LONGEST_TOPIC_BYTES} bytes, no blank at the ends"
-    return None

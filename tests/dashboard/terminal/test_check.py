@@ -26,8 +26,9 @@ def test_a_usable_file_is_summed_up(site_file: Path, capsys: pytest.CaptureFixtu
         "Larkfen Shore Hatchery (larkfen), Europe/Lisbon",
         "2 tanks in 1 hall, 4 sensors, 2 source waters",
         "broker 127.0.0.1, port 1883, MQTT 5, as larkfen-worker",
-        "  l3  1,000 L seawater; salinity 31 ± 2; 80,000 penaeus-vannamei/pl10; l3-ct (compensated)",
-        "  p1  500,000 L borehole; salinity 2 to 6 with the tide; p1-ct (raw), p1-low (raw)",
+        "  l3      1,000 L seawater; salinity 31 ± 2; 80,000 penaeus-vannamei/pl10; l3-ct (compensated)",
+        "  p1      500,000 L borehole; salinity 2 to 6 with the tide; p1-ct (raw), p1-low (raw)",
+        "  intake  seawater, source water; intake-ct (raw)",
         "the file can be used",
     ]
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import math
+import timeit
 from datetime import UTC, datetime
 
 import pytest
@@ -217,3 +218,12 @@ def test_a_topic_that_nobody_declared() -> None:
         "larkfen/intake/temp",
         "larkfen/gateway",
     )
+
+
+def test_a_good_message_costs_less_than_the_standard_parser_alone() -> None:
+    payload = json.dumps({"ec": 48.2, "temp": 25.1, "t": ISO, "battery": 3.71, "id": "ct-17"}).encode()
+    decode = decoder().decode
+    ours = min(timeit.repeat(lambda: decode("larkfen/t1", payload, received_at_us=NOW_US), number=500, repeat=30))
+    parser = min(timeit.repeat(lambda: json.loads(payload), number=500, repeat=30))
+    # Measured: 0.5 to 0.6.
+    assert ours / parser < 1

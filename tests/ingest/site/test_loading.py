@@ -110,6 +110,7 @@ def test_all_problems_come_at_once_and_in_the_order_of_lines() -> None:
         ("larkfen/t1", "larkfen/+", 7, "sensors[1] (t1-ct).topic", "no wildcard", ""),
         ("larkfen/t1", "'larkfen/#'", 7, "sensors[1] (t1-ct).topic", "no wildcard", ""),
         ("larkfen/t1", "$SYS/x", 7, "sensors[1] (t1-ct).topic", "begin with $", ""),
+        ("larkfen/t1", "euryhale/larkfen/t1", 7, "sensors[1] (t1-ct).topic", "the tool itself speaks", ""),
         ("larkfen/t1", "/larkfen/t1", 7, "sensors[1] (t1-ct).topic", "single slashes", ""),
         ("temp}", "temp}\n    conductivity_unit: us/cm", 9, "sensors[1] (t1-ct).conductivity_unit", "uS/cm", "uS/cm"),
         ("temp}", "temp}\n    temperature_unit: C", 9, "sensors[1] (t1-ct).temperature_unit", "degC", "degC"),

@@ -78,7 +78,8 @@ def summary(site: Site) -> list[str]:
         f"{_count(len(site.sensors), 'sensor')}, {_count(len(site.source_waters), 'source water')}",
         f"broker {broker.host}, port {broker.port}, MQTT {broker.protocol}{secure}, as {site.client_id}",
     ]
-    width = max((len(place.id) for place in (*site.tanks, *site.source_waters)), default=0)
+    ids = [tank.id for tank in site.tanks] + [water.id for water in site.source_waters]
+    width = max(map(len, ids), default=0)
     lines += [f"  {tank.id:<{width}}  {_about(site, tank.id)}" for tank in site.tanks]
     for water in site.source_waters:
         sensors = [sensor for sensor in site.sensors if sensor.source_water == water.id]

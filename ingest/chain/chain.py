@@ -8,10 +8,18 @@ from typing import TYPE_CHECKING, Any, NamedTuple
 import numpy as np
 
 from analysis.alarm import bank as alarm_bank
-from analysis.alarm.conditions import limit_block, truth_block, without_dry
+from analysis.alarm.conditions import limit_block, truth_block, wet_quality
 from analysis.alarm.kinds import ConditionKind
 from analysis.alarm.nearest import LatestReadings, judged_rows, no_readings_yet
 from analysis.alarm.state import NEVER_US
+from analysis.alarm.timing import (
+    SensorTimes,
+    is_clock_doubted_by_tank,
+    judged_times,
+    no_times_yet,
+    sensor_times_from_dict,
+    sensor_times_to_dict,
+)
 from analysis.flags import Flag, Quality
 from ingest.chain.animals import animal_body, fresh_animals, restored_animals, step
 from ingest.chain.water import water
@@ -24,7 +32,7 @@ if TYPE_CHECKING:
     from analysis.alarm.nearest import JudgedRows
     from analysis.alarm.state import AlarmState
     from analysis.alarm.transition import Transition
-    from analysis.arrays import BoolArray, FloatArray, IntArray, QualityArray
+    from analysis.arrays import BoolArray, FlagArray, FloatArray, IntArray, QualityArray
     from ingest.chain.animals import AnimalRoster, AnimalState, StressStep
     from ingest.chain.block import RawBlock
     from ingest.chain.roster import Roster
@@ -34,9 +42,14 @@ if TYPE_CHECKING:
 
 @dataclass(frozen=True, slots=True)
 class ChainState:
-    """All that the chain remembers between blocks, besides what the roster says."""
+    """All that the chain remembers between blocks, besides what the roster says.
 
+    `salinity` is what the probes say, `wet` the same without probes that are dry.
+    """
+
+    times: SensorTimes
     salinity: LatestReadings
+    wet: LatestReadings
     temperature: LatestReadings
     osmolality: LatestReadings
     bank: AlarmBank
@@ -83,7 +96,9 @@ def fresh_state(
 ) -> ChainState:
     """Return the state before any reading, with the alarms in *states* as they stood."""
     return ChainState(
+        times=no_times_yet(len(tanks.watchers)),
         salinity=no_readings_yet(tanks.places),
+        wet=no_readings_yet(tanks.places),
         temperature=no_readings_yet(tanks.places),
         osmolality=no_readings_yet(tanks.places),
         bank=alarm_bank.alarm_bank(tanks.rules, states),
@@ -111,47 +126,99 @@ def run(
         What each reading says of the water, late ones too, and what followed for tanks, animals and alarms.
     """
     found = water(roster, block)
-    live = _live(tanks, block)
+    times, judged = _judged(tanks, state, block)
+    found = replace(found, flags=_with_clock_doubts(found.flags, judged))
+    live = judged.rows[judged.is_judged]
     if not live.size:
-        return found, ChainOutput(state)
+        return found, ChainOutput(replace(state, times=times))
     watcher = tanks.watcher_of[block.sensor[live]]
-    warmth = found.temperature_degC[live]
-    has_warmth = np.where(np.isnan(warmth), np.uint8(Quality.MISSING), np.uint8(Quality.PASS))
+    tank = tanks.places.tank[watcher]
+    judged_at_us = judged.judged_at_us[judged.is_judged]
 
-    def judged(latest: LatestReadings, value: FloatArray, quality: QualityArray) -> tuple[LatestReadings, JudgedRows]:
+    def rows_of(latest: LatestReadings, value: FloatArray, quality: QualityArray) -> tuple[LatestReadings, JudgedRows]:
         return judged_rows(
             latest,
             tanks.places,
             sensor=watcher,
             value=value,
             quality=quality,
-            judged_at_us=block.measured_at_us[live],
+            judged_at_us=judged_at_us,
             stale_after_us=tanks.stale_after_us,
         )
 
-    quality = found.quality[live]
-    salinity, salinity_rows = judged(state.salinity, found.salinity[live], quality)
-    temperature, temperature_rows = judged(state.temperature, warmth, has_warmth)
-    osmolality, osmolality_rows = judged(state.osmolality, found.properties.osmolality_mOsm_kg[live], quality)
-    wet = without_dry(salinity_rows, tanks.dry_below)
-    rows = (wet, wet, temperature_rows, temperature_rows, salinity_rows)
-    observed = limit_block(tanks.conditions, rows, now_us=block.received_at_us[live])
-    bank, outcomes = alarm_bank.observe(state.bank, observed)
-    felt_in = osmolality_rows._replace(is_usable=wet.is_usable)
-    creatures, felt = step(animals, state.animals, osmolality=felt_in, temperature=temperature_rows)
-    after = ChainState(salinity, temperature, osmolality, bank, creatures)
-    touched = tuple(np.unique(tanks.places.tank[watcher]).tolist())
-    return found, replace(_output(state, after, outcomes, touched), felt=tuple(felt))
+    saltiness, warmth, quality = found.salinity[live], found.temperature_degC[live], found.quality[live]
+    in_water = wet_quality(saltiness, quality=quality, tank=tank, dry_below=tanks.dry_below)
+    has_warmth = np.where(np.isnan(warmth), np.uint8(Quality.MISSING), np.uint8(Quality.PASS))
+    salinity, salinity_rows = rows_of(state.salinity, saltiness, quality)
+    wet, wet_rows = rows_of(state.wet, saltiness, in_water)
+    temperature, temperature_rows = rows_of(state.temperature, warmth, has_warmth)
+    osmolality, osmolality_rows = rows_of(state.osmolality, found.properties.osmolality_mOsm_kg[live], in_water)
+    rows = (wet_rows, wet_rows, temperature_rows, temperature_rows, salinity_rows)
+    bank, outcomes = alarm_bank.observe(
+        state.bank, limit_block(tanks.conditions, rows, now_us=block.received_at_us[live])
+    )
+    creatures, felt = step(animals, state.animals, osmolality=osmolality_rows, temperature=temperature_rows)
+    after = ChainState(times, salinity, wet, temperature, osmolality, bank, creatures)
+    return found, replace(_output(state, after, outcomes, tuple(np.unique(tank).tolist())), felt=tuple(felt))
 
 
-def tick(tanks: TankRoster, state: ChainState, *, now_us: int) -> ChainOutput:
-    """Let everything happen that time alone brings: tanks that nobody can see any more, ends of shelving, re-alarms."""
+class _Judged(NamedTuple):
+    """Which rows of a block belong to tanks, and how their times are judged (`analysis.alarm.timing`)."""
+
+    rows: IntArray
+    judged_at_us: IntArray
+    is_judged: BoolArray
+    is_clock_doubted: BoolArray
+
+
+def _judged(tanks: TankRoster, state: ChainState, block: RawBlock) -> tuple[SensorTimes, _Judged]:
+    rows = np.flatnonzero(tanks.watcher_of[block.sensor] >= 0)
+    times, judged = judged_times(
+        state.times,
+        sensor=tanks.watcher_of[block.sensor[rows]],
+        measured_at_us=block.measured_at_us[rows],
+        received_at_us=block.received_at_us[rows],
+        interval_us=tanks.interval_us,
+        stale_after_us=tanks.stale_after_us,
+    )
+    return times, _Judged(rows, judged.judged_at_us, judged.is_judged, judged.is_clock_doubted)
+
+
+def _with_clock_doubts(flags: FlagArray, judged: _Judged) -> FlagArray:
+    """Say which clocks are doubted. What is judged at the time received is no late reading, whatever its clock says."""
+    if not judged.is_clock_doubted.any():
+        return flags
+    flags = flags.copy()
+    doubted = judged.rows[judged.is_clock_doubted]
+    flags[doubted] = (flags[doubted] & ~np.uint32(Flag.LATE)) | np.uint32(Flag.CLOCK_DOUBTED)
+    return flags
+
+
+def tick(tanks: TankRoster, state: ChainState, *, now_us: int, watching_since_us: int) -> ChainOutput:
+    """Let everything happen that time alone brings: tanks that nobody can see any more, ends of shelving, re-alarms.
+
+    Parameters
+    ----------
+    tanks : TankRoster
+    state : ChainState
+        Before; not changed.
+    now_us : int
+        The present time. [us UTC]
+    watching_since_us : int
+        Since when readings can come at all: sensors have their stale limit from then on to be heard. [us UTC]
+    """
     bank, due = alarm_bank.tick(state.bank, now_us)
-    unseen, since_us = _unwatched(tanks, state, now_us)
+    unseen, since_us = _unwatched(tanks, state, now_us, watching_since_us)
     minutes = np.where(since_us > -NEVER_US, (now_us - np.maximum(since_us, 0)) / 60e6, np.nan)
-    block = truth_block(ConditionKind.UNWATCHED, unseen, at_us=now_us, now_us=now_us, value=np.round(minutes, 1))
-    bank, seen = alarm_bank.observe(bank, block)
-    return _output(state, replace(state, bank=bank), due + seen, ())
+    doubted = is_clock_doubted_by_tank(state.times, tanks.places)
+    blocks = (
+        truth_block(ConditionKind.UNWATCHED, unseen, at_us=now_us, now_us=now_us, value=np.round(minutes, 1)),
+        truth_block(ConditionKind.SENSOR_CLOCK_WRONG, doubted, at_us=now_us, now_us=now_us),
+    )
+    for block in blocks:
+        bank, seen = alarm_bank.observe(bank, block)
+        due += seen
+    return _output(state, replace(state, bank=bank), due, ())
 
 
 def act(state: ChainState, *, tank: int, kind: ConditionKind, event: Event, now_us: int) -> ChainOutput:
@@ -160,16 +227,21 @@ def act(state: ChainState, *, tank: int, kind: ConditionKind, event: Event, now_
     return _output(state, replace(state, bank=bank), outcomes, ())
 
 
-QUANTITIES = ("salinity", "temperature", "osmolality")
+QUANTITIES = ("salinity", "wet", "temperature", "osmolality")
 
 
 def tank_body(roster: Roster, tanks: TankRoster, animals: AnimalRoster, state: ChainState, tank: int) -> dict[str, Any]:
     """Return what the chain remembers of one tank as plain JSON data, sensors by their ids."""
-    body: dict[str, Any] = {"animals": animal_body(animals, state.animals, tank)}
+    watchers = np.flatnonzero(tanks.places.tank == tank)
+    names = [roster.sensors[sensor] for sensor in tanks.watchers[watchers]]
+    body: dict[str, Any] = {
+        "animals": animal_body(animals, state.animals, tank),
+        "times": sensor_times_to_dict(_taken(state.times, watchers), names),
+    }
     for name in QUANTITIES:
         latest: LatestReadings = getattr(state, name)
         body[name] = {}
-        for watcher in np.flatnonzero(tanks.places.tank == tank).tolist():
+        for watcher in watchers.tolist():
             place = (tank, int(tanks.places.slot[watcher]))
             body[name][roster.sensors[tanks.watchers[watcher]]] = [
                 float(latest.value[place]),
@@ -201,7 +273,18 @@ def restored_state(
     for tank, tank_id in enumerate(tanks.tanks):
         for name in QUANTITIES:
             _restore_latest(roster, tanks, getattr(state, name), tank, bodies.get(tank_id, {}).get(name, {}))
-    return replace(state, animals=restored_animals(animals, kept_animals))
+    kept_times = {sensor: entry for body in bodies.values() for sensor, entry in body.get("times", {}).items()}
+    times = sensor_times_from_dict(kept_times, [roster.sensors[sensor] for sensor in tanks.watchers])
+    return replace(state, times=times, animals=restored_animals(animals, kept_animals))
+
+
+def _taken(times: SensorTimes, index: IntArray) -> SensorTimes:
+    return SensorTimes(
+        times.received_at_us[index],
+        times.offset_us[index],
+        times.judged_at_us[index],
+        times.is_clock_doubted[index],
+    )
 
 
 def _restore_latest(
@@ -218,20 +301,14 @@ def _restore_latest(
         latest.believed_at_us[place] = entry[3]
 
 
-def _live(tanks: TankRoster, block: RawBlock) -> IntArray:
-    """Return the rows that speak for a tank now: not late, and of a sensor that sits in a tank."""
-    speaks = (tanks.watcher_of[block.sensor] >= 0) & ((block.flags & np.uint32(Flag.LATE)) == 0)
-    return np.flatnonzero(speaks)
-
-
-def _unwatched(tanks: TankRoster, state: ChainState, now_us: int) -> tuple[BoolArray, IntArray]:
+def _unwatched(tanks: TankRoster, state: ChainState, now_us: int, watching_since_us: int) -> tuple[BoolArray, IntArray]:
     """Return which tanks no believable sensor watches, and since when (the newest believed reading)."""
     places = tanks.places
     stale = np.zeros((places.tank_count, places.slot_count), dtype=np.int64)
     stale[places.tank, places.slot] = tanks.stale_after_us
     believed = state.salinity.believed_at_us
     # Compared by adding: the time of a sensor that never spoke is near the smallest integer.
-    is_seen = (believed + stale >= now_us).any(axis=1)
+    is_seen = (np.maximum(believed, watching_since_us) + stale >= now_us).any(axis=1)
     has_sensor = np.zeros(places.tank_count, dtype=np.bool_)
     has_sensor[places.tank] = True
     has_spoken = (believed > -NEVER_US).any(axis=1)

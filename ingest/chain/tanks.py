@@ -12,6 +12,8 @@ from analysis.alarm.kinds import ConditionKind
 from analysis.alarm.nearest import sensor_places
 from analysis.alarm.rationale import first_rules
 from analysis.alarm.set_point import salinity_band, temperature_band
+from analysis.alarm.timing import stale_after_s
+from analysis.arrays import MICROSECONDS_PER_SECOND
 from ingest.chain.roster import NO_TANK
 
 if TYPE_CHECKING:
@@ -24,10 +26,6 @@ if TYPE_CHECKING:
     from ingest.chain.roster import Roster
     from ingest.site.models import Site
     from ingest.site.tanks import Tank
-
-STALE_INTERVALS = 3
-STALE_AT_LEAST_US = 60_000_000
-"""A value is stale after three of its sensor's intervals, and never sooner than a minute. Common practice."""
 
 DEFAULT_INTERVAL_S = 60.0
 DRY_DEADBAND = 0.2
@@ -54,7 +52,7 @@ class TankRoster:
         For each sensor its place in `watchers`; -1 for a sensor in a source water.
     places : SensorPlaces
         Tank and slot of each watcher.
-    stale_after_us : ndarray of int64, one per watcher
+    interval_us, stale_after_us : ndarray of int64, one per watcher
     salinity, temperature : SetPointBand
         Between which limits the water alarms.
     conditions : tuple of LimitCondition
@@ -67,6 +65,7 @@ class TankRoster:
     watchers: IntArray
     watcher_of: IntArray
     places: SensorPlaces
+    interval_us: IntArray
     stale_after_us: IntArray
     salinity: SetPointBand
     temperature: SetPointBand
@@ -108,13 +107,20 @@ def tank_roster(site: Site, roster: Roster, *, is_larva: BoolArray, tolerable: F
     temperature = temperature_band(_points(site, "temperature_degC"), half_width_K=_points(site, "temperature_band_K"))
     dry_below = dry_limit(np.where(np.isnan(tide[:, 0]), point, tide[:, 0]))
     intervals = _intervals_s(site)
-    kinds = (*LIMIT_KINDS, ConditionKind.UNWATCHED)
+    kinds = (*LIMIT_KINDS, ConditionKind.UNWATCHED, ConditionKind.SENSOR_CLOCK_WRONG)
     return TankRoster(
         tanks=tuple(tank.id for tank in site.tanks),
         watchers=watchers,
         watcher_of=watcher_of,
         places=sensor_places(roster.tank[watchers], tank_count=len(site.tanks)),
-        stale_after_us=np.maximum(STALE_INTERVALS * roster.interval_us[watchers], STALE_AT_LEAST_US),
+        interval_us=roster.interval_us[watchers],
+        stale_after_us=np.array(
+            [
+                round(stale_after_s(interval / MICROSECONDS_PER_SECOND) * MICROSECONDS_PER_SECOND)
+                for interval in roster.interval_us[watchers].tolist()
+            ],
+            dtype=np.int64,
+        ),
         salinity=salinity,
         temperature=temperature,
         dry_below=dry_below,

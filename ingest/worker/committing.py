@@ -22,7 +22,7 @@ if TYPE_CHECKING:
     from analysis.alarm.rules import AlarmRules
     from analysis.alarm.state import AlarmState
     from analysis.alarm.transition import Transition
-    from analysis.arrays import IntArray
+    from analysis.arrays import FlagArray, IntArray
     from ingest.chain.block import RawBlock
     from ingest.chain.chain import ChainOutput, ChainState, Happened
     from ingest.chain.water import Water
@@ -59,11 +59,11 @@ def reading_rows(plant: Plant, block: RawBlock, water: Water) -> ReadingRows:
     )
 
 
-def newest_rows(block: RawBlock) -> IntArray:
+def newest_rows(sensor: IntArray, flags: FlagArray) -> IntArray:
     """Return the index of the newest reading of each sensor in a sorted block, late ones left out."""
-    live = np.flatnonzero((block.flags & np.uint32(Flag.LATE)) == 0)
+    live = np.flatnonzero((flags & np.uint32(Flag.LATE)) == 0)
     backwards = live[::-1]
-    _, first = np.unique(block.sensor[backwards], return_index=True)
+    _, first = np.unique(sensor[backwards], return_index=True)
     return backwards[first]
 
 

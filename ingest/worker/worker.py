@@ -118,6 +118,7 @@ class Worker:
         # A replayed record is received now, whatever time it speaks of.
         received_by = SystemClock() if self._is_replay else clock
         self.intake = Intake(self._access(), self.plant.topics, clock=received_by)
+        self._watching_since_us = clock.now_us()
         self._wants_reload = threading.Event()
         self._schedule = Schedule(clock)
         self.counts: Counter[str] = Counter()
@@ -176,7 +177,7 @@ class Worker:
         self.stopwatch.lap("chain")
         if len(admission.block):
             commit.readings = reading_rows(self.plant, admission.block, water)
-            commit.latest = newest_rows(admission.block)
+            commit.latest = newest_rows(admission.block.sensor, water.flags)
             commit.sensor_states = [None] * len(commit.latest)
         commit.conflicts = conflict_rows(self.plant, raw, admission.contradictions)
         commit.counts["readings"] = len(admission.block)
@@ -265,7 +266,9 @@ class Worker:
         overdue = self.plant.decoder.pairing.expired(self._clock.now_us())
         if overdue:
             self._take_in(overdue, BlockCommit(), stop)
-        output = tick(self.plant.tanks, self.state, now_us=self._clock.now_us())
+        output = tick(
+            self.plant.tanks, self.state, now_us=self._clock.now_us(), watching_since_us=self._watching_since_us
+        )
         if output.happened or output.pending:
             if not self._commit(self._with_output(BlockCommit(), output), stop):
                 return

@@ -47,6 +47,8 @@ BLEND_ERROR_PART: Final = 0.006
 HEADER_PART_COLD: Final = 0.1
 """How far the header tanks' water is from the set point towards the intake's temperature."""
 DAILY_CHANGE_LOCAL_H: Final = 8.5
+DAYS_BEFORE: Final = 3660
+"""The morning's water change has been done every day for ten years."""
 DAILY_CHANGE_LASTS_H: Final = 1.0 / 3.0
 
 
@@ -302,7 +304,7 @@ def _daily_changes(site: Site, runs: list[TankRun], *, weather: Weather) -> list
             TankEvent(
                 kind="flushed",
                 tank=tank.id,
-                start_h=DAILY_CHANGE_LOCAL_H + 0.4 * (number % 4) - anchor_h_of_day,
+                start_h=DAILY_CHANGE_LOCAL_H + 0.4 * (number % 4) - anchor_h_of_day - 24.0 * DAYS_BEFORE,
                 lasts_h=DAILY_CHANGE_LASTS_H,
                 every_h=24.0,
                 size=-np.log1p(-run.daily_change_part) / DAILY_CHANGE_LASTS_H,

@@ -1,7 +1,7 @@
 """The scenario of a simulated hatchery: how each tank is run, and what goes wrong when.
 
 A YAML file beside the site file. Hours count from the scenario's own start (its anchor), so negative hours are the
-history that a demo brings along; what has `every_h` comes again and again in both directions.
+history that a demo brings along; what has `every_h` comes again and again after its first start.
 """
 
 from __future__ import annotations
@@ -44,11 +44,16 @@ class _Timed(_Part):
             raise ValueError(f"every_h {self.every_h} is shorter than lasts_h {self.lasts_h}")
         return self
 
+    def hours_since_start(self, hours: FloatArray) -> FloatArray:
+        """Return the hours since the latest start at each moment, negative before the first. [h]"""
+        since = np.asarray(hours, dtype=np.float64) - self.start_h
+        if self.every_h is None:
+            return since
+        return np.where(since >= 0.0, np.mod(since, self.every_h), since)
+
     def hours_into(self, hours: FloatArray) -> FloatArray:
         """Return how far into its occurrence each moment is, NaN where it does not go on. [h]"""
-        since = np.asarray(hours, dtype=np.float64) - self.start_h
-        if self.every_h is not None:
-            since = np.mod(since, self.every_h)
+        since = self.hours_since_start(hours)
         return np.where((since >= 0.0) & (since < self.lasts_h), since, np.nan)
 
     def is_on(self, hours: FloatArray) -> BoolArray:
@@ -61,10 +66,10 @@ class _Timed(_Part):
         return np.asarray(np.diff(self._hours_on(edges)) / np.diff(edges))
 
     def _hours_on(self, hours: FloatArray) -> FloatArray:
-        """Return for how many hours it has gone on since its first start, or before it if negative."""
-        since = hours - self.start_h
+        """Return for how many hours it has gone on since its first start."""
+        since = np.maximum(hours - self.start_h, 0.0)
         if self.every_h is None:
-            return np.clip(since, 0.0, self.lasts_h)
+            return np.minimum(since, self.lasts_h)
         turns, into = np.divmod(since, self.every_h)
         return np.asarray(turns * self.lasts_h + np.minimum(into, self.lasts_h))
 

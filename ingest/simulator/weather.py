@@ -107,10 +107,7 @@ class Weather:
         hours = np.asarray(hours, dtype=np.float64)
         part = np.full_like(hours, FAIR_WEATHER_RIVER)
         for rain in self.rains:
-            since = hours - rain.start_h
-            if rain.every_h is not None:
-                since = np.mod(since, rain.every_h)
-            lagged = np.maximum(since, 0.0) / RIVER_LAG_H
+            lagged = np.maximum(rain.hours_since_start(hours), 0.0) / RIVER_LAG_H
             part += RIVER_PER_MM * rain.depth_mm * lagged * np.exp(1.0 - lagged)
         return np.asarray(np.minimum(part, 0.9))
 

@@ -19,10 +19,11 @@ def test_once_it_goes_on_from_start_to_before_the_end():
     assert event.is_on(np.array([0.9, 1.0, 2.9, 3.0])).tolist() == [False, True, True, False]
 
 
-def test_what_comes_again_comes_in_both_directions():
+def test_what_comes_again_comes_after_its_first_start():
     event = valve(start_h=1.0, lasts_h=2.0, every_h=24.0)
-    assert event.is_on(np.array([-23.0, -21.0, 1.0, 26.5])).tolist() == [True, False, True, True]
-    assert event.hours_into(np.array([-22.5]))[0] == pytest.approx(0.5)
+    assert event.is_on(np.array([-23.0, 1.0, 3.0, 26.5, 241.0])).tolist() == [False, True, False, True, True]
+    assert event.hours_into(np.array([25.5]))[0] == pytest.approx(0.5)
+    assert event.hours_since_start(np.array([-3.0, 30.0])).tolist() == [-4.0, 5.0]
 
 
 @settings(derandomize=True, deadline=None)

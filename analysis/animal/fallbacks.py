@@ -44,6 +44,7 @@ RULES: Mapping[str, str] = MappingProxyType(
         "internal at isosmotic": "no isosmotic point: the body fluid given with the slope stands for it",
         "lethal temperature": "no lethal temperature: as far outside the tolerable limit as that lies outside the optimum, from 2 to 5 K",
         "tolerable temperature": "no tolerable temperature: midway between optimum and lethal temperature",
+        "younger temperature": "no optimal temperature: that of the nearest younger stage of the same species",
         "harmless bound": "a published transfer without loss bounds the lethal jump from below",
     }
 )  # fmt: skip
@@ -280,6 +281,9 @@ def _jump(stage: Stage, side: _Side, sides: Mapping[str, _Side]) -> dict[str, Fi
         found[f"jump_{side.side}_to"] = dataclasses.replace(
             found[f"jump_{side.side}"], value=osmolality_from_ppt(level.value)
         )
+        alive = stage.figures.get(f"{test}_{side.side}_alive")
+        if alive is not None:
+            found[f"jump_{side.side}_alive"] = alive
         found[f"jump_{side.side}_h"] = _hours(stage, f"direct_{side.side}_h", f"lethal_{side.side}_h")
     return found
 
@@ -291,18 +295,22 @@ def _settling(stage: Stage) -> dict[str, Figure]:
     usual = by_kind if settle is None else Figure(
         settle.value / 3.0, "h", settle.sources, Certainty.DERIVED, f"settling time: {RULES['settling time']}"
     )  # fmt: skip
-    middle = [stage.value(key) for key in ("optimal_low_degC", "optimal_high_degC")]
-    known = [value for value in middle if math.isfinite(value)]
+    known = [figure.value for side in ("low", "high") if (figure := _optimal_degC(stage, side)) is not None]
     degC = stage.figures.get("settle_degC")
-    found = {key: stage.figures.get(f"{key}_h", usual) for key in ("tau_up", "tau_down")}
+    # A conformer's body fluid settles within hours; what it can stand moves over days.
+    is_conformer = stage.group in CONFORMER_GROUPS
+    limits = by_kind if is_conformer else usual
+    found = {key: stage.figures.get(f"{key}_h", limits) for key in ("tau_up", "tau_down")}
     if degC is not None:
         found["tau_degC"] = degC
     elif known:
         found["tau_degC"] = Figure(
             sum(known) / len(known), "degC", (), Certainty.ASSUMED, "middle of the optimal temperature"
         )
-    is_conformer = stage.group in CONFORMER_GROUPS or stage.value("regulation_slope") >= 0.9
-    found["tau_internal"] = usual if is_conformer else Figure(
+    follows = is_conformer or stage.value("regulation_slope") >= 0.9
+    by_kind_internal = dataclasses.replace(by_kind, value=group.tau_internal_h)
+    own_internal = by_kind_internal if settle is None else usual
+    found["tau_internal"] = own_internal if follows else Figure(
         min(usual.value, group.tau_internal_h), "h", (), Certainty.ASSUMED, "plasma peaks 6-12 h after a step in fish; shrimps alike"
     )  # fmt: skip
     return found
@@ -331,14 +339,25 @@ def _body_fluid(stage: Stage) -> dict[str, Figure]:
     return {"isosmotic": iso, "slope": slope}
 
 
+def _optimal_degC(stage: Stage, side: str) -> Figure | None:
+    own = stage.figures.get(f"optimal_{side}_degC")
+    if own is not None:
+        return own
+    for young in stage.younger:
+        figure = young.figures.get(f"optimal_{side}_degC")
+        if figure is not None:
+            return _assumed(figure.value, "degC", "younger temperature", figure.sources)
+    return None
+
+
 def _temperature(stage: Stage) -> dict[str, Figure]:
     found: dict[str, Figure] = {}
     for side, out in (("low", -1.0), ("high", 1.0)):
-        optimal, tolerable, lethal = (
-            stage.figures.get(f"{limit}_{side}_degC") for limit in ("optimal", "tolerable", "lethal")
-        )
+        tolerable, lethal = (stage.figures.get(f"{limit}_{side}_degC") for limit in ("tolerable", "lethal"))
+        optimal = _optimal_degC(stage, side)
         if optimal is None:
             continue
+        found[f"optimal_{side}_degC"] = optimal
         if tolerable is None and lethal is not None:
             tolerable = _assumed((optimal.value + lethal.value) / 2.0, "degC", "tolerable temperature", lethal.sources)
         if tolerable is None:
@@ -348,7 +367,7 @@ def _temperature(stage: Stage) -> dict[str, Figure]:
         if lethal is None or (lethal.value - tolerable.value) * out < 0.5:
             beyond = min(5.0, max(2.0, abs(tolerable.value - optimal.value)))
             lethal = _assumed(tolerable.value + out * beyond, "degC", "lethal temperature", tolerable.sources)
-        found |= {f"optimal_{side}_degC": optimal, f"tolerable_{side}_degC": tolerable, f"lethal_{side}_degC": lethal}
+        found |= {f"tolerable_{side}_degC": tolerable, f"lethal_{side}_degC": lethal}
     return found
 
 
@@ -370,31 +389,8 @@ def _supports(figures: Mapping[str, Figure]) -> Supports:
 
 
 @lru_cache(maxsize=512)
-def _resolved_once(holder: _Holder) -> Resolved:
-    return _resolve(holder.stage)
-
-
-class _Holder:
-    """Lets a stage, which holds mappings, be a key of the cache; equal by the identity of the stage."""
-
-    __slots__ = ("stage",)
-
-    def __init__(self, stage: Stage) -> None:
-        self.stage = stage
-
-    def __eq__(self, other: object) -> bool:
-        return isinstance(other, _Holder) and other.stage is self.stage
-
-    def __hash__(self) -> int:
-        return id(self.stage)
-
-
 def resolved(stage: Stage) -> Resolved:
     """Return *stage* ready for the model, gaps filled by the rules of `RULES`, each marked assumed."""
-    return _resolved_once(_Holder(stage))
-
-
-def _resolve(stage: Stage) -> Resolved:
     sides = _resolved_sides(stage)
     figures: dict[str, Figure] = {}
     for name, side in sides.items():
@@ -404,6 +400,8 @@ def _resolve(stage: Stage) -> Resolved:
         if "level" in side.found:
             length = f"gradual_{name}_h" if side.own("gradual") is not None else f"lethal_{name}_h"
             figures[f"level_{name}_h"] = _hours(stage, length, f"direct_{name}_h")
+            if side.own("gradual") is None and (alive := stage.figures.get(f"lethal_{name}_alive")) is not None:
+                figures[f"level_{name}_alive"] = alive
         incipient = side.own("incipient")
         if incipient is not None:
             figures[f"incipient_{name}"] = _in_osmolality(incipient)

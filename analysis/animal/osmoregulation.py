@@ -152,12 +152,23 @@ def _row(stage: Resolved, model: Constants) -> dict[str, float]:
             fraction = min(0.95, max(fraction, harmless / jump))
         row[f"harmless_{side}"] = jump * fraction
         if math.isnan(stage.value(f"incipient_{side}")):
-            row[f"incipient_{side}"] = row[f"tolerable_{side}"]
+            tolerable, level = row[f"tolerable_{side}"], row[f"level_{side}"]
+            toward = model.incipient_fraction * (level - tolerable) if math.isfinite(level) else 0.0
+            row[f"incipient_{side}"] = tolerable + toward
         hours = stage.figures.get(f"level_{side}_h")
         is_timed = hours is not None and hours.certainty is not Certainty.ASSUMED
         row[f"range_cap_{side}"] = 0.6 if is_timed else 1.0
+        for kind in ("level", "jump"):
+            row[f"{kind}_{side}_h"] *= hours_to_median(stage.value(f"{kind}_{side}_alive"), model.steepness)
     row["decade"] = model.decade_timer_mOsm_kg if stage.is_timer else model.decade_mOsm_kg
     return row
+
+
+def hours_to_median(fraction_alive: float, steepness: float) -> float:
+    """Return by how much the median comes later than a moment at which *fraction_alive* lived; 1 for NaN or 0.5."""
+    if math.isnan(fraction_alive):
+        return 1.0
+    return float((fraction_alive / (1.0 - fraction_alive)) ** (1.0 / steepness))
 
 
 @dataclass(frozen=True, slots=True)
@@ -307,7 +318,13 @@ def limits_at(figures: StageArrays, temperature_degC: FloatArray, model: Constan
         sides[f"tolerable_{side}"] = moved
         # The level keeps at least a quarter of its distance, so that the strain stays continuous and finite.
         sides[f"level_{side}"] = level + sign * np.minimum(shift, inner + 0.75 * np.abs(tolerable - level))
-        sides[f"incipient_{side}"] = np.where(incipient == tolerable, moved, incipient + sign * inner)
+        share = np.divide(
+            incipient - tolerable,
+            level - tolerable,
+            out=np.zeros_like(moved),
+            where=np.isfinite(level) & (level != tolerable),
+        )
+        sides[f"incipient_{side}"] = moved + share * np.where(share == 0.0, 0.0, sides[f"level_{side}"] - moved)
         narrower = np.maximum(0.25 * jump, jump - shift)
         sides[f"jump_{side}"] = narrower
         sides[f"harmless_{side}"] = harmless * np.divide(narrower, jump, out=np.ones_like(narrower), where=jump > 0.0)

@@ -97,9 +97,9 @@ class AgeGate:
     to_d: float
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, slots=True, eq=False, weakref_slot=True)
 class Stage:
-    """One life stage of one species, as published.
+    """One life stage of one species, as published. Equal only to itself, so that what follows from it can be kept.
 
     Parameters
     ----------

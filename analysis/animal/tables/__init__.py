@@ -22,6 +22,7 @@ UNITS_BY_SUFFIX = {
     "_degC": "degC",
     "_h": "h",
     "_slope": "1",
+    "_alive": "1",
 }
 """The unit that the end of a key promises."""
 
@@ -45,7 +46,7 @@ KNOWN_KEYS = frozenset(
     (
         *_SIDES,
         *(f"{test}_{side}_{end}" for test in ("lethal", "direct", "harmless") for side in ("low", "high")
-          for end in ("from_ppt", "h", "degC")),
+          for end in ("from_ppt", "h", "degC", "alive")),
         *(f"gradual_{side}_h" for side in ("low", "high")),
         *(f"{limit}_{side}_degC" for limit in ("lethal", "tolerable", "optimal") for side in ("low", "high")),
         "isosmotic_mOsm_kg", "isosmotic_ppt", "internal_mOsm_kg", "regulation_slope",

@@ -51,10 +51,11 @@ class Line:
 
 @dataclass(frozen=True, slots=True)
 class Limit:
-    """A limit of the species, dotted, with its source written on it."""
+    """A limit of the species, dotted, with its source written on it; `short` where there is no room for the source."""
 
     value: float
     text: str
+    short: str = ""
     is_lower: bool = True
 
 
@@ -260,23 +261,29 @@ def _limits(frame: _Frame, panel: Panel, scale: _Scale) -> str:
     out = ""
     for limit in panel.limits:
         if not scale.low <= limit.value <= scale.high:
-            out += _far_limit(limit, scale)
+            out += _far_limit(frame, limit, scale)
             continue
         y = float(scale.y(limit.value))
         out += (
             f'<path d="M{LEFT} {y:.1f}H{frame.right:.1f}" stroke="var(--blood)" stroke-width="1.3"'
             ' stroke-dasharray="1.5 4" stroke-linecap="round"/>'
-            f'<text x="{LEFT + 7}" y="{y + (13 if limit.is_lower else -5):.1f}" style="fill:var(--blood)">{html.escape(limit.text)}</text>'
+            f'<text x="{LEFT + 7}" y="{y + (13 if limit.is_lower else -5):.1f}" style="fill:var(--blood)">'
+            f"{_limit_words(frame, limit)}</text>"
         )
     return out
 
 
-def _far_limit(limit: Limit, scale: _Scale) -> str:
+def _limit_words(frame: _Frame, limit: Limit) -> str:
+    return html.escape(limit.short if frame.width < NARROW and limit.short else limit.text)
+
+
+def _far_limit(frame: _Frame, limit: Limit, scale: _Scale) -> str:
     """Return a word on a limit that lies beyond the axis, at the edge behind which it lies."""
     is_above = limit.value > scale.high
     y = scale.top + 13 if is_above else scale.bottom - 7
     arrow = "↑" if is_above else "↓"
-    return f'<text x="{LEFT + 7}" y="{y:.1f}" style="fill:var(--blood)">{arrow} {html.escape(limit.text)}</text>'
+    place = f'x="{frame.right - 7:.1f}" y="{y:.1f}" text-anchor="end"'
+    return f'<text {place} style="fill:var(--blood)">{arrow} {_limit_words(frame, limit)}</text>'
 
 
 def _curve(frame: _Frame, panel: Panel, scale: _Scale) -> str:

@@ -6,6 +6,7 @@ import html
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 from itertools import pairwise
 
 import numpy as np
@@ -101,6 +102,7 @@ class _Axis:
         return range(0, self.top + 1, step)
 
 
+@lru_cache(maxsize=1024)
 def osmotic_balance(balance: Balance, *, label: str, width: int = 288) -> str:
     """Return the small balance of a card.
 
@@ -121,6 +123,7 @@ def osmotic_balance(balance: Balance, *, label: str, width: int = 288) -> str:
     )
 
 
+@lru_cache(maxsize=1024)
 def osmotic_balance_line(balance: Balance, *, label: str, width: int = 130) -> str:
     """Return the balance of a tile: bands, drop and diamond on one fine line, no figures."""
     axis, y = _Axis(balance, width, 5), 7.0

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import argparse
 import sys
+import threading
 from pathlib import Path
 from typing import Any
 
@@ -60,6 +61,8 @@ def main(arguments: list[str] | None = None) -> int:
     section = access.site.board
     host, port = given.host or section.host, given.port if given.port is not None else section.port
     print(f"The board: http://{host}:{port}", flush=True)  # noqa: T201
+    # The first look reads the species tables and takes seconds; it is over before the first visitor has come.
+    threading.Thread(target=access.snapshot, name="first look", daemon=True).start()
     sys.argv = [str(SCRIPT)]
     board(section.allowed_hosts).run(config=options(host=host, port=port))
     return 0

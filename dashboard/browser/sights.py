@@ -145,9 +145,9 @@ class AlarmSight:
         return f"{self.subject} {self.condition} {self.occurrence}"
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, slots=True, eq=False)
 class DayLine:
-    """A tank's last day in quarter hours, for the small line on its card."""
+    """A tank's last day in quarter hours, for the small line on its card. Equal only to itself: drawings are kept by it."""
 
     times_s: FloatArray
     values: FloatArray
@@ -189,12 +189,12 @@ class TankSight:
 
     @property
     def balance(self) -> Balance:
-        """Return its osmotic balance."""
+        """Return its osmotic balance, in whole mOsm/kg: more is not true, and equal pictures are drawn once."""
         animals = self.animals
         water = self.shown.osmolality_mOsm_kg if self.shown is not None and self.shown.is_believable else math.nan
         return Balance(
-            water=water if math.isfinite(water) else None,
-            blood=None if animals is None else animals.blood_mOsm_kg,
+            water=float(round(water)) if math.isfinite(water) else None,
+            blood=None if animals is None or animals.blood_mOsm_kg is None else float(round(animals.blood_mOsm_kg)),
             tolerated=None if animals is None else animals.tolerated_mOsm_kg,
             optimal=None if animals is None else animals.optimal_mOsm_kg,
         )

@@ -17,7 +17,7 @@ if TYPE_CHECKING:
     from collections.abc import Sequence
 
     from analysis.arrays import FloatArray, IntArray
-    from dashboard.browser.sights import SensorSight, Snapshot, TankSight
+    from dashboard.browser.sights import SensorSight, Snapshot, SpeciesLimit, TankSight
     from dashboard.browser.visit import Visit
     from ingest.store.ledger import Event
     from ingest.store.queries import History, StressHistory
@@ -164,19 +164,20 @@ def _salinity(
         least_span=LEAST_SPANS["salinity"],
         band=band.limits,
         band_text=text,
-        limits=tuple(
-            Limit(
-                x.value,
-                language.text(
-                    "tolerated_from" if x.is_lower else "tolerated_to",
-                    value=numbers.number(x.value, 1, language=language).removesuffix(f"{language.DECIMAL_MARK}0"),
-                    mark=x.mark,
-                ),
-                is_lower=x.is_lower,
-            )
-            for x in limits
-        ),
+        limits=tuple(_limit(x, visit) for x in limits),
         last_text=_last(math.nan if shown is None else shown.salinity, 1, visit, stretch),
+    )
+
+
+def _limit(limit: SpeciesLimit, visit: Visit) -> Limit:
+    language = visit.language
+    key = "tolerated_from" if limit.is_lower else "tolerated_to"
+    value = numbers.number(limit.value, 1, language=language).removesuffix(f"{language.DECIMAL_MARK}0")
+    return Limit(
+        limit.value,
+        language.text(key, value=value, mark=limit.mark),
+        language.text(f"{key}_short", value=value),
+        is_lower=limit.is_lower,
     )
 
 

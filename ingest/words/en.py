@@ -471,6 +471,8 @@ BOARD: Final = {
     "set_point": "set point {point}",
     "tolerated_from": "tolerated from {value} ({mark})",
     "tolerated_to": "tolerated to {value} ({mark})",
+    "tolerated_from_short": "tolerated from {value}",
+    "tolerated_to_short": "tolerated to {value}",
     "blood": "body fluid",
     "water_value": "water {value}",
     "blood_value": "body fluid {value}",

@@ -3,16 +3,18 @@
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 from html import escape
 
 from dashboard.browser import glyphs
-from dashboard.browser.sights import Snapshot, TankSight
+from dashboard.browser.sights import Band, DayLine, Snapshot, TankSight
 from dashboard.browser.views.say import say, say_unwatched
 from dashboard.browser.visit import Visit, age, link
 from ingest.words import numbers
 from ingest.words.alarms import stress_band
 
 DAY_S = 86_400.0
+EDGE_STEP_S = 300.0
 
 
 def card(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
@@ -32,7 +34,7 @@ def tile(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
     inside = (
         f'<span class="top"><span class="name">{escape(tank.name)}</span>{_age(tank, snapshot, visit)}</span>'
         f'<span class="line"><span class="big{_doubt(tank, snapshot)}">{salinity_text(tank, visit)}</span>'
-        f'<span class="small">{escape(_set_words(tank, visit))}</span><span class="small">{escape(temperature)}</span></span>'
+        f'<span class="small">{escape(_set_words(tank, visit))}<br>{escape(temperature)}</span></span>'
         f"{_day(tank, snapshot, visit, height=24)}{_balance(tank, visit, is_line=True)}"
     )
     return (
@@ -110,17 +112,22 @@ def _reading(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
 
 
 def _day(tank: TankSight, snapshot: Snapshot, visit: Visit, *, height: int = 46) -> str:
-    now_s = snapshot.now_us / 1e6
-    half = tank.salinity.half_width
-    # The edges move in steps of five minutes, so that a tile whose values stand still is not sent again.
-    to_s = (now_s // 300 + 1) * 300
+    # The right edge moves in steps of five minutes, so that a picture that stands still is neither drawn nor sent again.
+    to_s = (snapshot.now_us / 1e6 // EDGE_STEP_S + 1) * EDGE_STEP_S
+    label = visit.language.text("day_line", tank=tank.name)
+    return _drawn_day(tank.day, tank.salinity, to_s, label, height)
+
+
+@lru_cache(maxsize=1024)
+def _drawn_day(day: DayLine, band: Band, to_s: float, label: str, height: int) -> str:
+    half = band.half_width
     return glyphs.day_line(
-        tank.day.times_s,
-        tank.day.values,
+        day.times_s,
+        day.values,
         from_s=to_s - DAY_S,
         to_s=to_s,
-        label=visit.language.text("day_line", tank=tank.name),
-        band=tank.salinity.limits,
+        label=label,
+        band=band.limits,
         least_span=2.0 if math.isnan(half) else max(0.5, 2.2 * half),
         height=height,
     )

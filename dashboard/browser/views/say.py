@@ -67,7 +67,7 @@ def going(alarm: AlarmSight, snapshot: Snapshot, visit: Visit, *, is_main: bool 
         return ""
     failed = _became(order, snapshot, visit) if order is not None else ""
     return (
-        f'<button class="verb{" fill" if is_main else ""}" data-k="{escape(alarm.key)}" data-once data-do="going"'
+        f'<button class="verb{" fill" if is_main else ""}" data-k="go {escape(alarm.key)}" data-once data-do="going"'
         f' data-subject="{escape(alarm.subject)}" data-condition="{escape(alarm.condition)}"'
         f' data-occurrence="{alarm.occurrence}">{visit.text("going")}</button>{failed}'
     )

@@ -86,7 +86,7 @@ def _refused(snapshot: Snapshot, visit: Visit, refused: list[Refused], counters:
     head = "".join(f"<th>{visit.text(key)}</th>" for key in ("when", "topic", "why_refused", "as_sent"))
     rows = "".join(_refusal(item, snapshot, visit) for item in refused)
     return (
-        f'<section data-k="refused"><h2>{visit.text("refused")} <small>{small}</small></h2><div class="scroll"><table class="stack">'
+        f'<section data-k="refused"><h2>{visit.text("refused")} <small>{small}</small></h2><div class="scroll"><table class="stack one">'
         f"<thead><tr>{head}</tr></thead><tbody>{rows}</tbody></table></div></section>"
     )
 

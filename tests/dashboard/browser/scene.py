@@ -12,10 +12,11 @@ from pathlib import Path
 import numpy as np
 
 from analysis.alarm.kinds import ConditionKind
+from analysis.animal.stress import Band, Driver
 from analysis.water.properties import Seawater
 from ingest.store import registry
 from ingest.store.alarms import AlarmRow
-from ingest.store.block import BlockCommit, Occurrence, StressRow
+from ingest.store.block import BlockCommit, Occurrence, StressRow, TankState
 from ingest.store.ledger import Event
 from ingest.store.readings import ReadingRows
 from ingest.store.refused import Refusal
@@ -309,6 +310,15 @@ def _trouble(scene: Scene) -> None:
     )
 
 
+def _animal_state(row: StressRow) -> TankState:
+    """Return the newest row of the record as the chain's own state of the tank."""
+    latest = {name: getattr(row, name) for name in ("stress", "range_strain", "change_strain", "exposure_strain")}
+    latest |= {name: getattr(row, name) for name in ("thermal_strain", "internal_mOsm_kg", "gap_mOsm_kg")}
+    latest |= {"driver": int(Driver.CHANGE), "band": int(Band.STRAINED)}
+    state = {"updated_at_us": row.measured_at, "acclimated": row.acclimated_mOsm_kg}
+    return TankState(row.tank, row.measured_at, {"animals": {"cohort": row.cohort, "state": state, "latest": latest}})
+
+
 def _felt(scene: Scene) -> None:
     now_us = scene.now_us
     rows = []
@@ -331,7 +341,7 @@ def _felt(scene: Scene) -> None:
                 140 - 90 * fallen,
             )
         )
-    scene.commit(BlockCommit(stress=rows))
+    scene.commit(BlockCommit(stress=rows, tank_states=[_animal_state(rows[-1])]))
 
 
 def many_waters(count: int) -> tuple[Water, ...]:

@@ -23,6 +23,8 @@ if TYPE_CHECKING:
 
     from ingest.site.sensors import Sensor
 
+_FAR_S = 1e15
+"""Beyond any horizon, and still a whole number of microseconds."""
 _MISSING, _TIME_RECEIVED = int(Flag.MISSING), int(Flag.TIME_RECEIVED)
 
 
@@ -103,7 +105,7 @@ def senml_route(sensors: Sequence[Sensor], *, indices: Sequence[int], window: Wi
             raise retained_without_time(only)
         got = _Yield()
         for record, place in ours:
-            measured_at_us = round(record.time_s * MICROSECONDS_PER_SECOND)
+            measured_at_us = round(min(max(record.time_s, -_FAR_S), _FAR_S) * MICROSECONDS_PER_SECOND)
             if window.holds(measured_at_us, received_at_us=received_at_us):
                 _take(record, place, got, measured_at_us, received_at_us)
             else:

@@ -271,7 +271,8 @@ def _presence(period: Period, now_us: int, interval_s: float) -> list[Reason]:
     times = period.measured_at_us
     age_us = now_us - int(times[-1]) if times.shape[0] else math.inf
     if age_us > max(3.0 * interval_s * MICROSECONDS_PER_SECOND, RECENT_US):
-        return [Reason(Finding.SILENT, Belief.DO_NOT_USE, {"silent_h": age_us / HOUR_US})]
+        figures = {"silent_h": age_us / HOUR_US} if times.shape[0] else {}
+        return [Reason(Finding.SILENT, Belief.DO_NOT_USE, figures)]
     recent = period.salinity[period.since(now_us - RECENT_US)]
     absent = float(np.isnan(recent).mean()) if recent.shape[0] else 0.0
     if absent > 0.5:

@@ -149,6 +149,8 @@ RELATIONS: dict[str, Callable[..., object]] = {
         m, temperature_degC=t
     ),
     "pitzer_beta0": lambda *, t: sodium_chloride.pitzer_parameters(t).beta0,
+    "pitzer_beta1": lambda *, t: sodium_chloride.pitzer_parameters(t).beta1,
+    "pitzer_c_phi": lambda *, t: sodium_chloride.pitzer_parameters(t).c_phi,
     "debye_huckel": lambda *, t: sodium_chloride.pitzer_parameters(t).debye_huckel,
     "osmolality_nacl": lambda *, g_kg_water: sodium_chloride.osmolality_from_molality(
         g_kg_water / sodium_chloride.MOLAR_MASS_G_MOL

@@ -253,7 +253,9 @@ def flow_through_time_min(
     turnovers = 0.0
     for _ in range(_ITERATIONS):  # the tank's temperature on arrival decides its density there
         remaining = (_salt_g_L(wanted) - inflow) / (start - inflow)
-        turnovers = -math.log(min(1.0, max(remaining, np.finfo(float).tiny)))
+        before, turnovers = turnovers, -math.log(min(1.0, max(remaining, np.finfo(float).tiny)))
+        if abs(turnovers - before) <= 1e-14 * turnovers:
+            break
         heat = _relaxed(_heat_L(body), towards=_heat_L(source), turnovers=np.asarray(turnovers))
         wanted = _held(_body_with_heat_L(wanted, heat_L=float(heat)), held_temperature_degC)
     return turnovers * body.volume_L / flow_L_min
@@ -295,7 +297,9 @@ def flow_through(
         absolute = 1000.0 * salt / density
         temperature = np.asarray(gsw.t_from_CT(absolute, 1000.0 * heat / density, 0.0))
         salinity = kind.salinity_from_absolute_salinity(absolute)
-        density = kind.density_kg_m3(salinity=salinity, temperature_degC=temperature)
+        before, density = density, kind.density_kg_m3(salinity=salinity, temperature_degC=temperature)
+        if np.allclose(before, density, rtol=1e-14, atol=0.0, equal_nan=True):
+            break
     return np.asarray(kind.salinity_from_absolute_salinity(absolute)), temperature
 
 

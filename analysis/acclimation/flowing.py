@@ -195,7 +195,7 @@ def _lasts(problem: Problem, place: Place, flows: FloatArray) -> BoolArray:
         reach = limit.window_min + problem.task.allowances.late_min
         alone = replace(place.windows, limits=(limit,), marks=()).marked(place.tank, minute=0.0, duration_min=0.0)
         after = flowed(place.tank, problem, flow_L_min=flows, minutes=np.full(len(flows), reach))
-        good &= alone.allows(after, minute=0.0, duration_min=np.zeros(len(flows)))
+        good &= alone.allows(after, minute=0.0)
     return good
 
 
@@ -208,7 +208,7 @@ def _keeps(
         return good
     for passed in np.linspace(SAMPLE_MIN, length, 4):
         after = flowed(place.tank, problem, flow_L_min=flows, minutes=np.full(len(flows), passed))
-        good &= marked.allows(after, minute=minute + float(passed), duration_min=np.zeros(len(flows)))
+        good &= marked.allows(after, minute=minute + float(passed))
     return good
 
 
@@ -256,7 +256,7 @@ def _obstacle(problem: Problem, place: Place) -> str:
         reach = limit.window_min + problem.task.allowances.late_min
         alone = replace(place.windows, limits=(limit,), marks=()).marked(place.tank, minute=0.0, duration_min=0.0)
         after = flowed(place.tank, problem, flow_L_min=flows, minutes=np.full(len(flows), reach))
-        if not alone.allows(after, minute=0.0, duration_min=np.zeros(len(flows))).any():
+        if not alone.allows(after, minute=0.0).any():
             words = f"{limit.limit.name} ({limit.limit.value}; {limit.limit.source})"
             return f"even a flow of {unit:g} L/min breaks the limit {words}"
     return "no flow of these sources brings the water nearer to the target"

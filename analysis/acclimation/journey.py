@@ -25,6 +25,8 @@ if TYPE_CHECKING:
 MICROSECONDS_PER_MINUTE: Final = 60 * MICROSECONDS_PER_SECOND
 KNOWN_WATER: Final = GapRule(hold_s=1e12, unknown_after_s=1e12)
 """Between two rows of a plan the water is known: no row is missing."""
+SETTLING_H: Final = (1.0, 3.0, 6.0, 12.0, 24.0, 48.0)
+"""Hours after arrival in which the shock of a fast journey still tells. [h]"""
 TOLERABLE_STRAIN: Final = 0.5
 STANDING_HOURS: Final = 96.0
 """How long the destination is looked at: the usual length of a tolerance test. [h]"""
@@ -50,8 +52,10 @@ class JourneyStress:
         The largest strain of each row, in words.
     state : CohortState
         The animals after the last row.
-    step_row : ndarray of int, shape (moves,)
+    step_row : tuple of int
         The row at the end of each move.
+    worst : float
+        The highest stress of the journey, also while they settle after it; NaN where not known. [0-100]
     """
 
     minutes: FloatArray
@@ -63,12 +67,7 @@ class JourneyStress:
     driver: tuple[str, ...]
     state: CohortState
     step_row: tuple[int, ...]
-
-    @property
-    def worst(self) -> float:
-        """The highest stress of the journey; NaN where the model cannot tell any. [0-100]"""
-        known = self.journey[np.isfinite(self.journey)]
-        return float(known.max()) if known.size else float("nan")
+    worst: float
 
 
 def water_kind(name: str) -> WaterKind:
@@ -111,6 +110,7 @@ def stress_of_journey(
         temperature_degC=np.array(temperature),
         step_row=tuple(step_row),
         state=state,
+        settling_h=SETTLING_H,
     )
 
 
@@ -123,39 +123,63 @@ def along(
     temperature_degC: FloatArray,
     step_row: tuple[int, ...] = (),
     state: CohortState | None = None,
+    settling_h: tuple[float, ...] = (),
 ) -> JourneyStress:
-    """Return the stress along any run of water, given row by row; each row's water lasts until the next."""
+    """Return the stress along any run of water, given row by row; each row's water lasts until the next.
+
+    Parameters
+    ----------
+    task, stage
+        The journey and the animals.
+    minutes, salinity, temperature_degC : ndarray, shape (rows,)
+        [min], of the task's kind, [degC]
+    step_row : tuple of int
+        Rows at the end of the moves.
+    state : CohortState, optional
+        The animals before the first row; default: settled in the water they are used to.
+    settling_h : tuple of float
+        Hours after the last row at which the shock of the journey is still looked at. [h]
+    """
     kind = water_kind(task.water_kind)
     osmolality = kind.osmolality_from_salinity(salinity)
     figures = StageArrays.from_stages([stage])
     begin = home_state(task) if state is None else replace(state, updated_at_us=np.zeros(1, dtype=np.int64))
     times = np.rint((minutes + 1.0) * MICROSECONDS_PER_MINUTE).astype(np.int64)
+    settled = times[-1] + np.rint(60.0 * np.array(settling_h) * MICROSECONDS_PER_MINUTE).astype(np.int64)
 
-    def told_by(figures: StageArrays) -> tuple[CohortState, Stress]:
+    def told_by(figures: StageArrays, *, settles: bool = False) -> tuple[CohortState, Stress]:
+        extra = len(settling_h) if settles else 0
         return advance_series(
             figures,
             begin,
-            times_us=times,
-            osmolality_mOsm_kg=osmolality,
-            temperature_degC=temperature_degC,
+            times_us=np.append(times, settled[:extra]),
+            osmolality_mOsm_kg=np.append(osmolality, np.repeat(osmolality[-1:], extra)),
+            temperature_degC=np.append(temperature_degC, np.repeat(temperature_degC[-1:], extra)),
             gap=KNOWN_WATER,
         )
 
     after, told = told_by(figures)
-    shock = told_by(_without_level(figures))[1].exposure_strain
-    osmotic = np.fmax(told.change_strain, shock)
-    warmer = np.maximum(np.nan_to_num(told.thermal_strain) - np.nan_to_num(told.thermal_strain[0]), 0.0)
+    journey = _journey_part(told_by(_without_level(figures), settles=True)[1])
+    known = journey[np.isfinite(journey)]
     return JourneyStress(
         minutes=minutes,
         salinity=salinity,
         temperature_degC=temperature_degC,
         osmolality_mOsm_kg=osmolality,
         stress=told.stress,
-        journey=100.0 * (1.0 - (1.0 - osmotic) * (1.0 - warmer)),
+        journey=journey[: minutes.size],
         driver=tuple(DRIVER_WORDS[Driver(int(code))] for code in told.driver),
         state=after,
         step_row=step_row,
+        worst=float(known.max()) if known.size else float("nan"),
     )
+
+
+def _journey_part(shock: Stress) -> FloatArray:
+    """Return the stress that the journey makes, from a run without exposure by the level of the water."""
+    osmotic = np.fmax(shock.change_strain, shock.exposure_strain)
+    warmer = np.maximum(np.nan_to_num(shock.thermal_strain) - np.nan_to_num(shock.thermal_strain[0]), 0.0)
+    return np.asarray(100.0 * (1.0 - (1.0 - osmotic) * (1.0 - warmer)))
 
 
 def _without_level(figures: StageArrays) -> StageArrays:

@@ -176,7 +176,7 @@ def best_move(problem: Problem, place: Place, pace: Pace, *, minute: float) -> M
     fits = (trial.add_L <= highest_litres(problem, place.tank, place.used_L) + 1e-9).all(axis=1)
     after = _after(problem, place.tank, trial)
     durations = step_durations(problem, trial)
-    allowed = marked.allows(after, minute=minute, duration_min=durations) & (trial_units > 0) & fits
+    allowed = marked.allows(after, minute=minute) & (trial_units > 0) & fits
     allowed &= _lands(problem, place.tank, after)
     least_gain = 0.5 * pace.least_room * problem.window_h if problem.has_target_temperature else SMALL_GAIN_H
     if is_short:
@@ -305,7 +305,7 @@ def _most_allowed(
         probes = np.clip(probes, np.minimum(low + 1, high - 1)[:, np.newaxis], (high - 1)[:, np.newaxis])
         trial = amounts_of(problem, np.repeat(blends, count, axis=0), probes.ravel(), unit)
         after = _after(problem, place.tank, trial)
-        good = marked.allows(after, minute=minute, duration_min=step_durations(problem, trial))
+        good = marked.allows(after, minute=minute)
         good &= ~_is_past(problem, place.tank, after)
         good = good.reshape(probes.shape) | (probes <= low[:, np.newaxis])
         kept = np.logical_and.accumulate(good, axis=1)
@@ -363,10 +363,10 @@ def obstacle_at(problem: Problem, place: Place, pace: Pace) -> str:
     elif (highest_litres(problem, tank, place.used_L) < pace.unit).all():
         return "the sources are used up" if place.used_L.any() else "no source gives enough for one step"
     trial = amounts_of(problem, problem.blends, np.ones(len(problem.blends), dtype=np.int64), pace.unit)
-    after, durations = _after(problem, tank, trial), step_durations(problem, trial)
+    after = _after(problem, tank, trial)
     for limit in problem.rolling:
         alone = replace(place.windows, limits=(limit,), marks=()).marked(tank, minute=0.0, duration_min=0.0)
-        if not alone.allows(after, minute=0.0, duration_min=durations).any():
+        if not alone.allows(after, minute=0.0).any():
             words = f"{limit.limit.name} ({limit.limit.value}; {limit.limit.source})"
             return f"even one step of {pace.unit:g} breaks the limit {words}"
     return "no step brings the water nearer to the target"

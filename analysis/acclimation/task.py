@@ -139,7 +139,7 @@ class Grid:
     """
 
     litres: float = NAN
-    clock_min: float = 10.0
+    clock_min: float = 5.0
     longest_step_min: float = 30.0
 
     def __post_init__(self) -> None:

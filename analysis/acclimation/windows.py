@@ -43,8 +43,8 @@ class Mark:
 class Windows:
     """The marks that a next step is judged against.
 
-    Two moments count as within one window when an operator who is late with the first and on time with the
-    second brings them there: the window of every limit is longer by the allowed lateness.
+    Two steps count as within one window when the end of the first, done late, and the begin of the second, done
+    on time, come so near: the window of every limit is longer by the allowed lateness and the first step itself.
 
     Parameters
     ----------
@@ -89,7 +89,7 @@ class Windows:
         mark = Mark(minute, duration_min, np.array(levels), np.array(down), np.array(up))
         return replace(self, marks=(*kept, mark))
 
-    def allows(self, candidates: ScenarioTank, *, minute: float, duration_min: FloatArray) -> BoolArray:
+    def allows(self, candidates: ScenarioTank, *, minute: float) -> BoolArray:
         """Return True for candidates that keep every limit in every scenario.
 
         The tank as it is before the step must have been marked at *minute* (see `marked`).
@@ -100,8 +100,6 @@ class Windows:
             Arrays of shape (candidates, scenarios).
         minute : float
             When the step begins. [min]
-        duration_min : ndarray, shape (candidates,)
-            How long it takes. [min]
         """
         allowed = np.isfinite(candidates.water.mass_kg).all(axis=-1)
         if not self.limits or not self.marks:
@@ -109,11 +107,8 @@ class Windows:
         levels, down, up = self.efforts(candidates)
         ages = minute - np.array([mark.minute for mark in self.marks])
         durations = np.array([mark.duration_min for mark in self.marks])
-        longer = np.maximum(0.0, durations[:, np.newaxis] - duration_min)
         for number, limit in enumerate(self.limits):
-            reach = limit.window_min + self.late_min
-            counts = ages[:, np.newaxis] < reach + longer - ROUNDING
-            which = np.flatnonzero(counts.any(axis=1))
+            which = np.flatnonzero(ages < limit.window_min + self.late_min + durations - ROUNDING)
             if not which.size:
                 continue
             before = np.array([self.marks[mark].levels[number] for mark in which])[:, np.newaxis]
@@ -121,7 +116,7 @@ class Windows:
             before_up = np.array([self.marks[mark].up[number] for mark in which])[:, np.newaxis]
             effort = np.where(levels[number] < before, before_down - down[number], up[number] - before_up)
             broken = (effort > self.cap(number) * (1.0 + ROUNDING)).any(axis=-1)
-            allowed &= ~(counts[which] & broken).any(axis=0)
+            allowed &= ~broken.any(axis=0)
         return np.asarray(allowed)
 
     def room(self, *, minute: float) -> float:
@@ -134,7 +129,7 @@ class Windows:
             if limit.quantity != "salinity":
                 continue
             for mark in self.marks:
-                if minute - mark.minute < limit.window_min + self.late_min - ROUNDING:
+                if minute - mark.minute < limit.window_min + self.late_min + mark.duration_min - ROUNDING:
                     used = np.maximum(mark.down[number] - now.down[number], now.up[number] - mark.up[number])
                     room = min(room, 1.0 - float(used.max()) / self.cap(number))
         return room
@@ -142,10 +137,9 @@ class Windows:
     def next_release(self, *, after: float) -> float:
         """Return the first minute after *after* at which a mark leaves a window; infinite when none does."""
         leaving = [
-            mark.minute + limit.window_min + self.late_min + longer
+            mark.minute + limit.window_min + self.late_min + mark.duration_min
             for mark in self.marks
             for limit in self.limits
-            for longer in (0.0, mark.duration_min)
         ]
         later = [minute for minute in leaving if minute > after + ROUNDING]
         return min(later, default=float("inf"))

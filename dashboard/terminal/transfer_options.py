@@ -80,7 +80,7 @@ def _add_time_options(group: argparse._ArgumentGroup) -> None:
     )
     group.add_argument("--litres", type=float, help="round litres to this (default: by the volume)")
     group.add_argument(
-        "--clock-min", type=float, default=10.0, help="steps begin at multiples of this [min] (default: 10)"
+        "--clock-min", type=float, default=5.0, help="steps begin at multiples of this [min] (default: 5)"
     )
     group.add_argument(
         "--tolerance", type=float, default=0.25, help="how near to the target is arrived (default: 0.25)"

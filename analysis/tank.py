@@ -342,20 +342,30 @@ def _advanced(held: _Held, gains: _Gains, *, outflow_L_h: ArrayLike, hours: Floa
             found=outflow.tolist(),
             allowed=f"flows and a duration that leave water in the tank, which holds {held.volume_L.tolist()} L",
         )
-    part = growth * hours / held.volume_L
-    tau = hours / held.volume_L * _log1p_over(part)
-
-    def held_after(amount: FloatArray, gain_per_h: FloatArray, rate_L_h: FloatArray) -> FloatArray:
-        x = -rate_L_h * tau
-        return np.asarray(volume * (amount / held.volume_L * np.exp(x) + gain_per_h * tau * _expm1_over(x)))
-
+    tau = hours / held.volume_L * _log1p_over(growth * hours / held.volume_L)
     rate = outflow + growth
+    kept, gained = _decay(rate * tau, tau=tau, start_L=held.volume_L, end_L=volume)
+    has_loss = bool(np.any(gains.heat_loss_L_h))
+    heat_kept, heat_gained = (
+        _decay((rate + gains.heat_loss_L_h) * tau, tau=tau, start_L=held.volume_L, end_L=volume)
+        if has_loss
+        else (kept, gained)
+    )
     return _Held(
-        mass_kg=held_after(held.mass_kg, gains.mass_kg_h, rate),
-        salt_kg=held_after(held.salt_kg, gains.salt_kg_h, rate),
-        heat_J=held_after(held.heat_J, gains.heat_J_h, rate + gains.heat_loss_L_h),
+        mass_kg=held.mass_kg * kept + gains.mass_kg_h * gained,
+        salt_kg=held.salt_kg * kept + gains.salt_kg_h * gained,
+        heat_J=held.heat_J * heat_kept + gains.heat_J_h * heat_gained,
         volume_L=np.asarray(volume),
     )
+
+
+def _decay(
+    turnovers: FloatArray, *, tau: FloatArray, start_L: FloatArray, end_L: FloatArray
+) -> tuple[FloatArray, FloatArray]:
+    """Return what becomes of one unit held at the start, and of one unit an hour gained on the way."""
+    lost = np.expm1(-turnovers)
+    gained = np.divide(-lost, turnovers, out=np.ones_like(lost), where=turnovers != 0.0)
+    return np.asarray(end_L / start_L * (1.0 + lost)), np.asarray(end_L * tau * gained)
 
 
 def _settled(held: _Held, *, capacity_L: FloatArray, solution: Solution) -> TankWater:
@@ -372,13 +382,6 @@ def _settled(held: _Held, *, capacity_L: FloatArray, solution: Solution) -> Tank
     )
 
 
-def _expm1_over(x: FloatArray) -> FloatArray:
-    """Return (exp(x) - 1) / x, and 1 at 0."""
-    nonzero = np.where(x == 0.0, 1.0, x)
-    return np.where(x == 0.0, 1.0, np.expm1(nonzero) / nonzero)
-
-
 def _log1p_over(x: FloatArray) -> FloatArray:
     """Return ln(1 + x) / x, and 1 at 0."""
-    nonzero = np.where(x == 0.0, 1.0, x)
-    return np.where(x == 0.0, 1.0, np.log1p(nonzero) / nonzero)
+    return np.asarray(np.divide(np.log1p(x), x, out=np.ones_like(x), where=x != 0.0))

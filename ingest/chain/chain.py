@@ -21,6 +21,8 @@ from analysis.alarm.timing import (
     sensor_times_to_dict,
 )
 from analysis.flags import Flag, Quality
+from analysis.sensor.quality.state import QualityState
+from ingest.chain import trust
 from ingest.chain.animals import animal_body, fresh_animals, restored_animals, step
 from ingest.chain.water import water
 
@@ -33,6 +35,7 @@ if TYPE_CHECKING:
     from analysis.alarm.state import AlarmState
     from analysis.alarm.transition import Transition
     from analysis.arrays import BoolArray, FlagArray, FloatArray, IntArray, QualityArray
+    from analysis.sensor.quality.thresholds import Thresholds
     from ingest.chain.animals import AnimalRoster, AnimalState, StressStep
     from ingest.chain.block import RawBlock
     from ingest.chain.roster import Roster
@@ -47,6 +50,7 @@ class ChainState:
     `salinity` is what the probes say, `wet` the same without probes that are dry.
     """
 
+    quality: QualityState
     times: SensorTimes
     salinity: LatestReadings
     wet: LatestReadings
@@ -54,6 +58,30 @@ class ChainState:
     osmolality: LatestReadings
     bank: AlarmBank
     animals: AnimalState
+
+
+@dataclass(frozen=True, slots=True)
+class Found:
+    """What a block of readings says: arrays of the block's length, but for `ring_changed`.
+
+    Attributes
+    ----------
+    water : Water
+    flags : ndarray of uint32
+        Words of `analysis.flags.Flag`, those of the quality tests included.
+    quality : ndarray of uint8
+        The rolled-up QARTOD flag.
+    tests : ndarray of int64
+        The flag of each test, packed (`ingest.chain.trust.unpacked`).
+    ring_changed : ndarray of int64
+        Sensors whose longer memory of the quality tests changed.
+    """
+
+    water: Water
+    flags: FlagArray
+    quality: QualityArray
+    tests: IntArray
+    ring_changed: IntArray
 
 
 class Happened(NamedTuple):
@@ -96,6 +124,7 @@ def fresh_state(
 ) -> ChainState:
     """Return the state before any reading, with the alarms in *states* as they stood."""
     return ChainState(
+        quality=QualityState.fresh(len(tanks.watcher_of)),
         times=no_times_yet(len(tanks.watchers)),
         salinity=no_readings_yet(tanks.places),
         wet=no_readings_yet(tanks.places),
@@ -107,13 +136,18 @@ def fresh_state(
 
 
 def run(
-    roster: Roster, tanks: TankRoster, animals: AnimalRoster, state: ChainState, block: RawBlock
-) -> tuple[Water, ChainOutput]:
+    roster: Roster,
+    limits: Thresholds,
+    tanks: TankRoster,
+    animals: AnimalRoster,
+    state: ChainState,
+    block: RawBlock,
+) -> tuple[Found, ChainOutput]:
     """Let a block of admitted readings happen.
 
     Parameters
     ----------
-    roster, tanks, animals : Roster, TankRoster, AnimalRoster
+    roster, limits, tanks, animals : Roster, Thresholds, TankRoster, AnimalRoster
         The site.
     state : ChainState
         Before the block; not changed.
@@ -122,15 +156,22 @@ def run(
 
     Returns
     -------
-    tuple of (Water, ChainOutput)
-        What each reading says of the water, late ones too, and what followed for tanks, animals and alarms.
+    tuple of (Found, ChainOutput)
+        What each reading says, late ones too, and what followed for tanks, animals and alarms.
     """
-    found = water(roster, block)
+    saying = water(roster, block)
+    memory, tested = trust.judged(limits, state.quality, block, saying)
     times, judged = _judged(tanks, state, block)
-    found = replace(found, flags=_with_clock_doubts(found.flags, judged))
+    found = Found(
+        water=saying,
+        flags=_with_clock_doubts(tested.flags, judged),
+        quality=tested.quality,
+        tests=trust.packed(tested),
+        ring_changed=tested.ring_changed,
+    )
     live = judged.rows[judged.is_judged]
     if not live.size:
-        return found, ChainOutput(replace(state, times=times))
+        return found, ChainOutput(replace(state, quality=memory, times=times))
     watcher = tanks.watcher_of[block.sensor[live]]
     tank = tanks.places.tank[watcher]
     judged_at_us = judged.judged_at_us[judged.is_judged]
@@ -146,19 +187,20 @@ def run(
             stale_after_us=tanks.stale_after_us,
         )
 
-    saltiness, warmth, quality = found.salinity[live], found.temperature_degC[live], found.quality[live]
+    saltiness, warmth = saying.salinity[live], saying.temperature_degC[live]
+    quality = trust.quality_for_alarms(saying, tested)[live]
     in_water = wet_quality(saltiness, quality=quality, tank=tank, dry_below=tanks.dry_below)
     has_warmth = np.where(np.isnan(warmth), np.uint8(Quality.MISSING), np.uint8(Quality.PASS))
     salinity, salinity_rows = rows_of(state.salinity, saltiness, quality)
     wet, wet_rows = rows_of(state.wet, saltiness, in_water)
     temperature, temperature_rows = rows_of(state.temperature, warmth, has_warmth)
-    osmolality, osmolality_rows = rows_of(state.osmolality, found.properties.osmolality_mOsm_kg[live], in_water)
+    osmolality, osmolality_rows = rows_of(state.osmolality, saying.properties.osmolality_mOsm_kg[live], in_water)
     rows = (wet_rows, wet_rows, temperature_rows, temperature_rows, salinity_rows)
     bank, outcomes = alarm_bank.observe(
         state.bank, limit_block(tanks.conditions, rows, now_us=block.received_at_us[live])
     )
     creatures, felt = step(animals, state.animals, osmolality=osmolality_rows, temperature=temperature_rows)
-    after = ChainState(times, salinity, wet, temperature, osmolality, bank, creatures)
+    after = ChainState(memory, times, salinity, wet, temperature, osmolality, bank, creatures)
     return found, replace(_output(state, after, outcomes, tuple(np.unique(tank).tolist())), felt=tuple(felt))
 
 

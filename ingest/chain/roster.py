@@ -40,8 +40,6 @@ class Roster:
         Whether, and after which curve, the sensor compensates.
     coefficient_percent_per_K, reference_temperature_degC : ndarray of float64
         Of linear compensation.
-    conductivity_low, conductivity_high, temperature_low, temperature_high : ndarray of float64
-        Gross range by the site; infinite where not given. [mS/cm], [degC]
     has_pressure : ndarray of bool
         Whether a pressure is expected; without one the probe is taken to be near the surface.
     """
@@ -58,10 +56,6 @@ class Roster:
     is_natural_water: BoolArray
     coefficient_percent_per_K: FloatArray
     reference_temperature_degC: FloatArray
-    conductivity_low: FloatArray
-    conductivity_high: FloatArray
-    temperature_low: FloatArray
-    temperature_high: FloatArray
     has_pressure: BoolArray
     interval_us: IntArray
     longitude: float
@@ -82,8 +76,6 @@ def roster(site: Site, kinds: Mapping[str, WaterKind]) -> Roster:
     """
     sensors = site.sensors
     names = tuple(kinds)
-    conductivity_span = [sensor.span.conductivity_mS_cm or (-np.inf, np.inf) for sensor in sensors]
-    temperature_span = [sensor.span.temperature_degC or (-np.inf, np.inf) for sensor in sensors]
     position = site.identity.position
     return Roster(
         sensors=tuple(sensor.id for sensor in sensors),
@@ -100,10 +92,6 @@ def roster(site: Site, kinds: Mapping[str, WaterKind]) -> Roster:
         reference_temperature_degC=_floats(
             [25.0 if s.compensation is None else s.compensation.reference_temperature_degC for s in sensors]
         ),
-        conductivity_low=_floats([span[0] for span in conductivity_span]),
-        conductivity_high=_floats([span[1] for span in conductivity_span]),
-        temperature_low=_floats([span[0] for span in temperature_span]),
-        temperature_high=_floats([span[1] for span in temperature_span]),
         has_pressure=np.array([sensor.fields.pressure is not None for sensor in sensors], dtype=np.bool_),
         interval_us=_ints([round(sensor.interval_s * MICROSECONDS_PER_SECOND) for sensor in sensors]),
         longitude=np.nan if position is None else position.longitude,

@@ -1,4 +1,4 @@
-"""From values as sent to the water: units, compensation undone, calibration, the water's properties, flags, quality."""
+"""From values as sent to the water: units, compensation undone, calibration, the water's properties, flags."""
 
 from __future__ import annotations
 
@@ -7,13 +7,12 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from analysis import flags as flag_room
 from analysis.flags import Flag
 from analysis.water.compensation import linear_factor, natural_water_factor
 from analysis.water.properties import WaterProperties
 
 if TYPE_CHECKING:
-    from analysis.arrays import FlagArray, FloatArray, IntArray, QualityArray
+    from analysis.arrays import FlagArray, FloatArray, IntArray
     from ingest.chain.block import RawBlock
     from ingest.chain.roster import Roster
 
@@ -23,7 +22,7 @@ class Water:
     """What a block of readings says of the water: arrays of the block's length.
 
     `salinity` is practical salinity in seawater, g/kg in every other kind of water. `flags` are words of
-    `analysis.flags.Flag`, `quality` the rolled-up QARTOD flag.
+    `analysis.flags.Flag` that follow from the values and the kind of water alone.
     """
 
     conductivity_mS_cm: FloatArray
@@ -31,7 +30,6 @@ class Water:
     properties: WaterProperties
     salinity: FloatArray
     flags: FlagArray
-    quality: QualityArray
 
 
 def water(roster: Roster, block: RawBlock) -> Water:
@@ -44,14 +42,14 @@ def water(roster: Roster, block: RawBlock) -> Water:
     # A pressure that is expected and missing costs a few thousandths in salinity, not the reading.
     pressure = np.where(np.isnan(pressure), 0.0, pressure)
     properties = _properties(roster, sensor, conductivity, temperature, pressure)
-    flags = block.flags | properties.flags | _gross_range(roster, sensor, conductivity, temperature)
+    flags = block.flags | properties.flags
     # The decoder knows why a value is absent; "not finite" stands for values that came and were not numbers.
     explained = (block.flags & np.uint32(Flag.MISSING | Flag.FILLER)) != 0
     flags = np.where(explained, flags & ~np.uint32(Flag.NOT_FINITE), flags)
     salinity = properties.practical_salinity
     if len(roster.kinds) > 1:
         salinity = np.where(np.isnan(salinity), properties.absolute_salinity_g_kg, salinity)
-    return Water(conductivity, temperature, properties, salinity, flags, flag_room.rolled_up(flags))
+    return Water(conductivity, temperature, properties, salinity, flags)
 
 
 def _uncompensated(roster: Roster, sensor: IntArray, conductivity: FloatArray, temperature: FloatArray) -> FloatArray:
@@ -108,9 +106,3 @@ _PROPERTY_NAMES = (
     "osmolality_mOsm_kg",
     "osmolality_in_situ_mOsm_kg",
 )
-
-
-def _gross_range(roster: Roster, sensor: IntArray, conductivity: FloatArray, temperature: FloatArray) -> FlagArray:
-    outside = (conductivity < roster.conductivity_low[sensor]) | (conductivity > roster.conductivity_high[sensor])
-    outside |= (temperature < roster.temperature_low[sensor]) | (temperature > roster.temperature_high[sensor])
-    return np.where(outside, np.uint32(Flag.GROSS_RANGE), np.uint32(0))

@@ -15,6 +15,8 @@ TimeFormat = Literal["iso", "unix_s", "unix_ms", "unix_us"]
 ConductivityUnit = Literal["mS/cm", "uS/cm", "S/m"]
 TemperatureUnit = Literal["degC", "degF", "K"]
 PressureUnit = Literal["dbar", "kPa", "bar"]
+Surroundings = Literal["thermostated-tank", "open-tank", "tidal-intake", "pond"]
+
 QUANTITIES = ("conductivity", "temperature", "pressure")
 
 SENML_NAME = re.compile(r"[A-Za-z0-9][A-Za-z0-9\-:./_]*\Z")
@@ -85,6 +87,7 @@ class Sensor(Section):
     compensation: Compensation | None = Field(None, description="method, coefficient, reference temperature")
     interval_s: float = positive(86_400 * 31, "s", 60)
     pair_within_s: float | None = positive(3600, "s", None)
+    surroundings: Surroundings | None = one_of("thermostated-tank", "open-tank", "tidal-intake", "pond", default=None)
     accuracy: Accuracy = Field(Accuracy(), description="what the data sheet states")
     span: Span = Field(Span(), description="conductivity_mS_cm and temperature_degC as [low, high]")
     channels: dict[Slug, Channel] = Field({}, description="name: {field, unit, low, high}")

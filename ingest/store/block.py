@@ -99,6 +99,7 @@ class BlockCommit:
     readings: ReadingRows | None = None
     latest: IntArray | None = None
     sensor_states: list[bytes | None] = field(default_factory=list)
+    rings: list[tuple[int, bytes]] = field(default_factory=list)
     channels: list[ChannelRow] = field(default_factory=list)
     conflicts: list[Conflict] = field(default_factory=list)
     refusals: list[Refusal] = field(default_factory=list)
@@ -119,6 +120,7 @@ def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: i
         if block.latest is not None and len(block.latest):
             readings.upsert_latest(connection, block.readings, block.latest, block.sensor_states)
     connection.executemany("INSERT OR IGNORE INTO channel_reading VALUES (?, ?, ?, ?, ?, ?)", block.channels)
+    connection.executemany("INSERT OR REPLACE INTO sensor_ring VALUES (?, ?)", block.rings)
     for conflict in block.conflicts:
         readings.record_conflict(
             connection,

@@ -79,6 +79,7 @@ STORE: tuple[Migration, ...] = (
             " received_at INTEGER NOT NULL, conductivity_mS_cm REAL, temperature_degC REAL, practical_salinity REAL,"
             " absolute_salinity_g_kg REAL, density_kg_m3 REAL, osmolality_mOsm_kg REAL, flags INTEGER NOT NULL,"
             " quality INTEGER NOT NULL, state BLOB)",
+            "CREATE TABLE sensor_ring (sensor INTEGER PRIMARY KEY REFERENCES sensor(id), body BLOB NOT NULL)",
             "CREATE TABLE channel_reading (measured_at INTEGER NOT NULL, sensor INTEGER NOT NULL, channel TEXT NOT NULL,"
             " received_at INTEGER NOT NULL, value REAL, flags INTEGER NOT NULL,"
             " PRIMARY KEY (measured_at, sensor, channel)) WITHOUT ROWID",

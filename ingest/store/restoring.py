@@ -26,6 +26,7 @@ __all__ = [
     "meta_text",
     "newest_times",
     "outcome_row",
+    "quality_memory",
     "stocked_tanks",
     "tank_bodies",
 ]
@@ -55,6 +56,16 @@ def tank_bodies(connection: sqlite3.Connection) -> dict[str, dict[str, Any]]:
     """Return what the chain remembered of each tank, by the tank's id."""
     rows = connection.execute("SELECT slug, body FROM tank_state JOIN tank ON tank.id = tank_state.tank").fetchall()
     return {row["slug"]: msgspec.json.decode(row["body"]) for row in rows}
+
+
+def quality_memory(connection: sqlite3.Connection, sensor: str) -> tuple[bytes | None, bytes | None]:
+    """Return what the quality tests remembered of a sensor: of its newest readings, and of the time before."""
+    row = connection.execute(
+        "SELECT state, body FROM sensor LEFT JOIN latest ON latest.sensor = sensor.id"
+        " LEFT JOIN sensor_ring ON sensor_ring.sensor = sensor.id WHERE slug = ?",
+        (sensor,),
+    ).fetchone()
+    return (None, None) if row is None else (row["state"], row["body"])
 
 
 def stocked_tanks(connection: sqlite3.Connection) -> dict[str, Stocked]:

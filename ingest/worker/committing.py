@@ -24,8 +24,7 @@ if TYPE_CHECKING:
     from analysis.alarm.transition import Transition
     from analysis.arrays import FlagArray, IntArray
     from ingest.chain.block import RawBlock
-    from ingest.chain.chain import ChainOutput, ChainState, Happened
-    from ingest.chain.water import Water
+    from ingest.chain.chain import ChainOutput, ChainState, Found, Happened
     from ingest.reading import ChannelReading
     from ingest.worker.plant import Plant
 
@@ -33,9 +32,10 @@ DUTY = "duty"
 """The channel of what somebody on duty has to be told; `ingest.notify` finds out who that is."""
 
 
-def reading_rows(plant: Plant, block: RawBlock, water: Water) -> ReadingRows:
+def reading_rows(plant: Plant, block: RawBlock, said: Found) -> ReadingRows:
     """Return a block as rows of the store."""
-    numbers, found = plant.numbers, water.properties
+    numbers, water = plant.numbers, said.water
+    found = water.properties
     count = len(block)
     return ReadingRows(
         measured_at=block.measured_at_us,
@@ -53,9 +53,9 @@ def reading_rows(plant: Plant, block: RawBlock, water: Water) -> ReadingRows:
         density_kg_m3=found.density_kg_m3,
         osmolality_mOsm_kg=found.osmolality_mOsm_kg,
         osmolality_in_situ_mOsm_kg=found.osmolality_in_situ_mOsm_kg,
-        flags=water.flags,
-        quality=water.quality,
-        tests=np.zeros(count, dtype=np.int64),
+        flags=said.flags,
+        quality=said.quality,
+        tests=said.tests,
     )
 
 
@@ -65,6 +65,18 @@ def newest_rows(sensor: IntArray, flags: FlagArray) -> IntArray:
     backwards = live[::-1]
     _, first = np.unique(sensor[backwards], return_index=True)
     return backwards[first]
+
+
+def sensor_states(sensors: IntArray, state: ChainState) -> list[bytes | None]:
+    """Return what the quality tests remember of the newest readings of *sensors*."""
+    return [state.quality.recent_bytes(sensor) for sensor in sensors.tolist()]
+
+
+def ring_rows(plant: Plant, said: Found, state: ChainState) -> list[tuple[int, bytes]]:
+    """Return the longer memory of the quality tests of the sensors for which it changed."""
+    return [
+        (int(plant.numbers.sensor[sensor]), state.quality.ring_bytes(sensor)) for sensor in said.ring_changed.tolist()
+    ]
 
 
 def channel_rows(plant: Plant, channels: Sequence[ChannelReading]) -> list[ChannelRow]:

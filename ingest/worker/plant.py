@@ -8,6 +8,7 @@ from typing import TYPE_CHECKING, Any
 from ingest.chain.animals import animal_roster
 from ingest.chain.roster import roster
 from ingest.chain.tanks import tank_roster
+from ingest.chain.trust import thresholds
 from ingest.payloads.decoder import Decoder
 from ingest.payloads.pairing import Pairing
 from ingest.site.identity import Horizon
@@ -16,6 +17,7 @@ from ingest.water_kinds import kinds_of
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
+    from analysis.sensor.quality.thresholds import Thresholds
     from ingest.chain.animals import AnimalRoster, Stocked
     from ingest.chain.roster import Roster
     from ingest.chain.tanks import TankRoster
@@ -31,6 +33,7 @@ class Plant:
     text: str
     numbers: Numbers
     roster: Roster
+    limits: Thresholds
     tanks: TankRoster
     animals: AnimalRoster
     decoder: Decoder
@@ -93,6 +96,7 @@ def plant(
         text=text,
         numbers=numbers,
         roster=sensors,
+        limits=thresholds(site, sensors),
         tanks=tank_roster(site, sensors, is_larva=animals.is_larva, tolerable=animals.tolerable_salinity),
         animals=animals,
         decoder=Decoder(read_as, pairing=Pairing.restored(site, dict(waiting_halves))),

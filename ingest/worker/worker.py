@@ -34,6 +34,8 @@ from ingest.worker.committing import (
     occurrence,
     pending_rows,
     reading_rows,
+    ring_rows,
+    sensor_states,
     stress_rows,
     tank_states,
 )
@@ -173,12 +175,14 @@ class Worker:
         newest_us = list(self._newest_us)
         admission = admit(newest_us, raw, stored=self._stored)
         self.stopwatch.lap("admit")
-        water, output = run(self.plant.roster, self.plant.tanks, self.plant.animals, self.state, admission.block)
+        plant = self.plant
+        found, output = run(plant.roster, plant.limits, plant.tanks, plant.animals, self.state, admission.block)
         self.stopwatch.lap("chain")
         if len(admission.block):
-            commit.readings = reading_rows(self.plant, admission.block, water)
-            commit.latest = newest_rows(admission.block.sensor, water.flags)
-            commit.sensor_states = [None] * len(commit.latest)
+            commit.readings = reading_rows(plant, admission.block, found)
+            commit.latest = newest_rows(admission.block.sensor, found.flags)
+            commit.sensor_states = sensor_states(admission.block.sensor[commit.latest], output.state)
+            commit.rings = ring_rows(plant, found, output.state)
         commit.conflicts = conflict_rows(self.plant, raw, admission.contradictions)
         commit.counts["readings"] = len(admission.block)
         commit.counts["duplicates"] = admission.duplicates
@@ -369,13 +373,18 @@ class Worker:
             for row in restoring.alarm_rows(connection)
             if row.condition in known and row.subject.removeprefix("tank/") in index
         }
-        self.state = restored_state(
+        fresh = restored_state(
             self.plant.roster,
             self.plant.tanks,
             self.plant.animals,
             bodies=restoring.tank_bodies(connection),
             alarms=alarms,
         )
+        for place, sensor in enumerate(self.plant.site.sensors):
+            recent, ring = restoring.quality_memory(connection, sensor.id)
+            if recent is not None:
+                fresh.quality.restore(place, recent=recent, ring=ring or fresh.quality.ring_bytes(place))
+        self.state = fresh
 
     def _access(self) -> Access:
         broker = self.plant.site.broker

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -16,7 +17,9 @@ if TYPE_CHECKING:
 
     from analysis.arrays import BoolArray, IntArray
 
-_SHORTEST_ISO = 16
+_MOMENT = r"\d{4}-\d\d-\d\d[T ]\d\d:\d\d(?::\d\d(?:\.\d{1,6})?)?"
+_WITHOUT_Z = re.compile(rf"{_MOMENT}(?:\n{_MOMENT})*", re.ASCII)
+_WITH_Z = re.compile(rf"{_MOMENT}Z(?:\n{_MOMENT}Z)*", re.ASCII)
 
 
 class TimeColumn:
@@ -142,14 +145,10 @@ class TimeColumn:
 
 def _iso_at_once(texts: Sequence[str]) -> tuple[IntArray, BoolArray] | None:
     """Return times of one plain shape (2026-01-31T06:30, with or without seconds and Z); None for any other."""
-    if not texts or len(set(map(len, texts))) != 1 or len(texts[0]) < _SHORTEST_ISO:
-        return None
-    whole = "".join(texts)
-    if "+" in whole or whole.count("-") != 2 * len(texts):
-        return None
-    # Z stands last in each, if it stands in each at all: elsewhere numpy does not take it.
-    has_z = whole.count("Z") == len(texts)
-    if "Z" in whole and not has_z:
+    whole = "\n".join(texts)
+    has_z = "Z" in whole
+    # numpy takes odd characters for a zone, and warns; only what is plain goes there.
+    if not (_WITH_Z if has_z else _WITHOUT_Z).fullmatch(whole):
         return None
     try:
         moments = np.array([text[:-1] for text in texts] if has_z else texts, dtype="datetime64[us]")

@@ -304,6 +304,22 @@ def test_times_that_cannot_be_understood_are_refused_with_what_to_change(
     assert error.column == "time"
 
 
+@pytest.mark.parametrize(
+    "odd",
+    [
+        "2026-03-02T12:00:2Z0",
+        "2026-0302T12:00:20-Z",
+        "2026-03-02T12U00:20Z",
+        "NaT                 ",
+        "2026-03-02T12:00-01",
+    ],
+)
+def test_times_of_one_length_but_another_shape_are_looked_at_one_by_one(folder: Folder, odd: str) -> None:
+    chunk = folder.chunk(PLAIN + f"{odd},25,48,<0>\n")
+    assert seconds(chunk)[:2] == [0, 10]
+    assert len(chunk) + len(chunk.remarks) == 3
+
+
 def test_a_local_time_among_utc_times_leaves_its_row_out(folder: Folder) -> None:
     chunk = folder.chunk(PLAIN + "2026-03-02T12:00:20,25,48,<0>\n2026-13-02T12:00:30Z,25,48,<0>\n")
     assert seconds(chunk) == [0, 10]

@@ -25,6 +25,9 @@ if TYPE_CHECKING:
     from analysis.arrays import FloatArray
 
 TEMPERATURES_DEGC: Final = np.array([-2.5, 0.0, 5.0, 10.0, 15.0, 20.0, 25.0, 30.0, 35.0, 40.0, 45.0])
+TABLE_VERSION: Final = 1
+"""Part of the key under which a table is kept: it changes when tables made before are no longer right."""
+
 HIGHEST_CONCENTRATION: Final = 1.5
 """The table runs from pure water to one and a half times the analysed water (evaporation)."""
 
@@ -132,7 +135,7 @@ def tabulate(analysis: IonAnalysis) -> IonicTable:
     InvalidInputError
         If the engine refuses or warns, or an answer is not finite.
     """
-    conductor, activity = _Engine("phreeqc.dat", where=analysis.name), _Engine("pitzer.dat", where=analysis.name)
+    conductor, activity = Engine("phreeqc.dat", where=analysis.name), Engine("pitzer.dat", where=analysis.name)
     molalities = _molalities(analysis, conductor)
     pitzer_molalities, replaced = _without_unknown(molalities, where=analysis.name)
     grams = grams_per_kg_water(molalities)
@@ -167,7 +170,7 @@ def _with_limit(roots: FloatArray, values: FloatArray) -> FloatArray:
     return np.vstack([parabola[-1], values])
 
 
-def _molalities(analysis: IonAnalysis, engine: _Engine) -> dict[str, float]:
+def _molalities(analysis: IonAnalysis, engine: Engine) -> dict[str, float]:
     if analysis.density_kg_m3 is not None:
         return analysis.molalities(density_kg_m3=analysis.density_kg_m3)
     ph = _ASSUMED_PH if analysis.pH is None else analysis.pH
@@ -200,7 +203,7 @@ def _uncertainty_percent(analysis: IonAnalysis, molalities: Mapping[str, float],
     return float(np.sqrt(conductivity**2 + 0.5**2 + charge**2 + (5.0 * replaced) ** 2))
 
 
-def _freezing_point_osmolality(activity: _Engine, molalities: Mapping[str, float], factor: float, ph: float) -> float:
+def _freezing_point_osmolality(activity: Engine, molalities: Mapping[str, float], factor: float, ph: float) -> float:
     osmolality = activity.solve(molalities, factor, ICE_POINT_DEGC, ph)[2]
     for _ in range(3):  # osmolality hardly depends on temperature: each step gains three digits
         freezing = float(freezing_point_from_osmolality(osmolality))
@@ -208,8 +211,21 @@ def _freezing_point_osmolality(activity: _Engine, molalities: Mapping[str, float
     return osmolality
 
 
-class _Engine:
-    """One PHREEQC with one database; any warning is an error."""
+class Engine:
+    """One PHREEQC with one of its built-in databases; any warning is an error.
+
+    Parameters
+    ----------
+    database : str
+        ``phreeqc.dat`` or ``pitzer.dat``.
+    where : str
+        Name of the water, for messages.
+
+    Raises
+    ------
+    MissingPackageError
+        If the package `phreeqc` is not installed.
+    """
 
     def __init__(self, database: str, *, where: str) -> None:
         self._where = where
@@ -230,7 +246,23 @@ class _Engine:
     def solve(
         self, molalities: Mapping[str, float], factor: float, temperature_degC: float, ph: float
     ) -> tuple[float, float, float]:
-        """Return conductivity [mS/cm], density [kg/m3] and osmolality [mOsm/kg water] of a solution."""
+        """Return conductivity [mS/cm], density [kg/m3] and osmolality [mOsm/kg water] of a solution.
+
+        Parameters
+        ----------
+        molalities : mapping of str to float
+            By ion. [mol/kg water]
+        factor : float
+            By which they are multiplied. [1]
+        temperature_degC : float
+            [degC]
+        ph : float
+
+        Raises
+        ------
+        InvalidInputError
+            If the engine refuses or warns, or answers what cannot be.
+        """
         lines = [f"-temp {temperature_degC:.10g}", "-units mol/kgw", f"pH {ph:.6g}"]
         alkalinity = molalities.get("HCO3", 0.0) + 2.0 * molalities.get("CO3", 0.0)
         plain = {ion: amount for ion, amount in molalities.items() if ion not in ("HCO3", "CO3")}

@@ -29,6 +29,10 @@ MEMORY_BUCKETS: Final = 25
 HIGHEST_BUCKET_S: Final = 86_400.0
 
 
+DEFAULT_FAIL_SPAN: Final[Spans] = ((0.0, 200.0), (-2.5, 45.0), (0.0, 120.0))
+DEFAULT_SUSPECT_SPAN: Final[Spans] = ((0.0, 100.0), (-2.0, 40.0), (0.0, 60.0))
+
+
 class Surroundings(StrEnum):
     """Where a sensor hangs."""
 
@@ -101,8 +105,8 @@ class SensorLimits:
     interval_s: float
     gap_s: float
     bucket_s: float
-    fail_span: Spans = ((0.0, 200.0), (-2.5, 45.0), (0.0, 120.0))
-    suspect_span: Spans = ((0.0, 100.0), (-2.0, 40.0), (0.0, 60.0))
+    fail_span: Spans = DEFAULT_FAIL_SPAN
+    suspect_span: Spans = DEFAULT_SUSPECT_SPAN
     climatology: tuple[Spans, ...] | None = None
     spike_suspect: Triple
     spike_fail: Triple

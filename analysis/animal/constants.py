@@ -28,7 +28,8 @@ class Constants:
     cold_mOsm_kg_K, warm_mOsm_kg_K : float
         How far the tolerated range narrows per kelvin below or above the optimal temperature. Fitted.
     q10 : float
-        Ratio of the rates of settling, of exposure and of repair ten kelvin apart: cold slows all three. Derived: channel catfish, 48 h at 27 degC and over 13 d at
+        Ratio of the rates of settling, of exposure and of repair ten kelvin apart: cold slows all three.
+        Derived: channel catfish, 48 h at 27 degC and over 13 d at
         9 degC, at least 2.8 (CATFISH_PLASMA).
     repair_h : float
         Time constant with which exposure fades inside the tolerated range. Assumed.

@@ -200,7 +200,7 @@ def _convert_one(args: argparse.Namespace, conversion: Conversion) -> int:
     answer["flags"] = words(int(found.flags[0]))
     answer["uncertainty"] = {key: _or_null(float(values[0])) for key, values in found.uncertainties.items()}
     if args.json:
-        print(json.dumps(answer))
+        print(json.dumps(answer, allow_nan=False))
     else:
         _print_for_a_person(answer, water=conversion.kind.name)
     return 0
@@ -238,12 +238,23 @@ def _convert_table(args: argparse.Namespace, conversion: Conversion) -> int:
         positions = _positions(header, columns, where=str(args.input))
         writer = csv.writer(target, delimiter=dialect, lineterminator="\n")
         writer.writerow([*header, *SHOWN, "flags", *_doubt_names(conversion)])
-        bar = tqdm(unit=" rows", unit_scale=True, file=sys.stderr, disable=not sys.stderr.isatty(), leave=False)
-        with bar:
+        is_watched = sys.stderr.isatty()
+        total = _row_count(args.input) if is_watched else None
+        with tqdm(
+            total=total, unit=" rows", unit_scale=True, file=sys.stderr, disable=not is_watched, leave=False
+        ) as bar:
             for rows in _slices(row for row in reader if row):
                 writer.writerows(_answered(rows, len(header), positions, conversion, has_comma=dialect != ","))
                 bar.update(len(rows))
     return 0
+
+
+def _row_count(path: Path) -> int | None:
+    """Return about how many rows a file holds, None where it can be read only once."""
+    if not path.is_file():
+        return None
+    with path.open("rb") as source:
+        return max(0, sum(part.count(b"\n") for part in iter(lambda: source.read(1 << 20), b"")) - 1)
 
 
 def _columns(pairs: list[str]) -> dict[str, str]:

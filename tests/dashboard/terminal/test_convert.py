@@ -158,6 +158,18 @@ def test_a_table_gives_what_single_values_give(tmp_path: Path, capsys: pytest.Ca
             assert float(rows[index][key]) == pytest.approx(alone[key], rel=1e-8)
 
 
+@pytest.mark.parametrize("is_terminal", [True, False])
+def test_a_progress_bar_on_a_terminal_only(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch, is_terminal: bool
+) -> None:
+    source = tmp_path / "in.csv"
+    source.write_text("ec,t\n" + "30,15\n" * 10, encoding="utf-8")
+    monkeypatch.setattr("sys.stderr.isatty", lambda: is_terminal, raising=False)
+    columns = ("--column", "conductivity=ec", "--column", "temperature=t")
+    assert run("--input", str(source), *columns, "--output", str(tmp_path / "out.csv")) == 0
+    assert ("/10.0" in capsys.readouterr().err) == is_terminal
+
+
 def test_semicolons_and_decimal_commas(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     source = tmp_path / "in.csv"
     source.write_text("ec;t\n42,914;14,996401\n", encoding="utf-8-sig")

@@ -65,8 +65,8 @@ def _fast_route(sensor: Sensor, index: int, window: Window, careful: Route) -> R
     record_from, values_of = compiled_fields
     fillers = fillers_of(sensor)
     bad_conductivity, bad_temperature, bad_pressure = (frozenset({None}) | fillers[name] for name in QUANTITIES)
-    channels_of = _channels_of(sensor, index, [fillers[name] for name in sensor.channels])
     has_quantity = any(path is not None for path in paths[:3])
+    channels_of = _channels_of(sensor, index, [fillers[name] for name in sensor.channels], may_be_empty=has_quantity)
     past_us, future_us = window.past_us, window.future_us
     factor = 1_000_000 if is_text_time else UNIX_FACTORS[sensor.time_format]
     new = tuple.__new__
@@ -101,7 +101,9 @@ def _fast_route(sensor: Sensor, index: int, window: Window, careful: Route) -> R
     return fast
 
 
-def _channels_of(sensor: Sensor, index: int, fillers: list[frozenset[float]]) -> _ChannelsOf | None:
+def _channels_of(
+    sensor: Sensor, index: int, fillers: list[frozenset[float]], *, may_be_empty: bool
+) -> _ChannelsOf | None:
     """Return the part of the fast road that reads further channels; None where the sensor has none."""
     if not sensor.channels:
         return None
@@ -111,13 +113,14 @@ def _channels_of(sensor: Sensor, index: int, fillers: list[frozenset[float]]) ->
         values: Sequence[Any], measured_at_us: int, received_at_us: int, flags: int
     ) -> tuple[ChannelReading, ...]:
         further = values[4:]
-        if any(map(contains, fillers, further)) or all(value is None for value in further):
-            raise ValueError("a filler: for the careful road")
-        return tuple(
+        found = tuple(
             ChannelReading(index, name, measured_at_us, received_at_us, value, flags)
             for name, value in zip(names, further, strict=True)
             if value is not None
         )
+        if any(map(contains, fillers, further)) or not (found or may_be_empty):
+            raise ValueError("a filler, or nothing at all: for the careful road")
+        return found
 
     return channels
 

@@ -32,6 +32,7 @@ Protocol: TypeAlias = Literal["3.1.1", "5"]
 START_LIMIT_S = 20.0
 STOP_LIMIT_S = 15.0
 POLL_S = 0.01
+ASK_AGAIN_S = 0.5
 
 MOSQUITTO_LINES = (
     "max_queued_messages 0",  # the default keeps 1,000 for a worker that is away, drops the rest
@@ -203,15 +204,17 @@ class Broker:
 
     def _end(self, how: signal.Signals) -> None:
         process, self._tether = self._tether, None
-        if process is None:
+        if process is None or self._pid is None:
             return
-        if process.poll() is None and self._pid is not None:
+        limit = time.monotonic() + STOP_LIMIT_S
+        while process.poll() is None and time.monotonic() < limit:
             with contextlib.suppress(ProcessLookupError):  # ended by itself in this moment
                 os.kill(self._pid, how)
-        try:
-            process.wait(STOP_LIMIT_S)
-        except subprocess.TimeoutExpired:
-            process.kill()
+            # Asked again: mosquitto forgets a signal that comes before its loop has begun.
+            with contextlib.suppress(subprocess.TimeoutExpired):
+                process.wait(ASK_AGAIN_S)
+        if process.poll() is None:
+            process.kill()  # the tether: the kernel ends the broker with it
             process.wait()
         for stream in (process.stdin, process.stdout):
             if stream is not None:

@@ -21,6 +21,7 @@ from typing import IO
 
 GRACE_S = 10.0
 """How long a command may take to end when asked, before it is killed."""
+ASK_AGAIN_S = 0.5
 PR_SET_PDEATHSIG = 1
 """Linux, prctl(2): the signal that a process gets when its parent dies."""
 
@@ -65,11 +66,15 @@ def _end_with_tether() -> None:
 def _end_when_pipe_ends(process: subprocess.Popen[bytes]) -> None:
     while sys.stdin.buffer.read(1024):
         pass
-    process.terminate()
-    try:
-        process.wait(GRACE_S)
-    except subprocess.TimeoutExpired:
-        process.kill()
+    # Asked again and again: some programs forget a signal that comes before they are ready for it.
+    for _ in range(int(GRACE_S / ASK_AGAIN_S)):
+        process.terminate()
+        try:
+            process.wait(ASK_AGAIN_S)
+        except subprocess.TimeoutExpired:
+            continue
+        return
+    process.kill()
 
 
 def main(command: list[str]) -> int:

@@ -21,8 +21,9 @@ KINDS = [
 ]
 STARTER = """
 import sys, time
+from pathlib import Path
 from ingest.broker import Broker
-print(Broker(sys.argv[1]).start().pid, flush=True)
+print(Broker(sys.argv[1], folder=Path(sys.argv[2])).start().pid, flush=True)
 time.sleep(600)
 """
 
@@ -75,8 +76,8 @@ def test_killed_and_restarted_it_listens_on_the_same_port(kind: str, tmp_path: P
 
 
 @pytest.mark.parametrize("kind", KINDS)
-def test_it_ends_with_the_process_that_started_it(kind: str) -> None:
-    starter = subprocess.Popen([sys.executable, "-P", "-c", STARTER, kind], stdout=subprocess.PIPE)
+def test_it_ends_with_the_process_that_started_it(kind: str, tmp_path: Path) -> None:
+    starter = subprocess.Popen([sys.executable, "-P", "-c", STARTER, kind, str(tmp_path)], stdout=subprocess.PIPE)
     assert starter.stdout is not None
     pid = int(starter.stdout.readline())
     assert not is_gone(pid)
@@ -125,6 +126,18 @@ def test_the_queue_of_an_absent_worker_outlives_the_broker(mosquitto: Broker, ho
 def test_its_configuration_holds_every_line_that_keeps_messages(mosquitto: Broker) -> None:
     written = (mosquitto.folder / "mosquitto.conf").read_text(encoding="utf-8").splitlines()
     assert set(MOSQUITTO_LINES) <= set(written)
+
+
+@pytest.mark.mosquitto
+def test_it_can_be_stopped_the_moment_it_listens(tmp_path: Path) -> None:
+    """mosquitto forgets a signal that comes between its first listening and its loop: it has to be asked again."""
+    for _ in range(20):
+        broker = Broker("mosquitto", folder=tmp_path).start()
+        pid = broker.pid
+        broker.stop()
+        assert pid is not None
+        assert is_gone(pid)
+    assert "terminating" in broker.log_path.read_text(encoding="utf-8")
 
 
 @pytest.mark.mosquitto

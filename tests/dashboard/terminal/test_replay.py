@@ -128,6 +128,7 @@ def test_faster_than_life_no_row_states_a_time_to_come_and_the_last_is_now():
     assert at_once.due_us(60 * HOUR_US) == 60 * HOUR_US + at_once.shift_us == 1000 * HOUR_US
 
 
+@pytest.mark.slow
 @pytest.mark.shared_data
 def test_a_real_year_of_a_tidal_creek(tmp_path, capsys):
     """17,568 rows, of which 1,266 hold neither temperature nor conductance (counted here by hand in the file)."""

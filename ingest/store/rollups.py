@@ -18,6 +18,7 @@ MINUTE_US = 60_000_000
 LEVELS: dict[str, int] = {"q15": 15 * MINUTE_US, "h1": 60 * MINUTE_US, "d1": 24 * 60 * MINUTE_US}
 """Table and bucket length. [us]"""
 
+BEFORE_ALL_US = -(2**63)
 SWEEP_SPAN_US = 6 * 60 * MINUTE_US
 """No sweep takes more than this at once, so that none holds up a block for long."""
 
@@ -73,22 +74,22 @@ def add_behind_mark(connection: sqlite3.Connection, measured_at: IntArray, senso
 
 
 def sweep(connection: sqlite3.Connection, *, until_us: int) -> int | None:
-    """Add rows up to *until_us*, or a bounded part of them, inside the caller's transaction; return the new mark."""
+    """Add rows up to *until_us*, or a bounded part of them, inside the caller's transaction; return the mark.
+
+    The mark that is returned is always the one that is stored: a mark moved in memory alone would count the rows that
+    come before it twice, once singly and once by the next sweep.
+    """
     mark = rolled_until(connection)
-    if mark is None:
-        first = connection.execute("SELECT min(measured_at) FROM reading").fetchone()[0]
-        if first is None:
-            return None
-        mark = int(first)
-    else:
-        # Skip over empty stretches instead of creeping through them.
-        first = connection.execute("SELECT min(measured_at) FROM reading WHERE measured_at >= ?", (mark,)).fetchone()[0]
-        mark = until_us if first is None else max(mark, int(first))
-    end = min(until_us, mark + SWEEP_SPAN_US)
-    if end <= mark:
+    oldest = "SELECT min(measured_at) FROM reading WHERE measured_at >= ?"
+    first = connection.execute(oldest, (BEFORE_ALL_US if mark is None else mark,)).fetchone()[0]
+    if first is None:
+        return mark
+    # Begin at the first row, to skip over empty stretches instead of creeping through them.
+    start, end = int(first), min(until_us, int(first) + SWEEP_SPAN_US)
+    if end <= start:
         return mark
     for statement in _SWEEPS:
-        connection.execute(statement, (mark, end))
+        connection.execute(statement, (start, end))
     connection.execute(
         "INSERT INTO meta VALUES ('rolled_until', ?) ON CONFLICT (name) DO UPDATE SET value = excluded.value",
         (end,),

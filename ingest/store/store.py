@@ -51,6 +51,11 @@ class Store:
             self._lock.free()
             raise
 
+    @property
+    def rolled_until(self) -> int | None:
+        """How far the rollups reach; None before the first sweep. [us UTC]"""
+        return self._rolled_until
+
     @contextmanager
     def transaction(self) -> Iterator[sqlite3.Connection]:
         """Run the body in one transaction."""

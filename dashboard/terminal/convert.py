@@ -7,8 +7,6 @@ import json
 import math
 import sys
 from contextlib import contextmanager
-from difflib import get_close_matches
-from itertools import islice
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, TextIO
 
@@ -16,7 +14,7 @@ import numpy as np
 from tqdm import tqdm
 
 from analysis.errors import EuryhaleError, InvalidInputError
-from analysis.flags import Flag, is_filler, words
+from analysis.flags import Flag, words
 from analysis.water.compensation import (
     DEFAULT_COEFFICIENT_PERCENT_PER_K,
     DEFAULT_REFERENCE_TEMPERATURE_DEGC,
@@ -27,10 +25,13 @@ from analysis.water.conversion import Conversion
 from analysis.water.properties import Seawater, WaterKind
 from analysis.water.uncertainty import SensorAccuracy
 from analysis.water.units import CONDUCTIVITY_UNITS
+from ingest.tables import Table, TableError
 
 if TYPE_CHECKING:
     import argparse
-    from collections.abc import Iterator
+    from collections.abc import Callable, Iterator
+
+    from ingest.tables import CellRemark, Chunk, Layout
 
 
 HELP = "turn conductivity and temperature into salinity, density and osmolality"
@@ -42,7 +43,7 @@ CAUTION = (
 
 USAGE_ERROR = 2
 OTHER_ERROR = 1
-ROWS_AT_ONCE = 4096
+MOST_REMARKS = 5
 
 SHOWN = {
     "practical_salinity": ("practical salinity", "", 4),
@@ -72,8 +73,8 @@ def add_parser(subparsers: Any) -> None:
     one.add_argument("--pressure", type=float, help="sea pressure [dbar] (default: 0)")
     one.add_argument("--json", action="store_true", help="print one JSON object")
     table = parser.add_argument_group("a table")
-    table.add_argument("--input", type=Path, help="CSV file with one reading a row")
-    table.add_argument("--output", type=Path, help="CSV file to write (default: standard output)")
+    table.add_argument("--input", type=Path, help="delimited file with one reading a row")
+    table.add_argument("--output", type=Path, help="file to write (default: standard output)")
     table.add_argument(
         "--column",
         action="append",
@@ -126,8 +127,8 @@ def run(args: argparse.Namespace) -> int:
         return USAGE_ERROR
     except BrokenPipeError:
         raise  # the reader of our output has gone: the command says nothing more
-    except (UnicodeDecodeError, csv.Error) as error:
-        print(f"euryhale convert: {args.input or args.water}: found {error}; allowed: text in UTF-8", file=sys.stderr)
+    except UnicodeDecodeError as error:
+        print(f"euryhale convert: {args.water}: found {error}; allowed: text in UTF-8", file=sys.stderr)
         return OTHER_ERROR
     except (EuryhaleError, OSError) as error:
         print(f"euryhale convert: {error}", file=sys.stderr)
@@ -229,32 +230,17 @@ def _convert_table(args: argparse.Namespace, conversion: Conversion) -> int:
     columns = _columns(args.column)
     if args.output is not None and args.output.resolve() == args.input.resolve():
         raise UsageError("--output must be another file than --input")
-    with args.input.open(encoding="utf-8-sig", newline="") as source, _destination(args.output) as target:
-        first = source.readline()
-        dialect = _delimiter(first)
-        source.seek(0)
-        reader = csv.reader(source, delimiter=dialect)
-        header = next(reader, [])
-        positions = _positions(header, columns, where=str(args.input))
-        writer = csv.writer(target, delimiter=dialect, lineterminator="\n")
-        writer.writerow([*header, *SHOWN, "flags", *_doubt_names(conversion)])
-        is_watched = sys.stderr.isatty()
-        total = _row_count(args.input) if is_watched else None
-        with tqdm(
-            total=total, unit=" rows", unit_scale=True, file=sys.stderr, disable=not is_watched, leave=False
-        ) as bar:
-            for rows in _slices(row for row in reader if row):
-                writer.writerows(_answered(rows, len(header), positions, conversion, has_comma=dialect != ","))
-                bar.update(len(rows))
+    table = _table(args.input, columns, unit=args.unit)
+    separator = "," if table.layout.separator == " " else table.layout.separator
+    remarks: list[CellRemark] = []
+    with _destination(args.output) as target, _progress() as progress:
+        writer = csv.writer(target, delimiter=separator, lineterminator="\n")
+        writer.writerow([*table.layout.names, *SHOWN, "flags", *_doubt_names(conversion)])
+        for chunk in table.chunks(progress=progress, has_rows=True):
+            writer.writerows(_answered(chunk, table.layout, conversion))
+            remarks += chunk.remarks[: MOST_REMARKS + 1 - len(remarks)]
+    _tell(remarks)
     return 0
-
-
-def _row_count(path: Path) -> int | None:
-    """Return about how many rows a file holds, None where it can be read only once."""
-    if not path.is_file():
-        return None
-    with path.open("rb") as source:
-        return max(0, sum(part.count(b"\n") for part in iter(lambda: source.read(1 << 20), b"")) - 1)
 
 
 def _columns(pairs: list[str]) -> dict[str, str]:
@@ -271,69 +257,36 @@ def _columns(pairs: list[str]) -> dict[str, str]:
     return columns
 
 
-def _delimiter(line: str) -> str:
-    return max((",", ";", "\t"), key=line.count)
-
-
-def _positions(header: list[str], columns: dict[str, str], *, where: str) -> dict[str, int]:
-    names = [name.strip() for name in header]
-    for name in columns.values():
-        if name not in names:
-            near = get_close_matches(name, names, n=1)
-            hint = f"; nearest: {near[0]}" if near else ""
-            raise UsageError(f"{where}: no column {name!r}; there are: {', '.join(names) or 'none'}{hint}")
-    return {quantity: names.index(name) for quantity, name in columns.items()}
+def _table(path: Path, columns: dict[str, str], *, unit: str) -> Table:
+    try:
+        return Table(path, columns=columns, units={"conductivity": unit, "temperature": "degC", "pressure": "dbar"})
+    except TableError as error:
+        if error.column in columns.values():
+            raise UsageError(str(error)) from error
+        raise
 
 
 def _doubt_names(conversion: Conversion) -> list[str]:
     return [f"uncertainty_{key}" for key in (conversion.salinity_key, "osmolality_mOsm_kg")]
 
 
-def _slices(rows: Iterator[list[str]]) -> Iterator[list[list[str]]]:
-    while part := list(islice(rows, ROWS_AT_ONCE)):
-        yield part
-
-
-def _answered(
-    rows: list[list[str]], width: int, positions: dict[str, int], conversion: Conversion, *, has_comma: bool
-) -> Iterator[list[str]]:
-    given = {
-        quantity: np.array([_number(row, index, has_comma=has_comma) for row in rows])
-        for quantity, index in positions.items()
-    }
-    said = np.zeros(len(rows), dtype=np.uint32)
-    for quantity, index in positions.items():
-        said |= np.array([_absence(row, index) for row in rows], dtype=np.uint32)
-        filler = is_filler(given[quantity])
-        said |= np.where(filler, np.uint32(Flag.FILLER), np.uint32(0))
-        given[quantity] = np.where(filler, np.nan, given[quantity])
-    found = conversion.answers(
-        given["conductivity"],
-        temperature_degC=given["temperature"],
-        pressure_dbar=given.get("pressure", np.zeros(len(rows))),
-    )
-    # Where the reason is known, "not finite" says nothing more.
+def _answered(chunk: Chunk, layout: Layout, conversion: Conversion) -> Iterator[list[str]]:
+    """Yield each row as it was written, with the answers behind it."""
+    given = chunk.values
+    # A pressure that is missing costs a few thousandths of salinity near the surface, not the reading.
+    pressure = np.nan_to_num(given["pressure"]) if "pressure" in given else np.zeros(len(chunk))
+    found = conversion.answers(given["conductivity"], temperature_degC=given["temperature"], pressure_dbar=pressure)
+    said = chunk.flags["conductivity"] | chunk.flags["temperature"]
+    # Where the table knows why there is no number, "not finite" says nothing more.
     flags = np.where(said != 0, (found.flags & ~np.uint32(Flag.NOT_FINITE)) | said, found.flags)
     numbers = [*found.quantities.values()], [*found.uncertainties.values()]
-    for index, row in enumerate(rows):
-        padded = (row + [""] * width)[:width] if len(row) < width else row[:width]
-        before, after = ([_cell(values[index], has_comma=has_comma) for values in part] for part in numbers)
+    width = len(layout.names)
+    for index, row in enumerate(chunk.rows):
+        padded = (row + [""] * (width - len(row)))[:width]
+        before, after = (
+            [_cell(values[index], has_comma=layout.has_decimal_comma) for values in part] for part in numbers
+        )
         yield [*padded, *before, " ".join(words(int(flags[index]))), *after]
-
-
-def _number(row: list[str], index: int, *, has_comma: bool) -> float:
-    text = row[index].strip() if index < len(row) else ""
-    if has_comma and "." not in text:
-        text = text.replace(",", ".")
-    try:
-        return float(text)
-    except ValueError:
-        return math.nan
-
-
-def _absence(row: list[str], index: int) -> int:
-    is_there = index < len(row) and bool(row[index].strip())
-    return 0 if is_there else int(Flag.MISSING)
 
 
 def _cell(value: float, *, has_comma: bool) -> str:
@@ -341,6 +294,28 @@ def _cell(value: float, *, has_comma: bool) -> str:
         return ""
     text = f"{value:.9g}"
     return text.replace(".", ",") if has_comma else text
+
+
+def _tell(remarks: list[CellRemark]) -> None:
+    """Name the first cells that hold no number; the table goes on without them."""
+    for remark in remarks[:MOST_REMARKS]:
+        place = f"line {remark.line}, column {remark.column}"
+        print(f"euryhale convert: {place}: found {remark.found}; allowed: {remark.allowed}", file=sys.stderr)
+    if len(remarks) > MOST_REMARKS:
+        print("euryhale convert: and more; such rows are marked in the column flags", file=sys.stderr)
+
+
+@contextmanager
+def _progress() -> Iterator[Callable[[int, int], None]]:
+    """Yield what shows how far the reading is, on a terminal only."""
+    disable = not sys.stderr.isatty()
+    with tqdm(unit="B", unit_scale=True, file=sys.stderr, disable=disable, leave=False) as bar:
+
+        def show(done: int, total: int) -> None:
+            bar.total = total
+            bar.update(done - bar.n)
+
+        yield show
 
 
 @contextmanager

@@ -9,6 +9,7 @@ from pathlib import Path
 import pytest
 
 from dashboard.terminal import convert
+from ingest.tables.table import ROWS_A_CHUNK
 
 
 def run(*options: str) -> int:
@@ -123,7 +124,7 @@ def test_a_person_reads_units_and_the_caution(capsys: pytest.CaptureFixture[str]
     assert "not known" in capsys.readouterr().out
 
 
-def test_a_table_row_by_row(tmp_path: Path) -> None:
+def test_a_table_row_by_row(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     source, target = tmp_path / "in.csv", tmp_path / "out.csv"
     source.write_text(
         "when,ec,t\na,42.914,14.996401\nb,,15\nc,-99,15\nd,oops,15\ne,0.001,15\nf,42.914\n", encoding="utf-8"
@@ -134,17 +135,18 @@ def test_a_table_row_by_row(tmp_path: Path) -> None:
     )
     rows = table(target)
     assert [row["when"] for row in rows] == list("abcdef")
-    assert [row["flags"] for row in rows] == ["", "missing", "filler", "not_finite", "below_range", "missing"]
+    assert [row["flags"] for row in rows] == ["", "missing", "filler", "missing", "below_range", "missing"]
     assert float(rows[0]["practical_salinity"]) == pytest.approx(35.0, abs=1e-6)
     assert float(rows[0]["uncertainty_practical_salinity"]) == pytest.approx(0.2154, abs=2e-4)
     assert [row["osmolality_mOsm_kg"] for row in rows[1:4]] == ["", "", ""]
     assert float(rows[4]["osmolality_mOsm_kg"]) == 0.0
     assert list(tmp_path.glob("*.part")) == []
+    assert "line 5, column ec: found 'oops'" in capsys.readouterr().err
 
 
 def test_a_table_gives_what_single_values_give(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     source, target = tmp_path / "in.csv", tmp_path / "out.csv"
-    readings = [(f"{5 + 0.01 * n:.2f}", f"{10 + 0.002 * n:.3f}", f"{n % 7}") for n in range(convert.ROWS_AT_ONCE + 5)]
+    readings = [(f"{5 + 0.01 * n:.2f}", f"{10 + 0.002 * n:.3f}", f"{n % 7}") for n in range(ROWS_A_CHUNK + 5)]
     source.write_text("ec,t,p\n" + "\n".join(",".join(row) for row in readings) + "\n", encoding="utf-8")
     pairs = ("conductivity=ec", "temperature=t", "pressure=p")
     columns = [option for pair in pairs for option in ("--column", pair)]
@@ -167,7 +169,7 @@ def test_a_progress_bar_on_a_terminal_only(
     monkeypatch.setattr("sys.stderr.isatty", lambda: is_terminal, raising=False)
     columns = ("--column", "conductivity=ec", "--column", "temperature=t")
     assert run("--input", str(source), *columns, "--output", str(tmp_path / "out.csv")) == 0
-    assert ("/10.0" in capsys.readouterr().err) == is_terminal
+    assert ("B/s" in capsys.readouterr().err) == is_terminal
 
 
 def test_semicolons_and_decimal_commas(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
@@ -216,13 +218,13 @@ def test_wrong_use_is_status_2_on_standard_error(
 def test_a_column_that_is_not_there_names_the_nearest(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
     source = tmp_path / "in.csv"
     source.write_text("cond_mS,temp\n1,2\n", encoding="utf-8")
-    columns = ("--column", "conductivity=cond_ms", "--column", "temperature=temp")
+    columns = ("--column", "conductivity=condu_mS", "--column", "temperature=temp")
     assert run("--input", str(source), *columns, "--output", str(tmp_path / "out.csv")) == 2
     assert "nearest: cond_mS" in capsys.readouterr().err
     assert not (tmp_path / "out.csv").exists()
 
 
-@pytest.mark.parametrize("content", [None, b"ec,t\n1,\xff\xfe\n"])
+@pytest.mark.parametrize("content", [None, b"PK\x03\x04 a spreadsheet", b""])
 def test_a_file_that_cannot_be_read_is_status_1(
     tmp_path: Path, capsys: pytest.CaptureFixture[str], content: bytes | None
 ) -> None:

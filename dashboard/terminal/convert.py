@@ -8,23 +8,23 @@ import math
 import sys
 from contextlib import contextmanager
 from pathlib import Path
-from typing import TYPE_CHECKING, Any, TextIO
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from tqdm import tqdm
 
 from analysis.errors import EuryhaleError, InvalidInputError
 from analysis.flags import Flag, words
-from analysis.water.compensation import (
-    DEFAULT_COEFFICIENT_PERCENT_PER_K,
-    DEFAULT_REFERENCE_TEMPERATURE_DEGC,
-    Compensation,
-    CompensationMethod,
-)
 from analysis.water.conversion import Conversion
-from analysis.water.properties import Seawater, WaterKind
 from analysis.water.uncertainty import SensorAccuracy
-from analysis.water.units import CONDUCTIVITY_UNITS
+from dashboard.terminal.sensor_options import (
+    UsageError,
+    add_sensor_options,
+    add_water_option,
+    compensation_of,
+    destination,
+    water_kind_of,
+)
 from ingest.tables import Table, TableError
 
 if TYPE_CHECKING:
@@ -60,10 +60,6 @@ SHOWN = {
 INPUT_COLUMNS = ("conductivity", "temperature", "pressure")
 
 
-class UsageError(EuryhaleError):
-    """Options that do not go together."""
-
-
 def add_parser(subparsers: Any) -> None:
     """Add this command to the parser."""
     parser = subparsers.add_parser("convert", help=HELP, description=HELP, epilog=CAUTION)
@@ -87,17 +83,7 @@ def add_parser(subparsers: Any) -> None:
 
 
 def _add_sensor_options(group: argparse._ArgumentGroup) -> None:
-    group.add_argument("--unit", choices=tuple(CONDUCTIVITY_UNITS), default="mS/cm", help="default: mS/cm")
-    group.add_argument(
-        "--compensated", action="store_true", help="the reading was brought to a reference temperature by the meter"
-    )
-    group.add_argument(
-        "--compensation",
-        choices=tuple(method.value for method in CompensationMethod),
-        help="how the meter compensates: linear (default) or natural-water (ISO 7888); implies --compensated",
-    )
-    group.add_argument("--coefficient", type=float, help="of linear compensation [%%/K] (default: 1.91)")
-    group.add_argument("--reference-temperature", type=float, help="of the meter [degC] (default: 25)")
+    add_sensor_options(group)
     group.add_argument(
         "--conductivity-accuracy", type=float, default=0.5, help="stated accuracy [%% of reading] (default: 0.5)"
     )
@@ -105,12 +91,7 @@ def _add_sensor_options(group: argparse._ArgumentGroup) -> None:
 
 
 def _add_water_options(group: argparse._ArgumentGroup) -> None:
-    group.add_argument(
-        "--water",
-        default="seawater",
-        metavar="seawater|sodium-chloride|FILE.yaml",
-        help="kind of water; a file holds a laboratory analysis of major ions (default: seawater)",
-    )
+    add_water_option(group)
     group.add_argument("--latitude", type=float, help="where the sea water comes from [degrees north]")
     group.add_argument("--longitude", type=float, help="where the sea water comes from [degrees east]")
 
@@ -144,47 +125,17 @@ def _conversion(args: argparse.Namespace) -> Conversion:
         accuracy = SensorAccuracy(
             conductivity_percent=args.conductivity_accuracy, temperature_K=args.temperature_accuracy
         )
-        compensation = _compensation(args)
+        compensation = compensation_of(args)
     except InvalidInputError as error:
         raise UsageError(str(error)) from error
     return Conversion(
-        kind=_water_kind(args.water),
+        kind=water_kind_of(args.water),
         unit=args.unit,
         compensation=compensation,
         accuracy=accuracy,
         longitude=math.nan if args.longitude is None else args.longitude,
         latitude=math.nan if args.latitude is None else args.latitude,
     )
-
-
-def _compensation(args: argparse.Namespace) -> Compensation | None:
-    settings = (args.coefficient, args.reference_temperature)
-    if not args.compensated and args.compensation is None:
-        if settings != (None, None):
-            raise UsageError("--coefficient and --reference-temperature need --compensated")
-        return None
-    method = CompensationMethod(args.compensation or CompensationMethod.LINEAR)
-    if method is CompensationMethod.NATURAL_WATER and args.coefficient is not None:
-        raise UsageError("--coefficient belongs to linear compensation")
-    return Compensation(
-        method=method,
-        coefficient_percent_per_K=DEFAULT_COEFFICIENT_PERCENT_PER_K if settings[0] is None else settings[0],
-        reference_temperature_degC=DEFAULT_REFERENCE_TEMPERATURE_DEGC if settings[1] is None else settings[1],
-    )
-
-
-def _water_kind(word: str) -> WaterKind:
-    if word == "seawater":
-        return Seawater()
-    if word == "sodium-chloride":
-        from analysis.water.sodium_chloride_water import SodiumChlorideWater
-
-        return SodiumChlorideWater()
-    if word.lower().endswith((".yaml", ".yml")):
-        from dashboard.terminal.analysis_file import water_of_analysis_file
-
-        return water_of_analysis_file(Path(word))
-    raise UsageError(f"--water: found {word!r}; allowed: seawater, sodium-chloride, or a file that ends in .yaml")
 
 
 def _convert_one(args: argparse.Namespace, conversion: Conversion) -> int:
@@ -233,7 +184,7 @@ def _convert_table(args: argparse.Namespace, conversion: Conversion) -> int:
     table = _table(args.input, columns, unit=args.unit)
     separator = "," if table.layout.separator == " " else table.layout.separator
     remarks: list[CellRemark] = []
-    with _destination(args.output) as target, _progress() as progress:
+    with destination(args.output) as target, _progress() as progress:
         writer = csv.writer(target, delimiter=separator, lineterminator="\n")
         writer.writerow([*table.layout.names, *SHOWN, "flags", *_doubt_names(conversion)])
         for chunk in table.chunks(progress=progress, has_rows=True):
@@ -316,18 +267,3 @@ def _progress() -> Iterator[Callable[[int, int], None]]:
             bar.update(done - bar.n)
 
         yield show
-
-
-@contextmanager
-def _destination(path: Path | None) -> Iterator[TextIO]:
-    """Yield where to write: a file that appears under its name only when it is whole, or standard output."""
-    if path is None:
-        yield sys.stdout
-        return
-    part = path.with_name(path.name + ".part")
-    try:
-        with part.open("w", encoding="utf-8", newline="") as target:
-            yield target
-        part.replace(path)
-    finally:
-        part.unlink(missing_ok=True)

@@ -69,13 +69,14 @@ class Groups:
 def in_steps(value: FloatArray) -> tuple[IntArray, BoolArray | None]:
     """Return values as whole numbers of `RESOLUTION`, and where there is none (None where all are there)."""
     scaled = value * (1.0 / RESOLUTION)
-    np.clip(scaled, -LARGEST_KEPT / RESOLUTION, LARGEST_KEPT / RESOLUTION, out=scaled)
+    np.maximum(scaled, -LARGEST_KEPT / RESOLUTION, out=scaled)
+    np.minimum(scaled, LARGEST_KEPT / RESOLUTION, out=scaled)
     np.rint(scaled, out=scaled)
+    if not np.isnan(scaled.sum()):  # cut as they are, finite values cannot add up to NaN
+        return scaled.astype(np.int64), None
     absent = np.isnan(scaled)
-    if absent.any():
-        scaled[absent] = 0.0
-        return scaled.astype(np.int64), absent
-    return scaled.astype(np.int64), None
+    scaled[absent] = 0.0
+    return scaled.astype(np.int64), absent
 
 
 def grouped(rows: Rows, *, bucket_us: IntArray) -> Groups:
@@ -179,6 +180,9 @@ def join_with_state(groups: Groups, state: QualityState) -> BoolArray:
     first = groups.first_of_segment
     owners = groups.sensor[first]
     goes_on = groups.bucket[first] == state.bucket[owners]
+    if groups.of_row is None and bool(goes_on.all()):
+        groups.tally = joined(groups.tally, state.tally[owners])
+        return np.asarray(goes_on)
     which = first[goes_on]
     if which.shape[0]:
         groups.tally[which] = joined(groups.tally[which], state.tally[groups.sensor[which]])

@@ -30,7 +30,7 @@ import numpy as np
 from analysis.flags import Flag, Quality
 from analysis.sensor.quality import moment
 from analysis.sensor.quality.history import judged_by_history
-from analysis.sensor.quality.result import Amendments, QualityResult, joined
+from analysis.sensor.quality.result import NO_AMENDMENTS, QualityResult, joined
 from analysis.sensor.quality.rows import laid_out, order_by_sensor
 from analysis.sensor.quality.state import NEVER_US
 from analysis.sensor.quality.words import TEST_FLAGS, TESTS, VARIABLES, QualityTest, Variable
@@ -168,14 +168,14 @@ def _nothing() -> QualityResult:
         quality=np.zeros(0, dtype=np.uint8),
         flags=np.zeros(0, dtype=np.uint32),
         ring_changed=none,
-        amendments=Amendments.none(),
+        amendments=NO_AMENDMENTS,
     )
 
 
 def _late(rows: Rows, state: QualityState) -> BoolArray | None:
     """Return where a reading is not newer than its sensor's newest; None where all are."""
     late = rows.time_us <= rows.pick(state.newest_us)
-    if rows.count > 1:
+    if rows.owners.shape[0] < rows.count:
         again = rows.time_us[1:] == rows.time_us[:-1]
         if again.any():
             late[1:] |= again & (rows.sensor[1:] == rows.sensor[:-1])
@@ -194,7 +194,8 @@ def _judge_moment(levels: QualityArray, rows: Rows, thresholds: Thresholds) -> B
             rows.value, time_us=rows.time_us, table=thresholds.climatology, sensor=rows.sensor
         )
     usable = finite[Variable.CONDUCTIVITY] & finite[Variable.TEMPERATURE]
-    usable &= ~(fail[0] | fail[1] | fail[2] | dry)
+    if fail.any() or dry.any():
+        usable &= ~(fail.any(axis=0) | dry)
     return np.asarray(usable)
 
 
@@ -228,14 +229,16 @@ def _assembled(
     levels: QualityArray, rows: Rows, known: FlagArray, late: BoolArray | None
 ) -> tuple[QualityArray, QualityArray, FlagArray, QualityArray]:
     """Return rolled-up flags, flags by variable, flag words and flags by test."""
-    absent = ~np.isfinite(rows.value)
-    has_absent = bool(absent.any())
+    has_absent = not np.isfinite(rows.value).all()
     if has_absent:
+        absent = ~np.isfinite(rows.value)
         unphysical = absent & ((known & _UNPHYSICAL) != 0)
         levels[QualityTest.GROSS_RANGE][unphysical] = 4
         absent &= ~unphysical
-    found = levels.max(axis=1) >= 3
-    flags = known | np.bitwise_or.reduce(np.where(found, _TEST_BITS, np.uint32(0)), axis=0)
+    flags = known.copy()
+    if int(levels.max()) >= 3:
+        found = levels.max(axis=1) >= 3
+        flags |= np.bitwise_or.reduce(np.where(found, _TEST_BITS, np.uint32(0)), axis=0)
     if late is not None:
         flags[late] |= np.uint32(Flag.LATE)
     over_tests = levels[_VALUE_TESTS].max(axis=0)

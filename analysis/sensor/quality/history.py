@@ -9,7 +9,7 @@ import numpy as np
 from analysis.flags import Quality
 from analysis.sensor.quality import buckets, windows
 from analysis.sensor.quality.moment import level
-from analysis.sensor.quality.result import Amendments
+from analysis.sensor.quality.result import NO_AMENDMENTS, Amendments
 from analysis.sensor.quality.state import (
     ATTENUATED_LEVEL,
     BEYOND,
@@ -72,7 +72,7 @@ def judged_by_history(
         return _judge(levels, all_rows, state, thresholds)
     rows = all_rows.subset(keep)
     if not rows.count:
-        return _NOBODY, Amendments.none()
+        return _NOBODY, NO_AMENDMENTS
     part = np.zeros((*levels.shape[:2], rows.count), dtype=np.uint8)
     outcome = _judge(part, rows, state, thresholds)
     history_tests = slice(QualityTest.SPIKE, QualityTest.IN_AIR)
@@ -92,16 +92,16 @@ def _judge(
     buckets.tally(groups, number, absent, compared=found.follows_two, noisy=noisy)
     goes_on = buckets.join_with_state(groups, state)
     verdict, changed = _verdicts(groups, goes_on, state, thresholds)
-    amendments = [_judge_spikes(levels, rows, found, limits)]
+    spikes = _judge_spikes(levels, rows, found, limits)
     _judge_rates(levels, found, groups, verdict)
     _judge_flat_lines(levels, number, absent, groups, goes_on, verdict, state, thresholds)
     levels[QualityTest.ATTENUATED_SIGNAL] = groups.per_row(verdict[ATTENUATED_LEVEL].astype(np.uint8))
     if bool((verdict[NEIGHBOUR_LEVEL] > 0).any()):
         levels[QualityTest.NEIGHBOUR] = groups.per_row(verdict[NEIGHBOUR_LEVEL].astype(np.uint8))
     is_noisy = _judge_noise(levels, noisy, found, groups, goes_on, verdict, state, thresholds)
-    amendments.append(_noise_onsets(rows, is_noisy, found, state, thresholds))
+    onsets = _noise_onsets(rows, is_noisy, found, state, thresholds)
     _remember(rows, found, groups, is_noisy, state)
-    return changed, Amendments.joined(amendments)
+    return changed, Amendments.joined((spikes, onsets))
 
 
 def _verdicts(
@@ -212,9 +212,9 @@ def _judge_spikes(levels: QualityArray, rows: Rows, found: Steps, limits: FloatA
     settled = found.pending_jump > suspect
     settled &= found.follows_two
     if not settled.any():
-        return Amendments.none()
+        return NO_AMENDMENTS
     variable, row = np.nonzero(settled)
-    size = found.spike_size[variable, row]
+    size = found.spike_size()[variable, row]
     high = np.broadcast_to(fail, found.jump.shape)[variable, row]
     low = np.broadcast_to(suspect, found.jump.shape)[variable, row]
     verdict = _FROM_LEVEL[level(np.ones(size.shape, dtype=np.bool_), size > low, size > high)]
@@ -233,12 +233,16 @@ def _judge_rates(levels: QualityArray, found: Steps, groups: Groups, verdict: Fl
     limit = groups.per_row(verdict[RATE_LIMIT])
     judged = np.isfinite(limit)
     judged &= found.follows
-    levels[QualityTest.RATE_OF_CHANGE] = level(judged, judged & (found.jump > limit))
+    fast = found.jump > limit
+    fast &= judged
+    levels[QualityTest.RATE_OF_CHANGE] = level(judged, fast)
     warm = judged[Variable.TEMPERATURE]
-    tight = groups.per_row(verdict[TIGHT_RATE_LIMIT, Variable.TEMPERATURE])
-    silent = does_not_answer(found, tight_limit=tight)
-    silent &= warm
-    levels[QualityTest.MULTI_VARIATE, Variable.TEMPERATURE] = level(warm, silent)
+    steps_up = found.jump[Variable.TEMPERATURE] > groups.per_row(verdict[TIGHT_RATE_LIMIT, Variable.TEMPERATURE])
+    if steps_up.any():
+        silent = steps_up & warm & does_not_answer(found)
+        levels[QualityTest.MULTI_VARIATE, Variable.TEMPERATURE] = level(warm, silent)
+    else:
+        levels[QualityTest.MULTI_VARIATE, Variable.TEMPERATURE] = warm
 
 
 def _rows_of(groups: Groups, group: int) -> slice:
@@ -267,11 +271,15 @@ def _judge_flat_lines(
 ) -> None:
     judged = verdict[FLAT_JUDGED] > 0
     levels[QualityTest.FLAT_LINE] = groups.per_row(judged)
-    due = windows.shrunk(verdict[FLAT_SUSPECT_LOW].T * RESOLUTION).T
-    allowed = np.floor(due * thresholds.flat_tolerance[:, groups.sensor] / RESOLUTION + 0.5)
-    candidates = judged & (verdict[FLAT_SUSPECT_HIGH] - verdict[FLAT_SUSPECT_LOW] <= allowed)
+    spread = verdict[FLAT_SUSPECT_HIGH] - verdict[FLAT_SUSPECT_LOW]
+    allowed = thresholds.flat_tolerance.take(groups.sensor, axis=1) * (1.0 / RESOLUTION) + 0.5
+    candidates = spread <= allowed
+    candidates &= judged
     if not candidates.any():
         return
+    due = windows.shrunk(verdict[FLAT_SUSPECT_LOW].T * RESOLUTION).T
+    allowed = np.floor(due * thresholds.flat_tolerance[:, groups.sensor] / RESOLUTION + 0.5)
+    candidates &= spread <= allowed
     low = _carried(groups, goes_on, state, LOWEST)
     high = _carried(groups, goes_on, state, HIGHEST)
     for variable, group in zip(*np.nonzero(candidates), strict=True):
@@ -300,11 +308,13 @@ def _judge_noise(
     thresholds: Thresholds,
 ) -> BoolArray:
     """Fill in the noise test; return where a sensor is noisy, (3, rows)."""
-    share = thresholds.noise_share[groups.sensor]
-    most = verdict[NOISY_BEFORE] + groups.tally[:, NOISY].T
     judged = verdict[COMPARED_BEFORE] >= FEWEST_COMPARED
     levels[QualityTest.NOISE] = groups.per_row(judged)
     is_noisy = np.zeros(noisy.shape, dtype=np.bool_)
+    most = verdict[NOISY_BEFORE] + groups.tally[:, NOISY].T
+    if not most.any():
+        return is_noisy
+    share = thresholds.noise_share[groups.sensor]
     candidates = judged & (most >= share * verdict[COMPARED_BEFORE])
     if not candidates.any():
         return is_noisy
@@ -324,7 +334,7 @@ def _noise_onsets(
 ) -> Amendments:
     """Return what the first noisy reading says of the window before it."""
     if not is_noisy.any():
-        return Amendments.none()
+        return NO_AMENDMENTS
     was = np.empty_like(is_noisy)
     was[:, 1:] = is_noisy[:, :-1]
     was[:, rows.starts] = state.was_noisy[rows.owners].T

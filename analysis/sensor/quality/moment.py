@@ -23,6 +23,8 @@ def level(judged: BoolArray, suspect: BoolArray, fail: BoolArray | None = None) 
 
     *fail* must imply *suspect*, and both must be false where *judged* is false.
     """
+    if not suspect.any():
+        return judged.view(np.uint8)
     out = judged.view(np.uint8) + (suspect.view(np.uint8) << 1)
     if fail is not None:
         out += fail.view(np.uint8)
@@ -56,9 +58,11 @@ def gross_range(value: FloatArray, limits: FloatArray) -> tuple[BoolArray, BoolA
     tuple of ndarray of bool
         Suspect (or worse) and fail. False for NaN.
     """
-    fail = (value < limits[FAIL_LOW]) | (value > limits[FAIL_HIGH])
-    suspect = (value < limits[SUSPECT_LOW]) | (value > limits[SUSPECT_HIGH]) | fail
-    return suspect, fail
+    suspect = value < limits[SUSPECT_LOW]
+    suspect |= value > limits[SUSPECT_HIGH]
+    if not suspect.any():  # the suspect span lies within the fail span
+        return suspect, suspect
+    return suspect, (value < limits[FAIL_LOW]) | (value > limits[FAIL_HIGH])
 
 
 def month_index(time_us: IntArray) -> IntArray:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import TYPE_CHECKING, Self
+from typing import TYPE_CHECKING, Final, Self
 
 import numpy as np
 
@@ -41,17 +41,11 @@ class Amendments:
         return int(self.sensor.shape[0])
 
     @classmethod
-    def none(cls) -> Self:
-        """Return no amendments."""
-        empty = np.zeros(0, dtype=np.int64)
-        return cls(empty, empty, empty, empty, empty, np.zeros(0, dtype=np.uint8))
-
-    @classmethod
     def joined(cls, parts: Sequence[Self]) -> Self:
-        """Return the amendments of several blocks, in order."""
+        """Return the amendments of one or more blocks, in order."""
         full = [part for part in parts if len(part)]
         if not full:
-            return cls.none()
+            return parts[0]
         if len(full) == 1:
             return full[0]
         return cls(
@@ -60,6 +54,10 @@ class Amendments:
                 for name in ("sensor", "variable", "test", "from_us", "to_us", "quality")
             )
         )
+
+
+_NOTHING = np.zeros(0, dtype=np.int64)
+NO_AMENDMENTS: Final = Amendments(_NOTHING, _NOTHING, _NOTHING, _NOTHING, _NOTHING, np.zeros(0, dtype=np.uint8))
 
 
 @dataclass(frozen=True, slots=True)

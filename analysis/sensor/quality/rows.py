@@ -64,13 +64,15 @@ def laid_out(sensor: IntArray, time_us: IntArray, value: FloatArray) -> Rows:
         starts = ends = np.zeros(count, dtype=np.int64)
     else:
         changes = sensor[1:] != sensor[:-1]
+        if changes.all():
+            each = np.arange(count)
+            return Rows(sensor=sensor, time_us=time_us, value=value, starts=each, ends=each, owners=sensor, count=count)
         inner = np.flatnonzero(changes)
         starts, ends = np.empty(inner.shape[0] + 1, dtype=np.int64), np.empty(inner.shape[0] + 1, dtype=np.int64)
         starts[0], ends[-1] = 0, count - 1
         np.add(inner, 1, out=starts[1:])
         ends[:-1] = inner
-        if starts.shape[0] < count:
-            _check_order(sensor, time_us, changes)
+        _check_order(sensor, time_us, changes)
     return Rows(
         sensor=sensor, time_us=time_us, value=value, starts=starts, ends=ends, owners=sensor[starts], count=count
     )

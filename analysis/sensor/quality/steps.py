@@ -36,8 +36,6 @@ class Steps:
     """Size of the step to each row from the reading before."""
     pending_jump: FloatArray
     """Size of the step to the reading before, from the one before that."""
-    spike_size: FloatArray
-    """How far the reading *before* each row stands out of both its neighbours; 0 where it does not."""
     bend: FloatArray
     """Second difference at the reading before each row: its distance from the middle of its neighbours."""
     conductivity_step: FloatArray
@@ -52,6 +50,20 @@ class Steps:
     last_value: FloatArray
     """(segments, 3, 3): what the state keeps."""
     last_us: IntArray
+    all_steps: FloatArray
+    """Signed steps, remembered readings included."""
+    back: tuple[Index, Index, Index]
+    """Where in `all_steps` stand the steps that end at each row, one reading before it, and two before it."""
+
+    def spike_size(self) -> FloatArray:
+        """Return how far the reading *before* each row stands out of both its neighbours; 0 where it does not."""
+        size, rising = np.abs(self.all_steps), self.all_steps > 0.0
+        stands_out = np.minimum(size[..., :-1], size[..., 1:])
+        stands_out *= rising[..., :-1] != rising[..., 1:]
+        _, two, three = self.back
+        candidate, forerunner = stands_out[..., two], stands_out[..., three]
+        is_lit = (forerunner <= SHADOW * candidate) | np.isnan(forerunner)
+        return np.asarray(candidate * is_lit)
 
 
 def steps(rows: Rows, state: QualityState, *, gap_us: IntArray) -> Steps:
@@ -67,23 +79,16 @@ def steps(rows: Rows, state: QualityState, *, gap_us: IntArray) -> Steps:
     """
     laid = _with_history(rows, state)
     value, time_us = laid.value, laid.time_us
-    one, two, three = laid.back
+    one, two, _ = laid.back
     step = value[..., 1:] - value[..., :-1]
     size = np.abs(step)
     passed = time_us[..., 1:] - time_us[..., :-1]
-    rising = step > 0.0
-    stands_out = np.minimum(size[..., :-1], size[..., 1:])
-    stands_out *= rising[..., :-1] != rising[..., 1:]
     bend = np.abs(step[..., two] - step[..., one])
     bend *= 0.5
-    candidate = stands_out[..., two]
-    is_lit = stands_out[..., three] <= SHADOW * candidate
-    is_lit |= np.isnan(stands_out[..., three])
     follows = passed[..., one] <= gap_us
     return Steps(
         jump=size[..., one],
         pending_jump=size[..., two],
-        spike_size=candidate * is_lit,
         bend=bend,
         conductivity_step=step[Variable.CONDUCTIVITY][..., one],
         conductivity_before=value[Variable.CONDUCTIVITY][..., one],
@@ -92,6 +97,8 @@ def steps(rows: Rows, state: QualityState, *, gap_us: IntArray) -> Steps:
         before_us=time_us[..., one],
         last_value=laid.last_value,
         last_us=laid.last_us,
+        all_steps=step,
+        back=laid.back,
     )
 
 
@@ -170,15 +177,13 @@ def _many(rows: Rows, state: QualityState) -> _Laid:
     )
 
 
-def does_not_answer(found: Steps, *, tight_limit: FloatArray) -> BoolArray:
+def does_not_answer(found: Steps) -> BoolArray:
     """Return True where temperature steps and conductivity does not follow it (QARTOD test 9).
 
     The manual's rule: the first variable fails a tight rate test, the second does not move. Conductivity of the
     same water moves about 2 % with each kelvin; less than half of that is taken as "does not move". Salt water
     that warms and thins at once by just that much would be called suspect too, never fail.
     """
-    jump = found.jump[Variable.TEMPERATURE]
-    answer = np.abs(found.conductivity_step)
-    due = jump * found.conductivity_before
+    due = found.jump[Variable.TEMPERATURE] * found.conductivity_before
     due *= HALF_OF_CONDUCTIVITY_PER_K
-    return np.asarray((jump > tight_limit) & (answer < due))
+    return np.asarray(np.abs(found.conductivity_step) < due)

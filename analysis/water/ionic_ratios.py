@@ -314,6 +314,58 @@ def doses(
     return sorted(found, key=lambda dose: dose.grams)
 
 
+RESTORED_IONS: Final = ("K", "Mg", "Ca")
+"""Ions in which inland waters fall short of sea water, and that farms restore (common practice)."""
+
+
+def restorations(
+    analysis: IonAnalysis,
+    *,
+    volume_L: float,
+    share_percent: float = 100.0,
+    dry_fractions: Mapping[str, float] | None = None,
+) -> dict[str, list[Dose]]:
+    """Return, for each of potassium, magnesium and calcium that is short, what would bring it to sea water's share.
+
+    The doses for one ion are alternatives, not a sum; each brings other ions along (`Dose.added_mg_L`), so the
+    water wants a new analysis afterwards. Try it on a few animals first.
+
+    Parameters
+    ----------
+    analysis : IonAnalysis
+        The water as it is.
+    volume_L : float
+        [L]
+    share_percent : float
+        Of what sea water diluted to the same dissolved mass would hold; farms often aim lower. [%]
+    dry_fractions : mapping of str to float, optional
+        As in `doses`.
+
+    Returns
+    -------
+    dict of str to list of Dose
+        By ion; an ion that is not short is left out.
+
+    Raises
+    ------
+    InvalidInputError
+        If the share, a volume or a fraction cannot be.
+    """
+    if not (math.isfinite(share_percent) and 0.0 < share_percent <= 200.0):
+        raise InvalidInputError("share of sea water", found=share_percent, allowed="above 0, up to 200 %")
+    found = {
+        ion: doses(
+            analysis,
+            ion=ion,
+            wanted_mg_L=0.01 * share_percent * seawater_equivalent_mg_L(analysis, ion),
+            volume_L=volume_L,
+            dry_fractions=dry_fractions,
+        )
+        for ion in RESTORED_IONS
+    }
+    return {ion: alternatives for ion, alternatives in found.items() if alternatives}
+
+
 def _dose(key: str, ion: str, short_mg_L: float, volume_L: float, dry_fraction: float) -> Dose:
     if not 0.0 < dry_fraction <= 1.0:
         raise InvalidInputError(f"dry fraction of {key}", found=dry_fraction, allowed="above 0, up to 1")

@@ -172,7 +172,7 @@ def screened(conductivity: FloatArray, temperature: FloatArray, pressure: FloatA
 
 def mark(flags: FlagArray, where: BoolArray, flag: Flag) -> None:
     """Add *flag* to *flags*, in place, where *where* is true."""
-    np.bitwise_or(flags, np.uint32(flag), out=flags, where=np.broadcast_to(where, flags.shape))
+    flags |= np.multiply(where, np.uint32(flag), dtype=np.uint32)
 
 
 def _is_outside(values: FloatArray, span: tuple[float, float]) -> BoolArray:

@@ -5,7 +5,15 @@ import math
 import pytest
 
 from analysis.errors import InvalidInputError
-from analysis.water.ionic_ratios import AMENDMENTS, THRESHOLDS, doses, ratios, seawater_equivalent_mg_L, verdicts
+from analysis.water.ionic_ratios import (
+    AMENDMENTS,
+    THRESHOLDS,
+    doses,
+    ratios,
+    restorations,
+    seawater_equivalent_mg_L,
+    verdicts,
+)
 from analysis.water.ions import IonAnalysis
 from tests.analysis.water.test_ions import WELL
 
@@ -92,3 +100,17 @@ def test_no_salt_holds_more_ions_than_itself_and_its_charges_balance() -> None:
         size = sum(share / IONS[ion].molar_mass_g_mol * abs(IONS[ion].charge) for ion, share in salt.content.items())
         # published contents of products as sold are rounded: K2SO4.2MgSO4 has 10.5 % Mg where the formula gives 11.1
         assert abs(charge) <= 0.03 * size, key
+
+
+def test_restoring_what_sea_water_would_hold() -> None:
+    pond = IonAnalysis("pond", BOYD_POND)
+    found = restorations(pond, volume_L=1000.0)
+    assert "K" in found
+    assert "Mg" not in found  # 425 mg/L is more than sea water of that salinity holds
+    for dose in found["K"]:
+        assert 0.9 + dose.added_mg_L["K"] == pytest.approx(seawater_equivalent_mg_L(pond, "K"))
+    half = restorations(pond, volume_L=1000.0, share_percent=50.0)["K"]
+    assert half[0].grams < 0.51 * found["K"][0].grams
+    assert restorations(IonAnalysis("sea", BOYD_SEAWATER), volume_L=1.0, share_percent=90.0) == {}
+    with pytest.raises(InvalidInputError, match="share"):
+        restorations(pond, volume_L=1.0, share_percent=0.0)

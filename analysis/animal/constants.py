@@ -41,7 +41,7 @@ class Constants:
     shock_fraction: float = 0.61
     incipient_fraction: float = 0.54
     cold_mOsm_kg_K: float = 13.4
-    warm_mOsm_kg_K: float = 15.0
+    warm_mOsm_kg_K: float = 15.6
     q10: float = 2.8
     repair_h: float = 48.0
 

@@ -441,6 +441,34 @@ def advance_series(
     return final, _scattered(stress, valid, rows=times.size)
 
 
+def exposure_of_series(
+    figures: StageArrays,
+    state: CohortState,
+    *,
+    times_us: IntArray,
+    osmolality_mOsm_kg: ArrayLike,
+    temperature_degC: ArrayLike,
+    gap: GapRule | None = None,
+    model: Constants | None = None,
+) -> FloatArray:
+    """Return the exposure of one tank at every row, 1 at the published median, not capped; NaN where the water is.
+
+    Parameters and errors as `advance_series`.
+    """
+    water, warmth = (np.asarray(values, dtype=np.float64) for values in (osmolality_mOsm_kg, temperature_degC))
+    times = np.asarray(times_us, dtype=np.int64)
+    _check_series(figures, state, times=times, shapes=(water.shape, warmth.shape))
+    valid = np.nonzero(~np.isnan(water))[0]
+    before_us = int(state.updated_at_us[0]) or (int(times[0]) if times.size else 0)
+    track = _tracked(
+        figures, state, seconds=_seconds_between(times[valid], before_us, float(state.pending_s[0])),
+        water=water[valid], warmth=warmth[valid], gap=gap or GapRule(), model=model or constants(),
+    )  # fmt: skip
+    found = np.full(times.shape, np.nan)
+    found[valid] = track.exposure
+    return found
+
+
 def _check_series(
     figures: StageArrays, state: CohortState, *, times: IntArray, shapes: tuple[tuple[int, ...], ...]
 ) -> None:

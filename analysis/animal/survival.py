@@ -124,7 +124,9 @@ def survival_of_schedule(
         )
     if np.any(lasting < 0.0):
         raise InvalidInputError("hours", found=float(lasting.min()), allowed="0 or more hours")
-    basis = _basis(stage, lowest=float(np.nanmin(water)), highest=float(np.nanmax(water)), home=acclimated_mOsm_kg)
+    basis = survival_basis(
+        stage, lowest=float(np.nanmin(water)), highest=float(np.nanmax(water)), home=acclimated_mOsm_kg
+    )
     if basis is None:
         return None
     figures = StageArrays.from_stages([stage])
@@ -152,8 +154,18 @@ def estimate(exposure: float, *, steepness: float, certainty: Certainty, sources
 _WEAKER = tuple(Certainty[name] for name in ("SITE", "LOOKED_UP", "DERIVED", "PROXY", "MEMORY", "ASSUMED"))
 
 
-def _basis(stage: Stage, *, lowest: float, highest: float, home: float) -> tuple[Certainty, tuple[str, ...]] | None:
-    """Return how sure the times to death are on the sides that the water goes to; None where there are none."""
+def survival_basis(
+    stage: Stage, *, lowest: float, highest: float, home: float
+) -> tuple[Certainty, tuple[str, ...]] | None:
+    """Return how sure the times to death are, and their sources, on the sides that the water goes to; None: not known.
+
+    Parameters
+    ----------
+    stage : Stage
+        The animals.
+    lowest, highest, home : float
+        The water that they meet, and what they are used to. [mOsm/kg]
+    """
     if not stage.supports & Supports.EXPOSURE:
         return None
     ready = resolved(stage)

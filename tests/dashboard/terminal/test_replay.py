@@ -130,11 +130,9 @@ def test_faster_than_life_no_row_states_a_time_to_come_and_the_last_is_now():
 
 @pytest.mark.slow
 @pytest.mark.shared_data
-def test_a_real_year_of_a_tidal_creek(tmp_path, capsys):
+def test_a_real_year_of_a_tidal_creek(tmp_path, capsys, shared_data):
     """17,568 rows, of which 1,266 hold neither temperature nor conductance (counted here by hand in the file)."""
-    file = Path(__file__).parents[4] / "shared" / "data" / "estuary_creek_2004.csv"
-    if not file.exists():
-        pytest.skip(f"the record {file.name} is not beside the project, in ../shared/data")
+    file = shared_data / "estuary_creek_2004.csv"
     lines = file.read_text(encoding="utf-8").splitlines()[1:]
     blank = sum(1 for line in lines if line.split(",")[1:3] == ["", ""])
     with Broker(folder=tmp_path / "broker") as broker, Listener(broker, "creek/#") as heard:

@@ -1,23 +1,65 @@
-"""The kinds of water a site names, each made once."""
+"""The kinds of water a site names, each made once; the table of a laboratory analysis is kept on disk."""
 
 from __future__ import annotations
 
+import hashlib
 from typing import TYPE_CHECKING
 
+import msgspec
+import numpy as np
+
+from analysis.water.ionic_table import IonicTable, tabulate
+from analysis.water.ionic_water import IonicWater
 from analysis.water.properties import Seawater, WaterKind
 from analysis.water.sodium_chloride_water import SodiumChlorideWater
 from ingest.site.waters import SEAWATER, SODIUM_CHLORIDE
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
+    from pathlib import Path
 
     from ingest.site.models import Site
+    from ingest.site.waters import Analysis
+
+TABLE_VERSION = 1
+"""Counts up when the way of making a table changes: an older table on disk is then made anew."""
 
 
-def kinds_of(site: Site) -> Mapping[str, WaterKind]:
-    """Return every kind of water that the site's tanks and source waters name, by its word in the site file; seawater first."""
+def kinds_of(site: Site, *, tables: Path) -> Mapping[str, WaterKind]:
+    """Return every kind of water that the site's tanks and source waters name, seawater first, by its word in the site file.
+
+    Parameters
+    ----------
+    site : Site
+    tables : Path
+        Folder in which tables of laboratory analyses are kept.
+
+    Raises
+    ------
+    MissingPackageError
+        If a table has to be made and the chemistry engine is not installed.
+    InvalidInputError
+        If an analysis cannot be right.
+    """
     named = {tank.water for tank in site.tanks} | {water.kind for water in site.source_waters}
     kinds: dict[str, WaterKind] = {SEAWATER: Seawater()}
     if SODIUM_CHLORIDE in named:
         kinds[SODIUM_CHLORIDE] = SodiumChlorideWater()
+    for analysis in site.analyses:
+        if analysis.id in named:
+            kinds[analysis.id] = IonicWater(_table(analysis, tables)).fitted_to(analysis.ion_analysis())
     return kinds
+
+
+def _table(analysis: Analysis, folder: Path) -> IonicTable:
+    content = msgspec.json.encode([TABLE_VERSION, analysis.model_dump(mode="json")], order="deterministic")
+    path = folder / f"{analysis.id}-{hashlib.sha256(content).hexdigest()[:16]}.npz"
+    if path.exists():
+        with np.load(path, allow_pickle=False) as stored:
+            return IonicTable.from_arrays(analysis.id, dict(stored))
+    table = tabulate(analysis.ion_analysis())
+    folder.mkdir(parents=True, exist_ok=True)
+    fresh = path.with_suffix(".new.npz")
+    np.savez(fresh, **table.to_arrays())  # type: ignore[arg-type]
+    fresh.replace(path)
+    return table

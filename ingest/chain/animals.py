@@ -164,7 +164,7 @@ def fresh_animals(roster: AnimalRoster) -> AnimalState:
 
 def step(
     roster: AnimalRoster, state: AnimalState, *, osmolality: JudgedRows, temperature: JudgedRows
-) -> tuple[AnimalState, list[StressStep]]:
+) -> tuple[AnimalState, tuple[int, ...], list[StressStep]]:
     """Let a block of readings work on the animals.
 
     Of several sensors of a tank the believable one farthest from what the animals are used to counts, never an average.
@@ -179,13 +179,13 @@ def step(
 
     Returns
     -------
-    tuple of (AnimalState, list of StressStep)
-        After, and what goes into the record.
+    tuple of (AnimalState, tuple of int, list of StressStep)
+        After, the tanks whose animals were moved on, and what goes into the record.
     """
     rows = roster.row_of[osmolality.tank]
     due = _due(rows, osmolality, state.cohorts.updated_at_us)
     if not due.size:
-        return state, []
+        return state, (), []
     state = AnimalState(_copied(state.cohorts), _copied(state.latest), state.recorded_us.copy())
     record: list[StressStep] = []
     waves = _waves(rows[due], due)
@@ -195,7 +195,7 @@ def step(
     else:
         for wave in waves:
             _step_wave(roster, state, rows[wave], wave, osmolality, temperature, record)
-    return state, record
+    return state, tuple(np.unique(osmolality.tank[due]).tolist()), record
 
 
 def _due(rows: IntArray, osmolality: JudgedRows, updated_at_us: IntArray) -> IntArray:

@@ -17,13 +17,11 @@ from analysis.alarm.timing import (
     is_clock_doubted_by_tank,
     judged_times,
     no_times_yet,
-    sensor_times_from_dict,
-    sensor_times_to_dict,
 )
 from analysis.flags import Flag, Quality
 from analysis.sensor.quality.state import QualityState
 from ingest.chain import trust
-from ingest.chain.animals import animal_body, fresh_animals, restored_animals, step
+from ingest.chain.animals import fresh_animals, restored_animals, step
 from ingest.chain.water import water
 
 if TYPE_CHECKING:
@@ -106,6 +104,8 @@ class ChainOutput:
         Alarms whose state changed without a transition: an on-delay that runs.
     tanks : tuple of int
         Tanks whose state changed.
+    moved : tuple of int
+        Tanks whose animals were moved on.
     felt : tuple of StressStep
         What the animals felt, for the record.
     """
@@ -114,6 +114,7 @@ class ChainOutput:
     happened: tuple[Happened, ...] = ()
     pending: tuple[tuple[int, ConditionKind, AlarmState], ...] = ()
     tanks: tuple[int, ...] = ()
+    moved: tuple[int, ...] = ()
     felt: tuple[StressStep, ...] = ()
 
 
@@ -199,9 +200,10 @@ def run(
     bank, outcomes = alarm_bank.observe(
         state.bank, limit_block(tanks.conditions, rows, now_us=block.received_at_us[live])
     )
-    creatures, felt = step(animals, state.animals, osmolality=osmolality_rows, temperature=temperature_rows)
+    creatures, moved, felt = step(animals, state.animals, osmolality=osmolality_rows, temperature=temperature_rows)
     after = ChainState(memory, times, salinity, wet, temperature, osmolality, bank, creatures)
-    return found, replace(_output(state, after, outcomes, tuple(np.unique(tank).tolist())), felt=tuple(felt))
+    output = _output(state, after, outcomes, tuple(np.unique(tank).tolist()))
+    return found, replace(output, moved=moved, felt=tuple(felt))
 
 
 class _Judged(NamedTuple):
@@ -272,75 +274,73 @@ def act(state: ChainState, *, tank: int, kind: ConditionKind, event: Event, now_
 QUANTITIES = ("salinity", "wet", "temperature", "osmolality")
 
 
-def tank_body(roster: Roster, tanks: TankRoster, animals: AnimalRoster, state: ChainState, tank: int) -> dict[str, Any]:
-    """Return what the chain remembers of one tank as plain JSON data, sensors by their ids."""
-    watchers = np.flatnonzero(tanks.places.tank == tank)
-    names = [roster.sensors[sensor] for sensor in tanks.watchers[watchers]]
+def tank_body(tanks: TankRoster, state: ChainState, tank: int) -> dict[str, Any]:
+    """Return what the chain remembers of the readings of one tank as plain JSON data: columns, one entry a sensor."""
+    watchers = tanks.watchers_of[tank]
+    times = state.times
     body: dict[str, Any] = {
-        "animals": animal_body(animals, state.animals, tank),
-        "times": sensor_times_to_dict(_taken(state.times, watchers), names),
+        "sensors": tanks.sensors_of[tank],
+        "times": [
+            times.received_at_us[watchers].tolist(),
+            times.offset_us[watchers].tolist(),
+            times.judged_at_us[watchers].tolist(),
+            times.is_clock_doubted[watchers].tolist(),
+        ],
     }
+    count = len(watchers)
     for name in QUANTITIES:
         latest: LatestReadings = getattr(state, name)
-        body[name] = {}
-        for watcher in watchers.tolist():
-            place = (tank, int(tanks.places.slot[watcher]))
-            body[name][roster.sensors[tanks.watchers[watcher]]] = [
-                float(latest.value[place]),
-                int(latest.quality[place]),
-                int(latest.judged_at_us[place]),
-                int(latest.believed_at_us[place]),
-            ]
+        # The slots of a tank are its sensors in their order; what lies behind them belongs to no sensor.
+        body[name] = [
+            latest.value[tank, :count].tolist(),
+            latest.quality[tank, :count].tolist(),
+            latest.judged_at_us[tank, :count].tolist(),
+            latest.believed_at_us[tank, :count].tolist(),
+        ]
     return body
 
 
 def restored_state(
-    roster: Roster,
     tanks: TankRoster,
     animals: AnimalRoster,
     *,
     bodies: Mapping[str, Mapping[str, Any]],
+    lives: Mapping[str, Mapping[str, Any]],
     alarms: Mapping[tuple[ConditionKind, int], AlarmState],
 ) -> ChainState:
-    """Return the state that was kept with `tank_body`, by the tanks' ids, and the alarms; restoring fires nothing.
+    """Return the state that was kept with `tank_body` and `animal_body`, by the tanks' ids, and the alarms; restoring fires nothing.
 
     Sensors, tanks and cohorts that are gone are left out; new ones start fresh.
     """
     state = fresh_state(tanks, animals, alarms)
-    kept_animals = {
-        tank: body["animals"]
-        for tank, tank_id in enumerate(tanks.tanks)
-        if (body := bodies.get(tank_id)) is not None and body.get("animals")
-    }
     for tank, tank_id in enumerate(tanks.tanks):
-        for name in QUANTITIES:
-            _restore_latest(roster, tanks, getattr(state, name), tank, bodies.get(tank_id, {}).get(name, {}))
-    kept_times = {sensor: entry for body in bodies.values() for sensor, entry in body.get("times", {}).items()}
-    times = sensor_times_from_dict(kept_times, [roster.sensors[sensor] for sensor in tanks.watchers])
-    return replace(state, times=times, animals=restored_animals(animals, kept_animals))
+        if tank_id in bodies:
+            _restore_tank(tanks, state, tank, bodies[tank_id])
+    creatures = {tank: lives[tank_id] for tank, tank_id in enumerate(tanks.tanks) if tank_id in lives}
+    return replace(state, animals=restored_animals(animals, creatures))
 
 
-def _taken(times: SensorTimes, index: IntArray) -> SensorTimes:
-    return SensorTimes(
-        times.received_at_us[index],
-        times.offset_us[index],
-        times.judged_at_us[index],
-        times.is_clock_doubted[index],
-    )
-
-
-def _restore_latest(
-    roster: Roster, tanks: TankRoster, latest: LatestReadings, tank: int, kept: Mapping[str, Any]
-) -> None:
-    for watcher in np.flatnonzero(tanks.places.tank == tank).tolist():
-        entry = kept.get(roster.sensors[tanks.watchers[watcher]])
-        if entry is None:
+def _restore_tank(tanks: TankRoster, state: ChainState, tank: int, body: Mapping[str, Any]) -> None:
+    """Put back what `tank_body` kept, in place in the arrays of a fresh state."""
+    places = {sensor: place for place, sensor in enumerate(body["sensors"])}
+    for slot, (watcher, sensor) in enumerate(
+        zip(tanks.watchers_of[tank].tolist(), tanks.sensors_of[tank], strict=True)
+    ):
+        place = places.get(sensor)
+        if place is None:
             continue
-        place = (tank, int(tanks.places.slot[watcher]))
-        latest.value[place] = np.nan if entry[0] is None else entry[0]
-        latest.quality[place] = entry[1]
-        latest.judged_at_us[place] = entry[2]
-        latest.believed_at_us[place] = entry[3]
+        received, offset, judged, is_doubted = (column[place] for column in body["times"])
+        state.times.received_at_us[watcher] = received
+        state.times.offset_us[watcher] = offset
+        state.times.judged_at_us[watcher] = judged
+        state.times.is_clock_doubted[watcher] = is_doubted
+        for name in QUANTITIES:
+            latest: LatestReadings = getattr(state, name)
+            value, quality, judged_at, believed_at = (column[place] for column in body[name])
+            latest.value[tank, slot] = np.nan if value is None else value
+            latest.quality[tank, slot] = quality
+            latest.judged_at_us[tank, slot] = judged_at
+            latest.believed_at_us[tank, slot] = believed_at
 
 
 def _unwatched(tanks: TankRoster, state: ChainState, now_us: int, watching_since_us: int) -> tuple[BoolArray, IntArray]:

@@ -52,6 +52,10 @@ class TankRoster:
         For each sensor its place in `watchers`; -1 for a sensor in a source water.
     places : SensorPlaces
         Tank and slot of each watcher.
+    watchers_of : tuple of ndarray of int64
+        For each tank the places of its sensors in `watchers`, in the order of the slots.
+    sensors_of : tuple of tuple of str
+        Their ids.
     interval_us, stale_after_us : ndarray of int64, one per watcher
     salinity, temperature : SetPointBand
         Between which limits the water alarms.
@@ -65,6 +69,8 @@ class TankRoster:
     watchers: IntArray
     watcher_of: IntArray
     places: SensorPlaces
+    watchers_of: tuple[IntArray, ...]
+    sensors_of: tuple[tuple[str, ...], ...]
     interval_us: IntArray
     stale_after_us: IntArray
     salinity: SetPointBand
@@ -93,6 +99,7 @@ def tank_roster(site: Site, roster: Roster, *, is_larva: BoolArray, tolerable: F
     watchers = np.flatnonzero(roster.tank != NO_TANK)
     watcher_of = np.full(len(roster), NO_TANK, dtype=np.int64)
     watcher_of[watchers] = np.arange(len(watchers))
+    watchers_of = tuple(np.flatnonzero(roster.tank[watchers] == tank) for tank in range(len(site.tanks)))
     point = _points(site, "salinity")
     tide = np.array([_tide(tank) for tank in site.tanks], dtype=np.float64).reshape(-1, 2)
     salinity = salinity_band(
@@ -113,6 +120,8 @@ def tank_roster(site: Site, roster: Roster, *, is_larva: BoolArray, tolerable: F
         watchers=watchers,
         watcher_of=watcher_of,
         places=sensor_places(roster.tank[watchers], tank_count=len(site.tanks)),
+        watchers_of=watchers_of,
+        sensors_of=tuple(tuple(roster.sensors[sensor] for sensor in watchers[places]) for places in watchers_of),
         interval_us=roster.interval_us[watchers],
         stale_after_us=np.array(
             [

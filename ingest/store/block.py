@@ -73,7 +73,7 @@ class StressRow(NamedTuple):
 
 
 class TankState(NamedTuple):
-    """The chain's state of one tank."""
+    """What the chain remembers of the readings, or of the animals, of one tank."""
 
     tank: int
     measured_at: int | None
@@ -106,6 +106,7 @@ class BlockCommit:
     counts: dict[str, int] = field(default_factory=dict)
     stress: list[StressRow] = field(default_factory=list)
     tank_states: list[TankState] = field(default_factory=list)
+    animal_states: list[TankState] = field(default_factory=list)
     pending_alarms: list[AlarmRow] = field(default_factory=list)
     occurrences: list[Occurrence] = field(default_factory=list)
     outcomes: list[OutcomeRow] = field(default_factory=list)
@@ -133,10 +134,11 @@ def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: i
     refused.insert(connection, block.refusals)
     refused.count(connection, block.counts)
     connection.executemany(f"INSERT OR REPLACE INTO stress VALUES ({', '.join('?' * 13)})", block.stress)
-    connection.executemany(
-        "INSERT OR REPLACE INTO tank_state VALUES (?, ?, ?)",
-        [(state.tank, state.measured_at, msgspec.json.encode(state.body).decode()) for state in block.tank_states],
-    )
+    for table, states in (("tank_state", block.tank_states), ("animal_state", block.animal_states)):
+        connection.executemany(
+            f"INSERT OR REPLACE INTO {table} VALUES (?, ?, ?)",
+            [(state.tank, state.measured_at, msgspec.json.encode(state.body).decode()) for state in states],
+        )
     for row in block.pending_alarms:
         alarms.upsert(connection, row, event_id=None)
     event_ids = [_write_occurrence(connection, occurrence) for occurrence in block.occurrences]

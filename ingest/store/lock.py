@@ -4,12 +4,18 @@ from __future__ import annotations
 
 import fcntl
 import os
+import time
 from typing import TYPE_CHECKING, TextIO
 
 from ingest.store.errors import StoreLockedError
 
 if TYPE_CHECKING:
     from pathlib import Path
+
+
+LOOKS = 50
+LOOK_AGAIN_S = 0.02
+"""Whoever looks at the lock (`is_held`) holds it for a moment too: one refusal does not mean another worker."""
 
 
 class SiteLock:
@@ -28,13 +34,11 @@ class SiteLock:
             If another process holds it.
         """
         file = self._path.open("a+", encoding="utf-8")
-        try:
-            fcntl.flock(file, fcntl.LOCK_EX | fcntl.LOCK_NB)
-        except BlockingIOError as error:
+        if not _is_taken(file):
             file.seek(0)
             holder = file.read().strip()
             file.close()
-            raise StoreLockedError(str(self._path.parent), holder=holder) from error
+            raise StoreLockedError(str(self._path.parent), holder=holder)
         file.seek(0)
         file.truncate()
         file.write(f"process {os.getpid()}")
@@ -46,6 +50,18 @@ class SiteLock:
         if self._file is not None:
             self._file.close()
             self._file = None
+
+
+def _is_taken(file: TextIO) -> bool:
+    for look in range(LOOKS):
+        if look:
+            time.sleep(LOOK_AGAIN_S)
+        try:
+            fcntl.flock(file, fcntl.LOCK_EX | fcntl.LOCK_NB)
+        except BlockingIOError:
+            continue
+        return True
+    return False
 
 
 def is_held(folder: Path) -> bool:

@@ -92,6 +92,7 @@ STORE: tuple[Migration, ...] = (
             " range_strain REAL, change_strain REAL, exposure_strain REAL, thermal_strain REAL, driver TEXT, band TEXT,"
             " acclimated_mOsm_kg REAL, internal_mOsm_kg REAL, gap_mOsm_kg REAL, PRIMARY KEY (measured_at, tank)) WITHOUT ROWID",
             "CREATE TABLE tank_state (tank INTEGER PRIMARY KEY REFERENCES tank(id), measured_at INTEGER, body TEXT NOT NULL)",
+            "CREATE TABLE animal_state (tank INTEGER PRIMARY KEY REFERENCES tank(id), measured_at INTEGER, body TEXT NOT NULL)",
             # The ledger: append-only, each row carries the hash of the one before.
             "CREATE TABLE event (id INTEGER PRIMARY KEY, kind TEXT NOT NULL, subject TEXT NOT NULL, measured_at INTEGER,"
             " recorded_at INTEGER NOT NULL, actor TEXT NOT NULL, cause_id INTEGER REFERENCES event(id), body TEXT NOT NULL,"

@@ -9,7 +9,7 @@ import msgspec
 import numpy as np
 
 from analysis.animal.stress import BAND_WORDS, DRIVER_WORDS, Band, Driver
-from ingest.store import alarms, ledger, registry, rollups
+from ingest.store import alarms, ledger, registry, restoring, rollups
 from ingest.store.connection import reader
 from ingest.store.lock import is_held
 from ingest.store.store import store_path
@@ -243,9 +243,10 @@ class Queries:
     def latest_stress(self, *, since_us: int) -> dict[str, LatestStress]:
         """Return what the animals of each tank felt last, by the tank's id, where that was measured since *since_us*."""
         found = {}
-        for tank, body in self.tank_states().items():
-            animals = body.get("animals")
-            if animals is None or animals["state"]["updated_at_us"] < since_us:
+        with reader(self._path) as connection:
+            bodies = restoring.animal_bodies(connection)
+        for tank, animals in bodies.items():
+            if animals["state"]["updated_at_us"] < since_us:
                 continue
             latest = animals["latest"]
             found[tank] = LatestStress(
@@ -306,14 +307,6 @@ class Queries:
             )
             for row in rows
         ]
-
-    def tank_states(self) -> dict[str, dict[str, Any]]:
-        """Return the chain's state of each tank, by the tank's id."""
-        with reader(self._path) as connection:
-            rows = connection.execute(
-                "SELECT slug, body FROM tank_state JOIN tank ON tank.id = tank_state.tank"
-            ).fetchall()
-        return {row["slug"]: msgspec.json.decode(row["body"]) for row in rows}
 
     def refused(self, *, most: int = 200) -> list[Refused]:
         """Return the newest refused payloads, newest first."""

@@ -21,6 +21,7 @@ if TYPE_CHECKING:
 __all__ = [
     "alarm_rows",
     "alarm_state",
+    "animal_bodies",
     "has_outcome",
     "meta_number",
     "meta_text",
@@ -53,8 +54,17 @@ def newest_times(connection: sqlite3.Connection) -> dict[str, int]:
 
 
 def tank_bodies(connection: sqlite3.Connection) -> dict[str, dict[str, Any]]:
-    """Return what the chain remembered of each tank, by the tank's id."""
-    rows = connection.execute("SELECT slug, body FROM tank_state JOIN tank ON tank.id = tank_state.tank").fetchall()
+    """Return what the chain remembered of the readings of each tank, by the tank's id."""
+    return _bodies(connection, "tank_state")
+
+
+def animal_bodies(connection: sqlite3.Connection) -> dict[str, dict[str, Any]]:
+    """Return what the chain remembered of the animals of each tank, by the tank's id."""
+    return _bodies(connection, "animal_state")
+
+
+def _bodies(connection: sqlite3.Connection, table: str) -> dict[str, dict[str, Any]]:
+    rows = connection.execute(f"SELECT slug, body FROM {table} JOIN tank ON tank.id = {table}.tank").fetchall()
     return {row["slug"]: msgspec.json.decode(row["body"]) for row in rows}
 
 

@@ -9,6 +9,7 @@ import numpy as np
 from analysis.alarm.state import name_of, state_to_dict
 from analysis.alarm.transition import transition_to_dict
 from analysis.flags import Flag
+from ingest.chain.animals import animal_body
 from ingest.chain.chain import tank_body
 from ingest.store.alarms import AlarmRow
 from ingest.store.block import ChannelRow, Conflict, Occurrence, OutboxRow, StressRow, TankState
@@ -109,15 +110,21 @@ def conflict_rows(plant: Plant, raw: RawBlock, contradictions: Sequence[int]) ->
 
 
 def tank_states(plant: Plant, state: ChainState, tanks: Sequence[int]) -> list[TankState]:
-    """Return what the chain remembers of *tanks* as rows of the store."""
+    """Return what the chain remembers of the readings of *tanks* as rows of the store."""
+    newest = state.salinity.judged_at_us.max(axis=1)
+    return [
+        TankState(int(plant.numbers.tank[tank]), int(newest[tank]), tank_body(plant.tanks, state, tank))
+        for tank in tanks
+    ]
+
+
+def animal_states(plant: Plant, state: ChainState, tanks: Sequence[int]) -> list[TankState]:
+    """Return what the chain remembers of the animals of *tanks* as rows of the store."""
     rows = []
     for tank in tanks:
-        newest = int(state.salinity.judged_at_us[tank].max())
-        rows.append(
-            TankState(
-                int(plant.numbers.tank[tank]), newest, tank_body(plant.roster, plant.tanks, plant.animals, state, tank)
-            )
-        )
+        body = animal_body(plant.animals, state.animals, tank)
+        if body is not None:
+            rows.append(TankState(int(plant.numbers.tank[tank]), body["state"]["updated_at_us"], body))
     return rows
 
 

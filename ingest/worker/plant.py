@@ -16,6 +16,7 @@ from ingest.water_kinds import kinds_of
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
+    from pathlib import Path
 
     from analysis.sensor.quality.thresholds import Thresholds
     from ingest.chain.animals import AnimalRoster, Stocked
@@ -41,7 +42,7 @@ class Plant:
     @property
     def topics(self) -> tuple[str, ...]:
         """Every topic that a sensor of the site sends to."""
-        return tuple(topic for sensor in self.site.sensors for topic in sensor.topics())
+        return self.decoder.topics
 
     @property
     def roles(self) -> Mapping[str, str]:
@@ -56,6 +57,7 @@ def plant(
     text: str,
     numbers: Numbers,
     stocked: Mapping[str, Stocked],
+    tables: Path,
     waiting_halves: Mapping[str, Any],
     has_horizon: bool = True,
     least_interval_s: float = 0.0,
@@ -71,6 +73,8 @@ def plant(
         The store's numbers.
     stocked : mapping of str to Stocked
         Which animals are in which tank, by the tank's id.
+    tables : Path
+        Folder in which tables of laboratory analyses are kept.
     waiting_halves : mapping
         Halves of readings that wait for their partner, as last committed.
     has_horizon : bool
@@ -84,7 +88,7 @@ def plant(
             for sensor in site.sensors
         ]
         site = site.model_copy(update={"sensors": tuple(sensors_as)})
-    kinds = kinds_of(site)
+    kinds = kinds_of(site, tables=tables)
     sensors = roster(site, kinds)
     animals = animal_roster(site, kinds, stocked)
     read_as = site

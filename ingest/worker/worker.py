@@ -26,8 +26,10 @@ from ingest.store.block import BlockCommit
 from ingest.store.inbox import Inbox, InboxTaker
 from ingest.store.readings import as_sent
 from ingest.store.store import Store
+from ingest.topics import worker_status_topic
 from ingest.worker.bench import Bench
 from ingest.worker.committing import (
+    animal_states,
     channel_rows,
     conflict_rows,
     newest_rows,
@@ -211,6 +213,7 @@ class Worker:
     def _with_output(self, commit: BlockCommit, output: ChainOutput) -> BlockCommit:
         now_us = self._clock.now_us()
         commit.tank_states = tank_states(self.plant, output.state, output.tanks)
+        commit.animal_states = animal_states(self.plant, output.state, output.moved)
         commit.stress = stress_rows(self.plant, output)
         commit.pending_alarms = pending_rows(self.plant, output, now_us=now_us)
         commit.occurrences = [self._occurrence(item, now_us) for item in output.happened]
@@ -283,12 +286,13 @@ class Worker:
         newest = max(self._newest_us, default=NEVER_SPOKEN)
         if newest == NEVER_SPOKEN:
             return False
+        before, until_us = self.store.rolled_until, min(newest, self._clock.now_us()) - ROLLUP_LAG_US
         try:
-            reached = self.store.sweep_rollups(until_us=min(newest, self._clock.now_us()) - ROLLUP_LAG_US)
+            reached = self.store.sweep_rollups(until_us=until_us)
         except sqlite3.OperationalError as error:
             log.warning("rollups wait", reason=str(error))
             return False
-        return reached is not None and reached < newest - ROLLUP_LAG_US - MICROSECONDS_PER_SECOND
+        return reached is not None and reached != before and reached < until_us
 
     def take_commands(self, stop: threading.Event) -> None:
         """Decide on what people have asked for since the last look."""
@@ -358,6 +362,7 @@ class Worker:
             least_interval_s=self._least_interval_s,
             numbers=numbers,
             stocked=restoring.stocked_tanks(connection),
+            tables=self.store.folder / "ion_tables",
             waiting_halves=msgspec.json.decode(self._committed_halves),
         )
 
@@ -374,10 +379,10 @@ class Worker:
             if row.condition in known and row.subject.removeprefix("tank/") in index
         }
         fresh = restored_state(
-            self.plant.roster,
             self.plant.tanks,
             self.plant.animals,
             bodies=restoring.tank_bodies(connection),
+            lives=restoring.animal_bodies(connection),
             alarms=alarms,
         )
         for place, sensor in enumerate(self.plant.site.sensors):
@@ -398,5 +403,5 @@ class Worker:
             password=None if broker.secret is None else read_secret(broker.secret, site_file=self._site_file),
             is_tls=broker.tls,
             ca_file=ca_file,
-            status_topic=f"euryhale/{self.plant.site.id}/worker/status",
+            status_topic=worker_status_topic(self.plant.site.id),
         )

@@ -56,6 +56,13 @@ def chain_state(store: Path) -> dict[str, list[tuple[object, ...]]]:
             "tanks": connection.execute(
                 "SELECT slug, measured_at, body FROM tank_state JOIN tank ON tank.id = tank_state.tank ORDER BY 1"
             ).fetchall(),
+            "animals": connection.execute(
+                "SELECT slug, measured_at, body FROM animal_state JOIN tank ON tank.id = animal_state.tank ORDER BY 1"
+            ).fetchall(),
+            "quality": connection.execute(
+                "SELECT slug, state, body FROM sensor JOIN latest ON latest.sensor = sensor.id"
+                " LEFT JOIN sensor_ring ON sensor_ring.sensor = sensor.id ORDER BY 1"
+            ).fetchall(),
             "alarms": connection.execute(
                 "SELECT subject, condition, state, is_active, occurrence, raised_at, body FROM alarm ORDER BY 1, 2"
             ).fetchall(),

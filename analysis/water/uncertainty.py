@@ -10,16 +10,18 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, NamedTuple
 
 import numpy as np
 
 from analysis.errors import InvalidInputError
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from numpy.typing import ArrayLike
 
-    from analysis.arrays import FloatArray
+    from analysis.arrays import FloatArray, IntArray
     from analysis.water.properties import WaterKind
 
 _CONDUCTIVITY_STEP = 1e-4  # relative; the relations are smooth, so one side is enough (2e-5 of the slope)
@@ -61,6 +63,33 @@ class SensorAccuracy:
                 raise InvalidInputError(what, found=found, allowed=f"0 to {highest:g} {unit}")
 
 
+class AccuracyArrays(NamedTuple):
+    """Stated accuracies side by side: one value a sensor, or one a reading.
+
+    Parameters
+    ----------
+    conductivity_percent, conductivity_mS_cm, temperature_K : ndarray of float64
+        As `SensorAccuracy`; broadcast with the readings.
+    """
+
+    conductivity_percent: FloatArray
+    conductivity_mS_cm: FloatArray
+    temperature_K: FloatArray
+
+    @classmethod
+    def of(cls, sensors: Sequence[SensorAccuracy]) -> AccuracyArrays:
+        """Return the accuracies of *sensors* in their order."""
+        return cls(
+            conductivity_percent=np.array([sensor.conductivity_percent for sensor in sensors], dtype=np.float64),
+            conductivity_mS_cm=np.array([sensor.conductivity_mS_cm for sensor in sensors], dtype=np.float64),
+            temperature_K=np.array([sensor.temperature_K for sensor in sensors], dtype=np.float64),
+        )
+
+    def at(self, sensor: IntArray) -> AccuracyArrays:
+        """Return the accuracies of each reading, from the index of its sensor."""
+        return AccuracyArrays(*(column[sensor] for column in self))
+
+
 @dataclass(frozen=True, slots=True)
 class Uncertainty:
     """Plus or minus, in the coverage of the accuracy that was stated: arrays of one shape.
@@ -85,7 +114,7 @@ def uncertainty_of_readings(
     conductivity_mS_cm: ArrayLike,
     *,
     temperature_degC: ArrayLike,
-    accuracy: SensorAccuracy | None = None,
+    accuracy: SensorAccuracy | AccuracyArrays | None = None,
     kind: WaterKind,
     pressure_dbar: ArrayLike = 0.0,
     salinity: FloatArray | None = None,
@@ -98,8 +127,8 @@ def uncertainty_of_readings(
         At the water's own temperature. [mS/cm]
     temperature_degC : array_like
         [degC]
-    accuracy : SensorAccuracy, optional
-        Of the sensor; 0.5 % of the reading and 0.1 K where nothing is stated (common practice).
+    accuracy : SensorAccuracy or AccuracyArrays, optional
+        Of the sensor, or of each reading's sensor; 0.5 % of the reading and 0.1 K where nothing is stated (common practice).
     kind : WaterKind
         The kind of water.
     pressure_dbar : array_like
@@ -144,7 +173,7 @@ def _salinity_shares(
     temperature: FloatArray,
     pressure: FloatArray,
     salinity: FloatArray,
-    stated: SensorAccuracy,
+    stated: SensorAccuracy | AccuracyArrays,
     kind: WaterKind,
 ) -> tuple[FloatArray, FloatArray]:
     stated_mS_cm = np.maximum(conductivity * (0.01 * stated.conductivity_percent), stated.conductivity_mS_cm)

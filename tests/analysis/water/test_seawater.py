@@ -119,3 +119,14 @@ def test_a_scalar_equals_its_array_element(salinity: float, temperature: float) 
         float(sw.osmolality_from_absolute_salinity(salinity))
         == sw.osmolality_from_absolute_salinity([1.0, salinity])[1]
     )
+
+
+@given(salinity=st.floats(0.0, 119.0), temperature=TEMPERATURES, pressure=st.floats(0.0, 50.0))
+def test_density_to_salinity_and_back(salinity: float, temperature: float, pressure: float) -> None:
+    density = sw.density_from_absolute_salinity(salinity, temperature_degC=temperature, pressure_dbar=pressure)
+    back = sw.absolute_salinity_from_density(density, temperature_degC=temperature, pressure_dbar=pressure)
+    assert float(back) == pytest.approx(salinity, rel=1e-9, abs=1e-8)
+
+
+def test_a_density_that_no_sea_water_has_is_nan() -> None:
+    assert np.isnan(sw.absolute_salinity_from_density([990.0, 1200.0, np.nan], temperature_degC=20.0)).all()

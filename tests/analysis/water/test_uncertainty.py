@@ -8,7 +8,7 @@ from hypothesis import strategies as st
 from analysis.errors import InvalidInputError
 from analysis.water.properties import Seawater
 from analysis.water.sodium_chloride_water import SodiumChlorideWater
-from analysis.water.uncertainty import SensorAccuracy, uncertainty_of_readings
+from analysis.water.uncertainty import AccuracyArrays, SensorAccuracy, uncertainty_of_readings
 
 SEA = Seawater()
 
@@ -100,3 +100,17 @@ def test_a_salinity_known_already_gives_the_same() -> None:
 def test_an_accuracy_that_cannot_be_is_refused(settings: dict[str, float]) -> None:
     with pytest.raises(InvalidInputError, match="accuracy"):
         SensorAccuracy(**settings)
+
+
+def test_many_sensors_at_once_each_with_its_own_accuracy() -> None:
+    sensors = [SensorAccuracy(0.5, 0.0, 0.1), SensorAccuracy(2.0, 0.2, 0.5)]
+    sensor = np.array([1, 0, 1, 0])
+    conductivity, temperature = np.array([5.0, 5.0, 40.0, 40.0]), np.array([10.0, 10.0, 25.0, 25.0])
+    together = uncertainty_of_readings(
+        conductivity, temperature_degC=temperature, accuracy=AccuracyArrays.of(sensors).at(sensor), kind=SEA
+    )
+    for index, which in enumerate(sensor):
+        alone = uncertainty_of_readings(
+            conductivity[index], temperature_degC=temperature[index], accuracy=sensors[which], kind=SEA
+        )
+        assert float(alone.osmolality_mOsm_kg) == pytest.approx(together.osmolality_mOsm_kg[index], rel=1e-12)

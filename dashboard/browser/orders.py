@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import sqlite3
 from collections.abc import Mapping
 from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from dashboard.browser.visit import Order
-from ingest.store.errors import MissingStoreError
+from ingest.store.errors import MissingStoreError, StoreBusyError
 
 if TYPE_CHECKING:
     from dashboard.browser.access import Access
@@ -38,7 +37,7 @@ def take(access: Access, act: Mapping[str, str]) -> Order:
             body={"condition": order.condition, "why": "going"},
             expected=str(order.occurrence),
         )
-    except (sqlite3.Error, OSError):
+    except StoreBusyError:
         return replace(order, state="unsent")
     return order
 

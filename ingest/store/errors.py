@@ -47,3 +47,12 @@ class MissingStoreError(StoreError):
     def __init__(self, path: str) -> None:
         self.path = path
         super().__init__(f"no store at {path}; start the worker once: euryhale watch --site FILE")
+
+
+class StoreBusyError(StoreError):
+    """The file could not be read or written at this moment: locked too long, disk full, no permission."""
+
+    def __init__(self, path: str, *, reason: str) -> None:
+        self.path = path
+        self.reason = reason
+        super().__init__(f"{path} cannot be used at this moment: {reason}")

@@ -12,6 +12,7 @@ from typing import Any
 import msgspec
 
 from ingest.store.connection import open_writer, transaction
+from ingest.store.errors import StoreBusyError
 from ingest.store.migrations import INBOX, migrate
 
 DEFAULT_LIFE_US = 15 * 60 * 1_000_000
@@ -62,7 +63,19 @@ class Inbox:
             migrate(connection, INBOX, path=str(self.path))
 
     def submit(self, command: Command) -> None:
-        """Put *command* into the inbox; a second row with the same id changes nothing."""
+        """Put *command* into the inbox; a second row with the same id changes nothing.
+
+        Raises
+        ------
+        StoreBusyError
+            If the inbox cannot be written.
+        """
+        try:
+            self._insert(command)
+        except (sqlite3.Error, OSError) as error:
+            raise StoreBusyError(str(self.path), reason=str(error)) from error
+
+    def _insert(self, command: Command) -> None:
         if not self.path.exists():
             self.prepare()
         with closing(open_writer(self.path)) as connection, transaction(connection):

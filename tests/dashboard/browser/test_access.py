@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import math
-import sqlite3
 from dataclasses import replace
 from pathlib import Path
 
@@ -14,6 +13,7 @@ from dashboard.browser.access import Access, midnight_us, shown_sensor
 from dashboard.browser.sights import Band, SensorSight
 from dashboard.browser.visit import Order
 from ingest.clock import FakeClock
+from ingest.store.errors import StoreBusyError
 from ingest.store.inbox import Inbox, InboxTaker
 from ingest.words import times
 from tests.dashboard.browser.conftest import NOW_US
@@ -146,7 +146,7 @@ def test_an_order_waits_until_the_worker_has_decided(access: Access, scene: Scen
 
 def test_an_order_that_can_not_be_written_is_not_lost_in_silence(access: Access, monkeypatch: pytest.MonkeyPatch):
     def full(*_args: object, **_kwargs: object) -> None:
-        raise sqlite3.OperationalError("disk is full")
+        raise StoreBusyError("inbox.db", reason="disk is full")
 
     monkeypatch.setattr(access, "submit", full)
     assert orders.take(access, ACT).state == "unsent"

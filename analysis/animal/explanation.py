@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 
-from analysis.animal.stress import BAND_WORDS, Band, Driver
+from analysis.animal.strains import BAND_WORDS, Band, Driver
 
 GAP_WORTH_SAYING_MOSM_KG = 30.0
 

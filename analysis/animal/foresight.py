@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from analysis.animal.stress import BAND_EDGES
+from analysis.animal.strains import BAND_EDGES
 
 if TYPE_CHECKING:
     from collections.abc import Sequence

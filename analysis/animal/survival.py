@@ -7,9 +7,10 @@ from dataclasses import dataclass
 import numpy as np
 
 from analysis.animal.constants import Constants, constants
+from analysis.animal.exposure import exposure_steps, settling_factor
 from analysis.animal.fallbacks import resolved
-from analysis.animal.osmoregulation import StageArrays, exposure_steps, settling_factor
 from analysis.animal.stage import Certainty, Stage, Supports
+from analysis.animal.stage_arrays import StageArrays
 from analysis.arrays import FloatArray
 from analysis.errors import InvalidInputError
 

@@ -18,18 +18,13 @@ from tqdm import tqdm
 from analysis.animal import tables
 from analysis.animal.constants import constants
 from analysis.animal.context import osmotic_part_only
+from analysis.animal.exposure import limits_at
 from analysis.animal.fallbacks import resolved
 from analysis.animal.forecast import minutes_to_limits
-from analysis.animal.osmoregulation import CohortState, GapRule, StageArrays, limits_at
-from analysis.animal.stress import (
-    BAND_WORDS,
-    DRIVER_WORDS,
-    Band,
-    Driver,
-    Stress,
-    advance_series,
-    exposure_of_series,
-)
+from analysis.animal.osmoregulation import CohortState, GapRule
+from analysis.animal.stage_arrays import StageArrays
+from analysis.animal.strains import BAND_WORDS, DRIVER_WORDS, Band, Driver
+from analysis.animal.stress import Stress, advance_series, exposure_of_series
 from analysis.animal.survival import estimate, survival_basis
 from analysis.arrays import MICROSECONDS_PER_SECOND
 from analysis.errors import EuryhaleError, InvalidInputError

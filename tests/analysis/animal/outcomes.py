@@ -18,9 +18,11 @@ import numpy as np
 from analysis.animal import tables
 from analysis.animal.constants import Constants, constants
 from analysis.animal.fallbacks import osmolality_from_ppt, resolved
-from analysis.animal.osmoregulation import CohortState, StageArrays
+from analysis.animal.osmoregulation import CohortState
 from analysis.animal.stage import Stage
-from analysis.animal.stress import DRIVER_WORDS, Driver, advance_series
+from analysis.animal.stage_arrays import StageArrays
+from analysis.animal.strains import DRIVER_WORDS, Driver
+from analysis.animal.stress import advance_series
 from analysis.animal.survival import alive_from_exposure, peak_exposure
 
 REFERENCE = Path(__file__).parents[2] / "reference"

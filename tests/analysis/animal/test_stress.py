@@ -12,18 +12,12 @@ from hypothesis import strategies as st
 
 from analysis.animal import tables
 from analysis.animal.constants import constants
-from analysis.animal.osmoregulation import CohortState, GapRule, StageArrays, exposure_steps
+from analysis.animal.exposure import exposure_steps
+from analysis.animal.osmoregulation import CohortState, GapRule
 from analysis.animal.stage import Supports
-from analysis.animal.stress import (
-    Band,
-    Driver,
-    Stress,
-    advance,
-    advance_series,
-    bands,
-    combined_stress,
-    exposure_strain,
-)
+from analysis.animal.stage_arrays import StageArrays
+from analysis.animal.strains import Band, Driver, bands, combined_stress, exposure_strain
+from analysis.animal.stress import Stress, advance, advance_series
 from analysis.errors import InvalidInputError
 from analysis.water.properties import Seawater
 from analysis.water.sodium_chloride_water import SodiumChlorideWater

@@ -8,129 +8,23 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field
-from enum import StrEnum
-from typing import TYPE_CHECKING, Final
+from typing import TYPE_CHECKING, Any, Final, Self
 
 import numpy as np
 
 from analysis.arrays import MICROSECONDS_PER_SECOND
 from analysis.errors import InvalidInputError
 from analysis.sensor.drift import DriftCheck
-from analysis.water import potassium_chloride
-from analysis.water.seawater import conductivity_from_practical_salinity, practical_salinity_from_conductivity
+from analysis.sensor.standard import Standard, StandardKind, standard_of
 
 if TYPE_CHECKING:
-    from collections.abc import Sequence
+    from collections.abc import Mapping, Sequence
 
     from numpy.typing import ArrayLike
 
     from analysis.arrays import FloatArray, IntArray
 
-STANDARD_SEAWATER_MS_CM: Final = 42.9140
-"""Conductivity of seawater of practical salinity 35 at 15 degC on the scale of 1968 (PSS-78)."""
-
-STANDARD_SEAWATER_DEGC: Final = 15.0 / 1.00024
-"""That temperature on the scale of 1990."""
-
 MICROSECONDS_PER_DAY: Final = 86_400 * MICROSECONDS_PER_SECOND
-
-
-class StandardKind(StrEnum):
-    """What a sensor is held into."""
-
-    POTASSIUM_CHLORIDE = "potassium-chloride"
-    """A solution of known molality."""
-    BOTTLE = "bottle"
-    """A bought solution with its conductivity at 25 degC on the label: potassium chloride."""
-    STANDARD_SEAWATER = "standard-seawater"
-    """An ampoule or bottle with its conductivity ratio K15 on the label."""
-    DRY_AIR = "dry-air"
-    """The clean, dry cell: zero."""
-
-
-@dataclass(frozen=True, slots=True)
-class Standard:
-    """A calibration standard.
-
-    Made by `potassium_chloride_standard`, `bottled_standard`, `standard_seawater` or `dry_air`.
-
-    Parameters
-    ----------
-    kind : StandardKind
-    value : float
-        Molality [mol/kg], label at 25 degC [mS/cm], K15 [1] or 0, after its kind.
-    lot : str
-        As printed on the bottle; empty where made on site.
-    expires_us : int or None
-        End of the day printed on the bottle. [us]
-    """
-
-    kind: StandardKind
-    value: float
-    lot: str = ""
-    expires_us: int | None = None
-
-    def conductivity_mS_cm(self, temperature_degC: ArrayLike) -> FloatArray:
-        """Return what the standard conducts at its own temperature.
-
-        Parameters
-        ----------
-        temperature_degC : array_like
-            Of the standard, not of the room. [degC]
-
-        Returns
-        -------
-        ndarray of float64
-            NaN outside 0 to 55 degC. [mS/cm]
-
-        References
-        ----------
-        Potassium chloride: McKee 2009. Standard seawater: PSS-78 from K15.
-        """
-        temperature = np.asarray(temperature_degC, dtype=np.float64)
-        match self.kind:
-            case StandardKind.POTASSIUM_CHLORIDE:
-                return potassium_chloride.conductivity_from_molality(self.value, temperature_degC=temperature)
-            case StandardKind.BOTTLE:
-                return potassium_chloride.conductivity_of_labelled_standard(self.value, temperature_degC=temperature)
-            case StandardKind.STANDARD_SEAWATER:
-                salinity = practical_salinity_from_k15(self.value)
-                return conductivity_from_practical_salinity(salinity, temperature_degC=temperature)
-        return np.where(np.isfinite(temperature), 0.0, np.nan)
-
-
-def practical_salinity_from_k15(k15: ArrayLike) -> FloatArray:
-    """Return practical salinity from the conductivity ratio to the standard solution at 15 degC (PSS-78)."""
-    ratio = np.asarray(k15, dtype=np.float64)
-    return practical_salinity_from_conductivity(
-        ratio * STANDARD_SEAWATER_MS_CM, temperature_degC=STANDARD_SEAWATER_DEGC
-    )
-
-
-def potassium_chloride_standard(molality_mol_kg: float, *, lot: str = "", expires_us: int | None = None) -> Standard:
-    """Return a potassium chloride solution of known molality, 0.0001 to 4.5 mol/kg water."""
-    if not 1e-4 <= molality_mol_kg <= potassium_chloride.HIGHEST_MOLALITY:
-        raise InvalidInputError("molality of the standard", found=molality_mol_kg, allowed="0.0001 to 4.5 mol/kg")
-    return Standard(StandardKind.POTASSIUM_CHLORIDE, molality_mol_kg, lot, expires_us)
-
-
-def bottled_standard(label_mS_cm: float, *, lot: str = "", expires_us: int | None = None) -> Standard:
-    """Return a bought standard with its conductivity at 25 degC on the label, 0.01 to 250 mS/cm."""
-    if not 0.01 <= label_mS_cm <= 250.0:
-        raise InvalidInputError("label of the standard", found=label_mS_cm, allowed="0.01 to 250 mS/cm at 25 degC")
-    return Standard(StandardKind.BOTTLE, label_mS_cm, lot, expires_us)
-
-
-def standard_seawater(k15: float, *, lot: str = "", expires_us: int | None = None) -> Standard:
-    """Return standard seawater with its ratio K15 on the label, 0.2 to 1.2 (practical salinity 6 to 43)."""
-    if not 0.2 <= k15 <= 1.2:
-        raise InvalidInputError("K15 of the standard", found=k15, allowed="0.2 to 1.2")
-    return Standard(StandardKind.STANDARD_SEAWATER, k15, lot, expires_us)
-
-
-def dry_air() -> Standard:
-    """Return the zero point: the clean, dry cell in air."""
-    return Standard(StandardKind.DRY_AIR, 0.0)
 
 
 @dataclass(frozen=True, slots=True)
@@ -245,6 +139,10 @@ def fitted(points: Sequence[Point]) -> CellFit:
     return CellFit(factor, offset, tuple(float(x) for x in percent))
 
 
+DEFAULT_VALID_DAYS: Final = 30.0
+"""A month between calibrations (common practice); fouling decides, not the calendar."""
+
+
 @dataclass(frozen=True, slots=True, kw_only=True)
 class CalibrationRecord:
     """One calibration: append-only; a mistake is superseded by another record, never changed.
@@ -277,7 +175,7 @@ class CalibrationRecord:
     as_left: tuple[Point, ...] = ()
     reference_temperature_degC: float = math.nan
     sensor_temperature_degC: float = math.nan
-    valid_days: float = 30.0
+    valid_days: float = DEFAULT_VALID_DAYS
     nominal_cell_constant_per_cm: float = math.nan
     note: str = ""
     fit: CellFit = field(init=False)
@@ -326,6 +224,82 @@ class CalibrationRecord:
             "large_change": abs(self.fit.factor - 1.0) > 0.1,
         }
         return tuple(code for code, is_so in found.items() if is_so)
+
+    def to_jsonable(self) -> dict[str, Any]:
+        """Return a dict that JSON can hold, for the ledger; what follows from it (the fit) is not in it."""
+        return {
+            "sensor": self.sensor,
+            "performed_at_us": self.performed_at_us,
+            "performed_by": self.performed_by,
+            "as_found": [_point_to_jsonable(point) for point in self.as_found],
+            "as_left": [_point_to_jsonable(point) for point in self.as_left],
+            "reference_temperature_degC": _or_none(self.reference_temperature_degC),
+            "sensor_temperature_degC": _or_none(self.sensor_temperature_degC),
+            "valid_days": self.valid_days,
+            "nominal_cell_constant_per_cm": _or_none(self.nominal_cell_constant_per_cm),
+            "note": self.note,
+        }
+
+    @classmethod
+    def from_jsonable(cls, plain: Mapping[str, Any]) -> Self:
+        """Return the record that `to_jsonable` wrote.
+
+        Raises
+        ------
+        InvalidInputError
+            If something is missing, unknown, or cannot be.
+        """
+        try:
+            return cls(
+                sensor=str(plain["sensor"]),
+                performed_at_us=int(plain["performed_at_us"]),
+                performed_by=str(plain["performed_by"]),
+                as_found=tuple(_point_from_jsonable(point) for point in plain["as_found"]),
+                as_left=tuple(_point_from_jsonable(point) for point in plain.get("as_left", ())),
+                reference_temperature_degC=_or_nan(plain.get("reference_temperature_degC")),
+                sensor_temperature_degC=_or_nan(plain.get("sensor_temperature_degC")),
+                valid_days=float(plain.get("valid_days", DEFAULT_VALID_DAYS)),
+                nominal_cell_constant_per_cm=_or_nan(plain.get("nominal_cell_constant_per_cm")),
+                note=str(plain.get("note", "")),
+            )
+        except KeyError as error:
+            raise InvalidInputError(
+                "calibration record", found=f"no {error.args[0]}", allowed="all of its parts"
+            ) from error
+        except (TypeError, ValueError) as error:
+            raise InvalidInputError(
+                "calibration record", found=str(error), allowed="numbers and words as written"
+            ) from error
+
+
+def _or_none(value: float) -> float | None:
+    return value if math.isfinite(value) else None
+
+
+def _or_nan(value: float | None) -> float:
+    return math.nan if value is None else float(value)
+
+
+def _point_to_jsonable(point: Point) -> dict[str, Any]:
+    return {
+        "standard": point.standard.kind.value,
+        "value": point.standard.value,
+        "lot": point.standard.lot,
+        "expires_us": point.standard.expires_us,
+        "reading_mS_cm": point.reading_mS_cm,
+        "temperature_degC": point.temperature_degC,
+    }
+
+
+def _point_from_jsonable(plain: Mapping[str, Any]) -> Point:
+    expires = plain.get("expires_us")
+    standard = standard_of(
+        StandardKind(plain["standard"]),
+        float(plain["value"]),
+        lot=str(plain.get("lot", "")),
+        expires_us=None if expires is None else int(expires),
+    )
+    return Point(standard, float(plain["reading_mS_cm"]), float(plain["temperature_degC"]))
 
 
 @dataclass(frozen=True, slots=True)

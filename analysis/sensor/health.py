@@ -164,6 +164,8 @@ class Period:
         Quality flags of the same rows.
     neighbour_salinity : ndarray of float64, (rows,), optional
         A second sensor of the same tank at the same times (`aligned`); NaN where it said nothing.
+    level_m : ndarray of float64, (rows,), optional
+        Water level or depth: salinity of a tidal intake goes with it.
     cleaned_at_us : int, optional
         When the sensor was last cleaned or calibrated: trends begin there.
 
@@ -178,13 +180,14 @@ class Period:
     salinity: FloatArray
     by_test: QualityArray
     neighbour_salinity: FloatArray | None = None
+    level_m: FloatArray | None = None
     cleaned_at_us: int | None = None
 
     def __post_init__(self) -> None:
         rows = self.measured_at_us.shape[0]
         lengths = [self.temperature_degC.shape[0], self.salinity.shape[0], self.by_test.shape[-1]]
-        if self.neighbour_salinity is not None:
-            lengths.append(self.neighbour_salinity.shape[0])
+        beside = (self.neighbour_salinity, self.level_m)
+        lengths += [column.shape[0] for column in beside if column is not None]
         if any(length != rows for length in lengths):
             raise InvalidInputError("lengths of a sensor's period", found=lengths, allowed=f"{rows} rows each")
 
@@ -318,14 +321,17 @@ def _believable(period: Period) -> FloatArray:
 
 
 def _trends(period: Period) -> list[Reason]:
-    """Look for fouling: a slow one-sided fall with no match in temperature or neighbour."""
+    """Look for fouling: a slow one-sided fall with no match in temperature, level or neighbour."""
     rows = period.since(period.cleaned_at_us if period.cleaned_at_us is not None else -(1 << 62))
     own, times = _believable(period)[rows], period.measured_at_us[rows]
     neighbour = None if period.neighbour_salinity is None else period.neighbour_salinity[rows]
     has_neighbour = neighbour is not None and bool(np.isfinite(neighbour).mean() > 0.5)
     with np.errstate(invalid="ignore", divide="ignore"):
         judged = own / neighbour if has_neighbour and neighbour is not None else own
-    found = trend(judged, time_us=times, temperature_degC=None if has_neighbour else period.temperature_degC[rows])
+    causes = [] if has_neighbour else [period.temperature_degC[rows]]
+    if period.level_m is not None and not has_neighbour:
+        causes.append(period.level_m[rows])
+    found = trend(judged, time_us=times, explained_by=causes)
     if found is None or not _is_creep(found):
         return []
     figures = {

@@ -10,6 +10,8 @@ import numpy as np
 from analysis.arrays import MICROSECONDS_PER_SECOND
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
+
     from analysis.arrays import BoolArray, FloatArray, IntArray
 
 BLOCK_US: Final = 2 * 3600 * MICROSECONDS_PER_SECOND
@@ -20,6 +22,9 @@ MOST_BLOCKS: Final = 180
 
 LEAST_STEP: Final = 0.004
 """Steps of the water below 0.4 % are left in. [ln]"""
+
+LEAST_CAUSE: Final = 0.1
+"""A cause must change by so much between blocks: 0.1 K, 0.1 m."""
 
 _NORMAL_95 = 1.645
 
@@ -101,7 +106,7 @@ def without_changes(level: FloatArray, left_out: BoolArray) -> FloatArray:
     return np.asarray(level[0] + np.concatenate(([0.0], np.cumsum(kept))))
 
 
-def trend(values: FloatArray, *, time_us: IntArray, temperature_degC: FloatArray | None = None) -> Trend | None:
+def trend(values: FloatArray, *, time_us: IntArray, explained_by: Sequence[FloatArray] = ()) -> Trend | None:
     """Return the trend of positive *values* in percent, or None where the record is too short.
 
     Parameters
@@ -110,8 +115,8 @@ def trend(values: FloatArray, *, time_us: IntArray, temperature_degC: FloatArray
         Salinity, or its ratio to a neighbour's. NaN is left out.
     time_us : ndarray of int64, (rows,)
         In order of time.
-    temperature_degC : ndarray of float64, (rows,), optional
-        What follows temperature is taken out first: fouling does not.
+    explained_by : sequence of ndarray of float64, (rows,)
+        Temperature, water level: what goes with them is taken out first, fouling does not.
     """
     with np.errstate(invalid="ignore", divide="ignore"):
         logarithm = np.where(values > 0.0, np.log(values), np.nan)
@@ -120,40 +125,47 @@ def trend(values: FloatArray, *, time_us: IntArray, temperature_degC: FloatArray
     level, day = block_medians(logarithm, time_us=time_us, block_us=block_us)
     if level.shape[0] < FEWEST_BLOCKS:
         return None
-    if temperature_degC is not None:
-        warmth, _ = block_medians(
-            np.where(np.isfinite(logarithm), temperature_degC, np.nan), time_us=time_us, block_us=block_us
-        )
-        if warmth.shape == level.shape:
-            level = _without(level, warmth, day)
-    level = without_changes(level, steps_of_the_water(level, least_step=LEAST_STEP))
+    steps = steps_of_the_water(level, least_step=LEAST_STEP)
+    causes = [
+        medians
+        for cause in explained_by
+        for medians, _ in [
+            block_medians(np.where(np.isfinite(logarithm), cause, np.nan), time_us=time_us, block_us=block_us)
+        ]
+        if medians.shape == level.shape
+    ]
+    level = without_changes(_without(level, causes, ~steps), steps)
     slope, low, high = _theil_sen(level, day)
-    days = float(day[-1] - day[0])
-    change = 100.0 * slope * days
     quarters = np.array([np.median(part) for part in np.array_split(level, 4)])
     total = float(np.abs(np.diff(quarters)).sum())
     whole = abs(float(quarters[-1] - quarters[0]))
+    days = float(day[-1] - day[0])
     return Trend(
         percent_per_day=100.0 * slope,
         low_percent_per_day=100.0 * low,
         high_percent_per_day=100.0 * high,
         days=days,
-        percent=change,
+        percent=100.0 * slope * days,
         steadiness=whole / total if total > 0.0 else 0.0,
         largest_step_share=float(np.abs(np.diff(level)).max()) / whole if whole > 0.0 else 1.0,
     )
 
 
-def _without(level: FloatArray, warmth: FloatArray, day: FloatArray) -> FloatArray:
-    """Take out of *level* what goes with temperature, judged from differences so that two trends do not pair up."""
-    rises = np.diff(warmth)
-    if float(np.abs(rises).max(initial=0.0)) < 0.2:
+def _without(level: FloatArray, causes: list[FloatArray], judged: BoolArray) -> FloatArray:
+    """Take out of *level* what goes with its causes, judged from changes so that two trends do not pair up.
+
+    A cause that hardly moves from block to block explains nothing.
+    """
+    changes = [np.diff(cause) for cause in causes]
+    moving = [index for index, change in enumerate(changes) if float(np.abs(change).max(initial=0.0)) >= LEAST_CAUSE]
+    if not moving or int(judged.sum()) < FEWEST_BLOCKS - 2:
         return level
-    # least squares on differences, the mean taken out of both: a steady creep leaves no trace in it
-    rises = rises - rises.mean()
-    answers = np.diff(level) - np.diff(level).mean()
-    slope = float(rises @ answers / (rises @ rises))
-    return np.asarray(level - slope * (warmth - warmth.mean())) if np.isfinite(slope) and day.size else level
+    # the mean is taken out of the changes: a steady creep leaves no trace in them
+    terms = np.stack([changes[index][judged] for index in moving], axis=1)
+    answer = np.diff(level)[judged]
+    shares = np.linalg.lstsq(terms - terms.mean(axis=0), answer - answer.mean(), rcond=None)[0]
+    explained = np.stack([causes[index] - causes[index].mean() for index in moving], axis=1) @ shares
+    return np.asarray(level - explained)
 
 
 def _theil_sen(level: FloatArray, day: FloatArray) -> tuple[float, float, float]:

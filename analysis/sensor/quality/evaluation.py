@@ -49,6 +49,7 @@ BLOCK_ROWS: Final = 16_384
 """Larger blocks are cut into pieces that stay in the processor's cache; the result is the same."""
 
 _UNPHYSICAL = np.uint32(Flag.NEGATIVE | Flag.OUT_OF_RANGE)
+_DOUBTED = np.uint32(Flag.EXTRAPOLATED | Flag.WATER_KIND_DOUBTED)
 _TEST_BITS = np.array([TEST_FLAGS[test] for test in QualityTest], dtype=np.uint32)[:, None]
 _VALUE_TESTS = slice(QualityTest.GROSS_RANGE, TESTS)  # all but the gap
 
@@ -81,7 +82,8 @@ def evaluate(
         water. NaN where missing.
     flags : array_like of uint32, (rows,), optional
         Words already known. `negative` and `out_of_range` say that a NaN was an unphysical value: gross range
-        fails it, instead of calling it missing.
+        fails it, instead of calling it missing. With `extrapolated` or `water_kind_doubted` salinity is at least
+        suspect when rolled up.
 
     Returns
     -------
@@ -243,6 +245,10 @@ def _assembled(
         flags[late] |= np.uint32(Flag.LATE)
     over_tests = levels[_VALUE_TESTS].max(axis=0)
     quality, by_variable, by_test = (_as_flags(each) for each in (over_tests.max(axis=0), over_tests, levels))
+    if int(known.max()) and bool((known & _DOUBTED).any()):
+        doubted = (known & _DOUBTED) != 0
+        by_variable[Variable.SALINITY, doubted] = np.maximum(by_variable[Variable.SALINITY, doubted], Quality.SUSPECT)
+        quality[doubted] = np.maximum(quality[doubted], Quality.SUSPECT)
     if has_absent:
         by_variable[absent] = Quality.MISSING
         by_test[:, absent] = Quality.MISSING

@@ -20,7 +20,7 @@ from analysis.sensor.quality.limits import MEMORY_BUCKETS
 from analysis.sensor.quality.words import VARIABLES
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
 
     from analysis.arrays import BoolArray, FloatArray, IntArray
 
@@ -144,6 +144,28 @@ class QualityState:
             verdict=self.verdict,
             verdict_bucket=self.verdict_bucket,
         )
+
+    def rearranged(self, former: Sequence[int]) -> Self:
+        """Return the state for another list of sensors: after a change of the site.
+
+        Parameters
+        ----------
+        former : sequence of int
+            For each sensor of the new list its index in the old one, or -1 for a sensor that is new.
+
+        Raises
+        ------
+        InvalidInputError
+            If an index is not one of this state's.
+        """
+        index = np.array(former, dtype=np.int64).reshape(-1)
+        if index.shape[0] and not (index.min() >= -1 and index.max() < self.sensors):
+            raise InvalidInputError("former index of a sensor", found=former, allowed=f"-1 to {self.sensors - 1}")
+        state = type(self).fresh(index.shape[0])
+        known = index >= 0
+        for name in (*RECENT, *RING):
+            getattr(state, name)[known] = getattr(self, name)[index[known]]
+        return state
 
     def note_water_change(self, sensor: int, *, at_us: int) -> None:
         """Remember that the water around *sensor* was changed: a still tank may be judged for flat lines."""

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import json
+
 import gsw
 import numpy as np
 import pytest
@@ -13,11 +15,13 @@ from analysis.sensor.calibration import (
     MICROSECONDS_PER_DAY,
     CalibrationRecord,
     Point,
-    bottled_standard,
     drift_checks,
-    dry_air,
     fitted,
     in_force,
+)
+from analysis.sensor.standard import (
+    bottled_standard,
+    dry_air,
     potassium_chloride_standard,
     practical_salinity_from_k15,
     standard_seawater,
@@ -202,3 +206,41 @@ def test_who_and_how_long_must_be_said():
         )
     with pytest.raises(InvalidInputError, match="valid_days"):
         record(1, 1.0, valid_days=0)
+
+
+def test_a_record_goes_through_the_ledger():
+    one = CalibrationRecord(
+        sensor="l3-ct",
+        performed_at_us=5 * DAY,
+        performed_by="Ines",
+        as_found=(
+            Point(dry_air(), 0.01, 22.0),
+            Point(bottled_standard(12.88, lot="A17", expires_us=9 * DAY), 12.5, 24.0),
+            Point(potassium_chloride_standard(0.01), 1.38, 24.0),
+        ),
+        as_left=(Point(standard_seawater(1.0), 52.9, 25.0),),
+        reference_temperature_degC=20.0,
+        sensor_temperature_degC=20.1,
+        valid_days=14.0,
+        note="electrode cleaned",
+    )
+    stored = json.loads(json.dumps(one.to_jsonable()))
+    again = CalibrationRecord.from_jsonable(stored)
+    assert again.to_jsonable() == one.to_jsonable()
+    assert again.fit == one.fit
+
+
+@pytest.mark.parametrize(
+    ("change", "words"),
+    [
+        ({"as_found": None}, "calibration record"),
+        ({"performed_at_us": "soon"}, "calibration record"),
+        ({"as_found": [{"standard": "soup", "value": 1}]}, "calibration record"),
+        ({"as_found": [{"standard": "bottle", "value": 1413, "reading_mS_cm": 1.4, "temperature_degC": 25}]}, "label"),
+        ({"as_found": [{"standard": "bottle", "value": 1.413, "temperature_degC": 25}]}, "no reading_mS_cm"),
+    ],
+)
+def test_a_broken_record_is_refused(change, words):
+    plain = {**record(1, 1.0).to_jsonable(), **change}
+    with pytest.raises(InvalidInputError, match=words):
+        CalibrationRecord.from_jsonable(plain)

@@ -31,7 +31,7 @@ def days(count: float, seed: int = 0) -> dict:
 
 def judged(columns: dict, **more):
     now_us = more.pop("now_us") if "now_us" in more else int(columns["measured_at_us"][-1])
-    period_keys = {"neighbour_salinity", "cleaned_at_us"}
+    period_keys = {"neighbour_salinity", "cleaned_at_us", "level_m"}
     period = Period(**columns, **{key: more.pop(key) for key in period_keys & more.keys()})
     return assess(period, now_us=now_us, interval_s=INTERVAL_S, **more)
 
@@ -158,6 +158,22 @@ class TestFouling:
         columns["temperature_degC"] = columns["temperature_degC"] - np.linspace(0.0, 3.0, rows)
         columns["salinity"] = columns["salinity"] * (1 + 0.008 * (columns["temperature_degC"] - 25.0))
         assert judged(columns).belief is Belief.BELIEVE
+
+    def test_what_goes_with_the_water_level_is_no_fouling(self):
+        """From spring to neap the tide brings less sea water."""
+        columns = days(8)
+        hours = columns["measured_at_us"] / HOUR_US
+        level = 1.0 + (1.0 - hours / 240) * np.sin(2 * np.pi * hours / 12.42) - hours / 400
+        columns["salinity"] = columns["salinity"] * (1 + 0.1 * (level - 1.0))
+        assert judged(columns, level_m=level).belief is Belief.BELIEVE
+
+    def test_fouling_under_a_tide_is_still_found(self):
+        columns = days(8)
+        hours = columns["measured_at_us"] / HOUR_US
+        level = 1.0 + np.sin(2 * np.pi * hours / 12.42)
+        fouled = np.linspace(1.0, 0.93, len(hours))
+        columns["salinity"] = columns["salinity"] * (1 + 0.05 * (level - 1.0)) * fouled
+        assert judged(columns, level_m=level).findings == (Finding.SLOW_FALL,)
 
     def test_a_short_record_has_no_trend(self):
         columns = days(0.5)

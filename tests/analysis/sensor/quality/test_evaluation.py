@@ -144,6 +144,19 @@ def test_missing_and_unphysical_values_are_told_apart():
     assert set(live.by_test[:, T, 20]) == {9}
 
 
+@pytest.mark.parametrize("flag", [Flag.EXTRAPOLATED, Flag.WATER_KIND_DOUBTED])
+def test_salinity_beyond_what_is_published_is_at_least_suspect(flag):
+    stream = tank(1.0)
+    flags = np.zeros(len(stream), dtype=np.uint32)
+    flags[10:13] = flag
+    stream.temperature[11] = 99.0
+    stream.conductivity[12] = np.nan
+    _, live = run(stream, flags=flags)
+    assert live.quality[9:14].tolist() == [1, 3, 4, 9, 1]
+    assert live.by_variable[:, 10].tolist() == [1, 1, 3]
+    assert live.flags[10] == flag
+
+
 def test_missing_is_never_hidden_by_an_amendment():
     stream = tank(40.0, seed=2)
     rng = np.random.default_rng(1)

@@ -103,6 +103,19 @@ def test_a_stored_state_goes_on_as_if_nothing_had_happened(seed):
     assert_same(expected, evaluate(by_bytes, thresholds(), **rest))
 
 
+def test_a_changed_list_of_sensors_keeps_what_is_known_of_each():
+    stream = eventful(4)
+    state, _ = evaluate(QualityState.fresh(SENSORS), thresholds(), **stream.part(0, 300))
+    turned = state.rearranged([2, -1, 0])
+    for new, old in ((0, 2), (2, 0)):
+        assert turned.recent_bytes(new) == state.recent_bytes(old)
+        assert turned.ring_bytes(new) == state.ring_bytes(old)
+    assert turned.recent_bytes(1) == QualityState.fresh(1).recent_bytes(0)
+    assert state.rearranged([]).sensors == 0
+    with pytest.raises(InvalidInputError, match="former index"):
+        state.rearranged([3])
+
+
 def test_the_state_handed_in_stays_as_it_was():
     stream = eventful(1)
     state, _ = evaluate(QualityState.fresh(SENSORS), thresholds(), **stream.part(0, 200))

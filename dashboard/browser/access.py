@@ -8,9 +8,12 @@ from dataclasses import replace
 from datetime import datetime, timedelta
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
+
 from analysis.alarm.set_point import HALF_WIDTH
 from dashboard.browser.installed import Installed, blood_at_rest, installed
 from dashboard.browser.sights import (
+    MOST_BELIEVABLE_QUALITY,
     NO_DAY,
     AlarmSight,
     Band,
@@ -20,6 +23,7 @@ from dashboard.browser.sights import (
     StressSight,
     TankSight,
 )
+from dashboard.browser.trend import LOOK_BACK_US, STANDING, Trend, limits_of, trend_of
 from ingest.clock import MICROSECONDS_PER_SECOND, to_microseconds
 from ingest.site.loading import load, load_text
 from ingest.store.errors import MissingStoreError
@@ -36,13 +40,14 @@ if TYPE_CHECKING:
     from ingest.site.sensors import Sensor
     from ingest.store.alarms import AlarmRow
     from ingest.store.ledger import Event
-    from ingest.store.queries import History, Latest, LatestStress, Outcome, Refused, StressHistory
+    from ingest.store.queries import Cohort, History, Latest, LatestStress, Outcome, Refused, StressHistory
 
 SNAPSHOT_S = 0.9
 """One look at the store serves all screens for this long."""
 SLOW_S = 20.0
 """Day lines and the list of animals change slowly: so long one look serves for them."""
 STALE_INTERVALS = 3.0
+TREND_S = 5.0
 
 
 class Access:
@@ -120,7 +125,7 @@ class Access:
 
         Raises
         ------
-        sqlite3.OperationalError
+        StoreBusyError
             If the inbox can not be written.
         """
         now_us = self.clock.now_us()
@@ -156,7 +161,7 @@ class Access:
             return self._without_store()
 
     def _without_store(self) -> Snapshot:
-        what = self._keep("without store", SLOW_S, lambda: installed(self._file_site, ()))
+        what = self._keep("without store", SLOW_S, lambda: self._installed(self._file_site, ()))
         tanks = _tanks(what, latest={}, alarms=(), days={}, stress={}, now_us=self.clock.now_us())
         return replace(self._blank(what.site), tanks=tanks)
 
@@ -187,6 +192,8 @@ class Access:
         latest = queries.latest()
         alive = queries.meta().get("alive_at")
         tanks = _tanks(what, latest=latest, alarms=present, days=days, stress=stress, now_us=now_us)
+        tanks = tuple(self._with_trend(tank) if tank.alarms or tank.is_outside else tank for tank in tanks)
+        present = tuple(sorted(self._with_trends(present, tanks), key=lambda a: a.rank))
         return replace(
             self._blank(site),
             now_us=now_us,
@@ -200,10 +207,59 @@ class Access:
             today=self._raised_today(site, now_us),
         )
 
+    def _installed(self, site: Site, cohorts: tuple[Cohort, ...]) -> Installed:
+        return installed(site, cohorts, tables=self._queries.folder / "ion_tables")
+
+    def trend(self, tank: TankSight, kind: str) -> Trend:
+        """Return where a tank's "salinity" or "temperature" is heading; looked up anew every few seconds."""
+        sensor = tank.shown
+        if sensor is None or not sensor.is_fresh(self.clock.now_us()):
+            return STANDING
+        name = f"trend {kind} {sensor.id}"
+        found: Trend = self._keep(name, TREND_S, lambda: self._trend(tank, sensor.id, kind))
+        return found
+
+    def _trend(self, tank: TankSight, sensor: str, kind: str) -> Trend:
+        now_us = self.clock.now_us()
+        history = self._queries.history(sensor, from_us=now_us - LOOK_BACK_US, to_us=now_us + HOUR_US)
+        is_salinity = kind == "salinity"
+        values = history.salinity if is_salinity else history.temperature_degC
+        species = (
+            () if tank.animals is None else tank.animals.limits if is_salinity else tank.animals.temperature_limits
+        )
+        band = (tank.salinity if is_salinity else tank.temperature).limits
+        believed = np.where(history.quality > MOST_BELIEVABLE_QUALITY, np.nan, values)
+        return trend_of(history.time_us, believed, kind=kind, limits=limits_of(band, species))
+
+    def _with_trend(self, tank: TankSight) -> TankSight:
+        return replace(tank, alarms=tuple(self._moving(alarm, tank) for alarm in tank.alarms))
+
+    def _with_trends(self, alarms: tuple[AlarmSight, ...], tanks: tuple[TankSight, ...]) -> list[AlarmSight]:
+        moving = {alarm.key: alarm for tank in tanks for alarm in tank.alarms}
+        return [moving.get(alarm.key, alarm) for alarm in alarms]
+
+    def _moving(self, alarm: AlarmSight, tank: TankSight) -> AlarmSight:
+        """Return the alarm with the value of now instead of the one that raised it, and the way the water goes."""
+        kind = QUANTITY_OF_CODE.get(alarm.condition, "")
+        shown = tank.shown
+        if kind not in ("salinity", "temperature") or shown is None or tank.is_unwatched:
+            return alarm
+        trend = self.trend(tank, kind)
+        facts = replace(
+            alarm.facts,
+            value=shown.salinity if kind == "salinity" else shown.temperature_degC,
+            rate_per_h=trend.per_h,
+            next_limit=trend.next_limit,
+            time_left_min=trend.likely_min,
+            time_left_low_min=trend.soonest_min,
+            time_left_high_min=trend.latest_min,
+        )
+        return replace(alarm, facts=facts)
+
     def _slow(self, site: Site, now_us: int) -> tuple[Installed, dict[str, DayLine]]:
         lines = self._queries.day_lines(from_us=now_us - DAY_US, to_us=now_us + HOUR_US)
         days = {sensor: DayLine(times / MICROSECONDS_PER_SECOND, values) for sensor, (times, values) in lines.items()}
-        return installed(site, tuple(self._queries.cohorts())), days
+        return self._installed(site, tuple(self._queries.cohorts())), days
 
     def _raised_today(self, site: Site, now_us: int) -> tuple[tuple[int, str], ...]:
         events = self._queries.events(kind_prefix="alarm.raised", from_us=midnight_us(now_us, site), most=200)

@@ -309,6 +309,8 @@ def _strokes(frame: _Frame, line: Line, scale: _Scale, style: str) -> str:
     out = ""
     for number in np.unique(stretch_of[kept]):
         run = kept[stretch_of[kept] == number]
+        if len(run) == 1:
+            run = np.repeat(run, 2)  # a lone value is a dot, drawn by the round ends of a line without length
         points = _points(frame.x(line.times_s[run]), scale.y(line.values[run]))
         out += f'<polyline {style} points="{points}" fill="none" stroke-linejoin="round" stroke-linecap="round"/>'
     return out

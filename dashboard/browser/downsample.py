@@ -41,10 +41,26 @@ def extremes_kept(times: FloatArray, values: FloatArray, *, columns: int) -> Int
     return kept
 
 
+LOCAL_STEPS = 4
+LOCAL_FACTOR = 3.0
+
+
 def stretches(times: FloatArray, *, longest_silence: float) -> list[slice]:
-    """Return the unbroken stretches of *times*: a gap longer than *longest_silence* breaks the line."""
+    """Return the unbroken stretches of *times*.
+
+    A gap is a silence longer than *longest_silence*, and longer than three times what is usual just before and just after:
+    a record that came in every five minutes is a line too, even where the probe now sends every ten seconds.
+    """
     if not len(times):
         return []
-    breaks = np.flatnonzero(np.diff(times) > longest_silence) + 1
-    edges = np.r_[0, breaks, len(times)]
-    return [slice(int(a), int(b)) for a, b in pairwise(edges)]
+    steps = np.diff(times)
+    long = np.flatnonzero(steps > longest_silence)
+    breaks = [i + 1 for i in long.tolist() if steps[i] > LOCAL_FACTOR * _usual_step(steps, i)]
+    edges = [0, *breaks, len(times)]
+    return [slice(a, b) for a, b in pairwise(edges)]
+
+
+def _usual_step(steps: FloatArray, at: int) -> float:
+    """Return the usual step beside the one at *at*: the longer of what is usual before and after it, 0 where it stands alone."""
+    sides = steps[max(0, at - LOCAL_STEPS) : at], steps[at + 1 : at + 1 + LOCAL_STEPS]
+    return max((float(np.median(side)) for side in sides if len(side)), default=0.0)

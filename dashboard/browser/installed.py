@@ -17,6 +17,7 @@ from ingest.water_kinds import kinds_of
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
+    from pathlib import Path
 
     from analysis.animal.fallbacks import Resolved
     from analysis.animal.stage import Stage
@@ -37,9 +38,9 @@ class Installed:
     stale_after_s: Mapping[str, float]
 
 
-def installed(site: Site, cohorts: tuple[Cohort, ...]) -> Installed:
+def installed(site: Site, cohorts: tuple[Cohort, ...], *, tables: Path) -> Installed:
     """Return what follows from *site* and the animals in its tanks; the bands are the very ones that the chain judges."""
-    kinds = kinds_of(site)
+    kinds = kinds_of(site, tables=tables)
     stocked = stocked_tanks(site, cohorts)
     sensors = roster(site, kinds)
     stages = animal_roster(site, kinds, stocked)

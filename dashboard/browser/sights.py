@@ -188,6 +188,18 @@ class TankSight:
         return self.priority in ("urgent", "soon") or self.is_unwatched
 
     @property
+    def is_outside(self) -> bool:
+        """Return whether a believable value lies outside the band that alarms judge, alarm or not: an alarm waits for its delay."""
+        if self.is_unwatched or self.shown is None:
+            return False
+        pairs = ((self.shown.salinity, self.salinity.limits), (self.shown.temperature_degC, self.temperature.limits))
+        return any(
+            limits is not None and not limits[0] <= value <= limits[1]
+            for value, limits in pairs
+            if math.isfinite(value)
+        )
+
+    @property
     def balance(self) -> Balance:
         """Return its osmotic balance, in whole mOsm/kg: more is not true, and equal pictures are drawn once."""
         animals = self.animals

@@ -35,6 +35,10 @@ class AlarmFacts:
         Signed: negative is falling. [unit of the quantity per hour]
     difference_percent : float
         How far two sensors are apart. [%]
+    time_left_min, time_left_low_min, time_left_high_min : float
+        Until `next_limit`, with its range. [min]
+    next_limit : float
+        The limit towards which it goes, where it is not `limit` itself.
     clock_offset_s : float
         How far a clock is off. [s]
     """
@@ -58,6 +62,7 @@ class AlarmFacts:
     time_left_min: float = math.nan
     time_left_low_min: float = math.nan
     time_left_high_min: float = math.nan
+    next_limit: float = math.nan
     clock_offset_s: float = math.nan
     since_us: int | None = None
 
@@ -160,4 +165,9 @@ def _with_unit(value: float, kind: str, language: Language, *, is_set: bool) -> 
 
 
 def _left(facts: AlarmFacts, language: Language) -> str:
-    return times.time_left(facts.time_left_min, facts.time_left_low_min, facts.time_left_high_min, language=language)
+    left = times.time_left(facts.time_left_min, facts.time_left_low_min, facts.time_left_high_min, language=language)
+    if not left or not math.isfinite(facts.next_limit):
+        return left
+    kind = facts.quantity or QUANTITY_OF_CODE.get(facts.code, "salinity")
+    limit = _with_unit(facts.next_limit, kind, language, is_set=True)
+    return str(language.TIMES["until"]).format(left=left, limit=limit)

@@ -58,6 +58,7 @@ TIMES: Final = {
     "between": "about {best} ({low} to {high})",
     "about": "about {best}",
     "less_than_minute": "less than a minute",
+    "until": "{left} until {limit}",
 }
 
 PRIORITIES: Final = {
@@ -74,6 +75,7 @@ ALARMS: Final[dict[str, tuple[str, tuple[str, ...], tuple[str, ...]]]] = {
         "too fresh",
         (
             "Turning fresh: {value}, set {set_point}, falling {rate} an hour.",
+            "Turning fresh: {value}, limit {limit}, falling {rate} an hour.",
             "Too fresh: {value}, set {set_point}.",
             "Too fresh: {value}, limit {limit}.",
             "The water is too fresh.",
@@ -84,6 +86,7 @@ ALARMS: Final[dict[str, tuple[str, tuple[str, ...], tuple[str, ...]]]] = {
         "too salty",
         (
             "Turning salty: {value}, set {set_point}, rising {rate} an hour.",
+            "Turning salty: {value}, limit {limit}, rising {rate} an hour.",
             "Too salty: {value}, set {set_point}.",
             "Too salty: {value}, limit {limit}.",
             "The water is too salty.",
@@ -92,12 +95,22 @@ ALARMS: Final[dict[str, tuple[str, tuple[str, ...], tuple[str, ...]]]] = {
     ),
     "temperature_low": (
         "too cold",
-        ("Too cold: {value}, set {set_point}.", "Too cold: {value}, limit {limit}.", "The water is too cold."),
+        (
+            "Cooling: {value}, set {set_point}, falling {rate} an hour.",
+            "Too cold: {value}, set {set_point}.",
+            "Too cold: {value}, limit {limit}.",
+            "The water is too cold.",
+        ),
         ("Check heater, inflow and air. Switch power off before you reach into the water.",),
     ),
     "temperature_high": (
         "too warm",
-        ("Too warm: {value}, set {set_point}.", "Too warm: {value}, limit {limit}.", "The water is too warm."),
+        (
+            "Warming: {value}, set {set_point}, rising {rate} an hour.",
+            "Too warm: {value}, set {set_point}.",
+            "Too warm: {value}, limit {limit}.",
+            "The water is too warm.",
+        ),
         ("All aeration on. Check heater and chiller. Switch power off before you reach into the water.",),
     ),
     "changing_too_fast": (
@@ -431,6 +444,7 @@ BOARD: Final = {
     "needs_today": "needs somebody today",
     "as_should_be": "as they should be",
     "unwatched_count": "unwatched",
+    "leaving_band": "outside their band",
     "first": "First",
     "worst_first": "worst first",
     "rest": "As they should be",
@@ -460,6 +474,8 @@ BOARD: Final = {
     "no_probe": "There is no probe in this tank. Read it by hand, or place one in the site file.",
     "never_heard": "Nothing has been heard from its probe yet. Check its power, its topic and the broker.",
     "silent": "No believable value comes in. Take a reading by hand now, then look at the probe and its cable.",
+    "outside": "Outside its band.",
+    "outside_waits": "If it stays so, an alarm follows. Have a look if you are near.",
     "since": "since {moment}",
     "has_it": "{who} has it since {moment}",
     "going": "I am going",

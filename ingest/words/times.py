@@ -93,22 +93,27 @@ def duration(seconds: float, *, language: Language = ENGLISH) -> str:
     return str(words["days_hours"] if hours and days < 7 else words["days"]).format(d=days, h=hours, n=days)
 
 
+def _true_step_min(low_min: float, high_min: float) -> int:
+    """Return to how many minutes a time with this range is true enough to be said."""
+    width = high_min - low_min
+    return next((step for below, step in ((10, 1), (45, 5), (150, 30)) if width < below), 60)
+
+
 def time_left(
     best_min: float, low_min: float = math.nan, high_min: float = math.nan, *, language: Language = ENGLISH
 ) -> str:
-    """Return "about 11 min (9 to 14 min)", the range only where it is known."""
+    """Return "about 11 min (9 to 14 min)", the range only where it is known, and no finer than the range is wide."""
     words = language.TIMES
     if not math.isfinite(best_min):
         return ""
     if best_min < 1:
         return str(words["less_than_minute"])
-    best = duration(best_min * MINUTE_S, language=language)
     if not (math.isfinite(low_min) and math.isfinite(high_min)) or high_min - low_min < 1:
-        return str(words["about"]).format(best=best)
+        return str(words["about"]).format(best=duration(best_min * MINUTE_S, language=language))
+    step = _true_step_min(low_min, high_min)
+    low_min, high_min = math.floor(low_min / step) * step, math.ceil(high_min / step) * step
+    best = duration(max(round(best_min / step) * step, 1) * MINUTE_S, language=language)
     high = duration(high_min * MINUTE_S, language=language)
-    low = (
-        str(round(low_min))
-        if max(low_min, high_min, best_min) < 119 and low_min >= 1.5
-        else duration(low_min * MINUTE_S, language=language)
-    )
+    is_one_unit = high_min < 120 and low_min >= 1
+    low = str(int(low_min)) if is_one_unit else duration(low_min * MINUTE_S, language=language)
     return str(words["between"]).format(best=best, low=low, high=high)

@@ -12,7 +12,8 @@ from ingest.store.ledger import Event
 from ingest.words import times
 from ingest.words.alarms import AlarmFacts, alarm_words
 
-ACTS = ("raised", "acknowledged", "returned", "cleared", "shelved", "unshelved", "re_alarmed")
+MACHINES = ("worker", "monitor")
+"""What the program does by itself has no person beside it."""
 
 
 def page(snapshot: Snapshot, visit: Visit, *, events: list[Event]) -> str:
@@ -79,7 +80,7 @@ def _event(event: Event, snapshot: Snapshot, visit: Visit) -> str:
     words = alarm_words(AlarmFacts(str(event.body.get("condition", "unknown"))), language=visit.language)
     act = event.kind.partition(".")[2]
     acts = visit.language.ALARM_ACTS
-    who = "" if event.actor == "worker" else event.actor
+    who = "" if event.actor in MACHINES else event.actor
     return (
         f'<tr><td class="quiet">{escape(moment)}</td><th scope="row">{escape(snapshot.subject_name(event.subject))}</th>'
         f"<td>{escape(words.title)}</td><td>{escape(acts.get(act, act.replace('_', ' ')))}</td><td>{escape(who)}</td></tr>"

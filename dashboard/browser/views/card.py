@@ -8,7 +8,7 @@ from html import escape
 
 from dashboard.browser import glyphs
 from dashboard.browser.sights import Band, DayLine, Snapshot, TankSight
-from dashboard.browser.views.say import say, say_unwatched
+from dashboard.browser.views.say import say, say_outside, say_unwatched
 from dashboard.browser.visit import Visit, age, link
 from ingest.words import numbers
 from ingest.words.alarms import stress_band
@@ -153,4 +153,6 @@ def balance_words(tank: TankSight, visit: Visit) -> str:
 def _say(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
     if tank.alarms:
         return say(tank.alarms[0], snapshot, visit, more=len(tank.alarms) - 1)
-    return say_unwatched(tank, snapshot, visit) if tank.is_unwatched and snapshot.has_store else ""
+    if tank.is_unwatched:
+        return say_unwatched(tank, snapshot, visit) if snapshot.has_store else ""
+    return say_outside(visit) if tank.is_outside else ""

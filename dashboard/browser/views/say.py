@@ -48,6 +48,11 @@ def say_unwatched(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
     return f'<div class="say urgent"><p><b>{visit.text("unwatched")}</b> {visit.text(key)}</p></div>'
 
 
+def say_outside(visit: Visit) -> str:
+    """Return the line of a tank that has left its band and has no alarm yet."""
+    return f'<div class="say soon"><p><b>{visit.text("outside")}</b> {visit.text("outside_waits")}</p></div>'
+
+
 def who_has_it(alarm: AlarmSight, snapshot: Snapshot, visit: Visit) -> str:
     """Return who has the alarm and since when, as text."""
     moment = times.moment(alarm.raised_at_us, snapshot.zone, now_us=snapshot.now_us, language=visit.language)

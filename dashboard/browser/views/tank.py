@@ -11,7 +11,7 @@ from dashboard.browser.sights import Snapshot, TankSight
 from dashboard.browser.tank_chart import SPANS_S, Stretch
 from dashboard.browser.views.card import balance_words
 from dashboard.browser.views.frame import framed, teach
-from dashboard.browser.views.say import going, say, say_unwatched, who_has_it
+from dashboard.browser.views.say import going, say, say_outside, say_unwatched, who_has_it
 from dashboard.browser.views.sensors import trust_words
 from dashboard.browser.visit import Visit, age, link
 from ingest.words import numbers, times
@@ -52,6 +52,8 @@ def _action(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
     if not tank.alarms:
         if tank.is_unwatched:
             return f'<div class="action" data-k="action">{say_unwatched(tank, snapshot, visit)}</div>'
+        if tank.is_outside:
+            return f'<div class="action" data-k="action">{say_outside(visit)}</div>'
         return f'<p class="calm" data-k="calm">{visit.text("tank_calm")}</p>'
     lines = []
     for i, alarm in enumerate(tank.alarms):

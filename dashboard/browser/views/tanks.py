@@ -30,10 +30,12 @@ def _counts(snapshot: Snapshot, visit: Visit) -> str:
     seen = [tank for tank in snapshot.tanks if not tank.is_unwatched]
     now, today = (sum(tank.priority == word for tank in seen) for word in ("urgent", "soon"))
     unwatched = len(snapshot.tanks) - len(seen)
+    leaving = sum(tank.is_outside and tank.priority not in ("urgent", "soon") for tank in seen)
     figures = (
         (now, "needs_now", "urgent"),
         (today, "needs_today", "soon"),
-        (len(seen) - now - today, "as_should_be", ""),
+        *(((leaving, "leaving_band", "soon"),) if leaving else ()),
+        (len(seen) - now - today - leaving, "as_should_be", ""),
         (unwatched, "unwatched_count", "urgent"),
     )
     sensors = [sensor for tank in snapshot.tanks for sensor in tank.sensors] + list(snapshot.waters)

@@ -316,7 +316,7 @@ def _animal_state(row: StressRow) -> TankState:
     latest |= {name: getattr(row, name) for name in ("thermal_strain", "internal_mOsm_kg", "gap_mOsm_kg")}
     latest |= {"driver": int(Driver.CHANGE), "band": int(Band.STRAINED)}
     state = {"updated_at_us": row.measured_at, "acclimated": row.acclimated_mOsm_kg}
-    return TankState(row.tank, row.measured_at, {"animals": {"cohort": row.cohort, "state": state, "latest": latest}})
+    return TankState(row.tank, row.measured_at, {"cohort": row.cohort, "state": state, "latest": latest})
 
 
 def _felt(scene: Scene) -> None:
@@ -341,7 +341,7 @@ def _felt(scene: Scene) -> None:
                 140 - 90 * fallen,
             )
         )
-    scene.commit(BlockCommit(stress=rows, tank_states=[_animal_state(rows[-1])]))
+    scene.commit(BlockCommit(stress=rows, animal_states=[_animal_state(rows[-1])]))
 
 
 def many_waters(count: int) -> tuple[Water, ...]:

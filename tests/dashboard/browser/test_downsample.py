@@ -42,3 +42,17 @@ def test_gaps_part_the_stretches():
     times = np.array([0.0, 10, 20, 100, 110])
     assert stretches(times, longest_silence=30) == [slice(0, 3), slice(3, 5)]
     assert stretches(np.array([]), longest_silence=30) == []
+
+
+def test_a_regular_but_sparse_record_is_a_line():
+    sparse, dense = np.arange(0, 90_000, 300.0), 90_000 + np.arange(0, 3600, 10.0)
+    assert len(stretches(np.concatenate((sparse, dense)), longest_silence=60)) == 1
+
+
+def test_an_outage_is_a_gap_in_a_sparse_record_too():
+    times = np.arange(0, 90_000, 300.0)
+    assert len(stretches(times[(times < 30_000) | (times > 34_000)], longest_silence=60)) == 2
+
+
+def test_two_values_far_apart_are_two():
+    assert len(stretches(np.array([0.0, 1000.0]), longest_silence=60)) == 2

@@ -111,7 +111,7 @@ def test_a_stale_value_is_grey_and_its_age_is_a_warning(access: Access):
 def test_a_tank_says_what_to_do_first(access: Access):
     page = text(draw("tank", access, id="l3"))
     assert (
-        page.index("Too fresh: 27.4, set 31 ± 2.")
+        page.index("Turning fresh: 27.4, set 31 ± 2, falling 5.3 an hour.")
         < page.index("Close the fresh-water inflow.")
         < page.index("I am going")
     )

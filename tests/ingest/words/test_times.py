@@ -81,4 +81,9 @@ def test_time_left_shows_its_range_where_it_is_known():
     assert times.time_left(11) == "about 11 min"
     assert times.time_left(0.4) == "less than a minute"
     assert times.time_left(math.nan) == ""
-    assert times.time_left(150, 90, 240) == "about 2 h 30 min (90 min to 4 h)"
+    assert times.time_left(150, 110, 235) == "about 2 h 30 min (90 min to 4 h)"
+
+
+def test_time_left_is_no_finer_than_its_range():
+    assert times.time_left(266.9, 240.4, 299.8) == "about 4 h 30 min (4 h to 5 h)"
+    assert times.time_left(33, 25, 51) == "about 35 min (25 to 55 min)"

@@ -59,7 +59,7 @@ class Feed:
             SimulatedSensor(sensor, number=number, hatchery=self._hatchery, seed=self.seed)
             for number, sensor in enumerate(self.site.sensors)
         ]
-        self._encoders = [encoder_for(sensor) for sensor in self.site.sensors]
+        self._encoders = [encoder_for(sensor, has_channels=True) for sensor in self.site.sensors]
 
     def between(self, start_us: int, end_us: int, *, step_s: float | None = None) -> Iterator[tuple[int, str, bytes]]:
         """Yield time sent, topic and payload of every message from *start_us* to before *end_us*.

@@ -15,9 +15,11 @@ import numpy as np
 
 from analysis.errors import InvalidInputError
 from analysis.tank import Exchange, Inflow, TankWater, step, tank_water
+from analysis.water.properties import Seawater
+from analysis.water.sodium_chloride_water import SodiumChlorideWater
 from ingest.simulator.scenario import Scenario, TankEvent, TankRun
 from ingest.simulator.weather import US_PER_HOUR, Weather, smooth_noise
-from ingest.water_kinds import kinds_of
+from ingest.site.waters import SEAWATER, SODIUM_CHLORIDE
 
 if TYPE_CHECKING:
     from collections.abc import Iterator, Mapping
@@ -263,13 +265,13 @@ class _Plant:
 
 
 def _known_kinds(site: Site) -> Mapping[str, WaterKind]:
-    kinds = kinds_of(site)
-    for number, tank in enumerate(site.tanks):
-        if tank.water not in kinds:
-            where = f"tanks[{number}].water"
-            raise InvalidInputError(
-                "water of a simulated tank", found=tank.water, allowed=", ".join(kinds), where=where
-            )
+    """Return the kinds of water that the simulator has; a laboratory analysis is none of them."""
+    kinds: dict[str, WaterKind] = {SEAWATER: Seawater(), SODIUM_CHLORIDE: SodiumChlorideWater()}
+    places = [(f"tanks[{number}].water", tank.water) for number, tank in enumerate(site.tanks)]
+    places += [(f"source_waters[{number}].kind", water.kind) for number, water in enumerate(site.source_waters)]
+    for where, name in places:
+        if name not in kinds:
+            raise InvalidInputError("kind of a simulated water", found=name, allowed=", ".join(kinds), where=where)
     return kinds
 
 

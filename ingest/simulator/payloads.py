@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import json
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any, Final, Protocol, TypeAlias
 
 import cbor2
@@ -27,6 +27,7 @@ DECIMALS: Final = {
     "bar": 4,
 }
 """Decimals that a sensor prints in each unit."""
+CHANNEL_DECIMALS: Final = 2
 SENML_UNITS: Final = {"S/m": "S/m", "degC": "Cel", "K": "K"}
 """Units of the SenML registry (RFC 8428, section 12.1). A record in another unit is sent without one."""
 SENML_CBOR_LABELS: Final = {"bt": -3, "n": 0, "u": 1, "v": 2}
@@ -48,23 +49,30 @@ class Readings:
         The time that the payload states. [us since 1970, UTC]
     conductivity, temperature, pressure : ndarray of float64
         As sent: compensated if the sensor compensates.
+    channels : dict of str to ndarray of float64
+        Further channels, by `channel_key`.
     """
 
     time_us: IntArray
     conductivity: FloatArray
     temperature: FloatArray
     pressure: FloatArray
+    channels: dict[str, FloatArray] = field(default_factory=dict)
 
     def where(self, is_kept: BoolArray) -> Readings:
         """Return the rows that are kept."""
         return Readings(
-            self.time_us[is_kept], self.conductivity[is_kept], self.temperature[is_kept], self.pressure[is_kept]
+            self.time_us[is_kept],
+            self.conductivity[is_kept],
+            self.temperature[is_kept],
+            self.pressure[is_kept],
+            {key: values[is_kept] for key, values in self.channels.items()},
         )
 
-    def column(self, quantity: str) -> FloatArray:
-        """Return the values of one quantity."""
+    def column(self, key: str) -> FloatArray:
+        """Return the values of one quantity or channel."""
         columns = {"conductivity": self.conductivity, "temperature": self.temperature, "pressure": self.pressure}
-        return columns[quantity]
+        return columns[key] if key in columns else self.channels[key]
 
 
 class Encoder(Protocol):
@@ -75,8 +83,20 @@ class Encoder(Protocol):
         ...
 
 
-def encoder_for(sensor: Sensor) -> Encoder:
+def channel_key(name: str) -> str:
+    """Return the key under which `Readings` holds the further channel *name* of a sensor."""
+    return f"channel/{name}"
+
+
+def encoder_for(sensor: Sensor, *, has_channels: bool = False) -> Encoder:
     """Return what writes the payloads of *sensor*.
+
+    Parameters
+    ----------
+    sensor : Sensor
+        Its payload, names of fields, units and time.
+    has_channels : bool
+        Whether the readings hold the sensor's further channels; else those are left out of the payload.
 
     Raises
     ------
@@ -86,19 +106,20 @@ def encoder_for(sensor: Sensor) -> Encoder:
     if not any(getattr(sensor.fields, name) for name in QUANTITIES):
         found = f"sensor {sensor.id}"
         raise InvalidInputError("fields", found=found, allowed="a sensor of conductivity, temperature or pressure")
+    names = _names(sensor, has_channels=has_channels)
     if sensor.payload == "json":
-        return _Json(sensor)
-    return _Numbers(sensor) if sensor.payload == "number" else _SenML(sensor)
+        return _Json(sensor, names)
+    return _Numbers(sensor, names) if sensor.payload == "number" else _SenML(sensor, names)
 
 
 class _Json:
     """A JSON object with named fields, nested where a name has dots."""
 
-    def __init__(self, sensor: Sensor) -> None:
+    def __init__(self, sensor: Sensor, names: dict[str, str]) -> None:
         self._topic = str(sensor.topic)
         self._time_format = sensor.time_format
         self._decimals = _decimals(sensor)
-        named = {name: path for name in (*QUANTITIES, TIME) if (path := getattr(sensor.fields, name))}
+        named = names | ({TIME: sensor.fields.time} if sensor.fields.time else {})
         tree: dict[str, Any] = {}
         for name, path in named.items():
             *branches, leaf = path.split(".")
@@ -119,7 +140,7 @@ class _Json:
         texts = [
             _time_texts(readings.time_us, self._time_format)
             if name == TIME
-            else _number_texts(readings.column(name), self._decimals[name])
+            else _number_texts(readings.column(name), self._decimals.get(name, CHANNEL_DECIMALS))
             for name in self._columns
         ]
         topic, frame = self._topic, self._frame
@@ -129,17 +150,18 @@ class _Json:
 class _SenML:
     """A pack of SenML records (RFC 8428) that shares its base time."""
 
-    def __init__(self, sensor: Sensor) -> None:
+    def __init__(self, sensor: Sensor, names: dict[str, str]) -> None:
         self._topic = str(sensor.topic)
         self._is_cbor = sensor.payload == "senml-cbor"
-        self._names = {name: path for name in QUANTITIES if (path := getattr(sensor.fields, name))}
+        self._names = names
         self._units = {name: SENML_UNITS.get(unit) for name, unit in _units(sensor).items()}
         self._decimals = _decimals(sensor)
 
     def __call__(self, readings: Readings) -> list[list[Message]]:
         """Return the one message of each reading; one without any value is an empty pack."""
         times = (readings.time_us / 1e6).round(3).tolist()
-        columns = {name: readings.column(name).round(self._decimals[name]).tolist() for name in self._names}
+        decimals = {name: self._decimals.get(name, CHANNEL_DECIMALS) for name in self._names}
+        columns = {name: readings.column(name).round(decimals[name]).tolist() for name in self._names}
         rows = zip(times, *columns.values(), strict=True)
         return [[(self._topic, self._pack(self._records(time, values)))] for time, *values in rows]
 
@@ -147,7 +169,7 @@ class _SenML:
         records: list[dict[str, Any]] = []
         for (name, path), value in zip(self._names.items(), values, strict=True):
             if value == value:
-                unit = self._units[name]
+                unit = self._units.get(name)
                 records.append({"n": path, **({"u": unit} if unit else {}), "v": value})
         if records:
             records[0] = {"bt": time, **records[0]}
@@ -162,17 +184,28 @@ class _SenML:
 class _Numbers:
     """A plain number on a topic of its own for each quantity; such a payload has no time."""
 
-    def __init__(self, sensor: Sensor) -> None:
-        self._topics = {name: topic for topic, name in sensor.topics().items() if name in QUANTITIES}
+    def __init__(self, sensor: Sensor, names: dict[str, str]) -> None:
+        keys = {topic: name if name in QUANTITIES else channel_key(name) for topic, name in sensor.topics().items()}
+        self._topics = {key: topic for topic, key in keys.items() if key in names}
         self._decimals = _decimals(sensor)
 
     def __call__(self, readings: Readings) -> list[list[Message]]:
         """Return one message of each reading for each quantity that has a value."""
-        columns = [_number_texts(readings.column(name), self._decimals[name]) for name in self._topics]
+        columns = [
+            _number_texts(readings.column(key), self._decimals.get(key, CHANNEL_DECIMALS)) for key in self._topics
+        ]
         return [
             [(topic, text.encode()) for topic, text in zip(self._topics.values(), row, strict=True) if text != "null"]
             for row in zip(*columns, strict=True)
         ]
+
+
+def _names(sensor: Sensor, *, has_channels: bool) -> dict[str, str]:
+    """Return the field of each quantity and channel that is written, by its key."""
+    names = {name: path for name in QUANTITIES if (path := getattr(sensor.fields, name))}
+    if has_channels:
+        names |= {channel_key(name): channel.field for name, channel in sensor.channels.items()}
+    return names
 
 
 def _units(sensor: Sensor) -> dict[str, str]:

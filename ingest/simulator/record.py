@@ -136,7 +136,8 @@ class Record:
             times = np.empty(0, dtype=np.int64) if chunk.time_us is None else chunk.time_us
             columns = {name: self._as_sent(name, values) for name, values in chunk.values.items()}
             nothing = np.full(times.size, np.nan)
-            readings = Readings(times, *(columns.get(name, nothing) for name in QUANTITIES))
+            conductivity, temperature, pressure = (columns.get(name, nothing) for name in QUANTITIES)
+            readings = Readings(times, conductivity, temperature, pressure)
             has_value = np.any([np.isfinite(values) for values in columns.values()], axis=0)
             lost = sum(remark.line not in chunk.lines for remark in chunk.remarks)
             yield Block(readings.where(has_value), int(np.sum(~has_value)), lost)

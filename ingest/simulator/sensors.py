@@ -11,11 +11,12 @@ from typing import TYPE_CHECKING, Final
 import numpy as np
 
 from analysis.water.compensation import Compensation, CompensationMethod, specific_conductance_from_conductivity
+from analysis.water.oxygen import oxygen_solubility_mg_L
 from analysis.water.units import CONDUCTIVITY_UNITS, PRESSURE_UNITS, TEMPERATURE_UNITS, LinearUnit
 from ingest.simulator.chance import normal, uniform
 from ingest.simulator.hatchery import TrueWater
-from ingest.simulator.payloads import Readings
-from ingest.simulator.weather import US_PER_HOUR
+from ingest.simulator.payloads import Readings, channel_key
+from ingest.simulator.weather import US_PER_HOUR, smooth_noise
 
 if TYPE_CHECKING:
     from analysis.arrays import BoolArray, FloatArray, IntArray
@@ -30,6 +31,10 @@ LOST_PER_DAY_PART: Final = 0.0003
 """What a film of growth takes from the reading of a probe that is wiped once a week."""
 DAYS_BETWEEN_WIPES: Final = 7.0
 DRY_MS_CM: Final = 0.004
+OXYGEN: Final = "oxygen"
+OXYGEN_PART: Final = 0.92
+"""Oxygen of an aerated tank, as part of saturation: more by day, less by night. Common practice."""
+CHANNEL_NOISE_PART: Final = 0.004
 FILLER: Final = -99.9
 FILLER_PART: Final = 0.4
 LAYERS: Final = (0.93, 1.02)
@@ -61,8 +66,9 @@ class Sent:
 
 @dataclass(frozen=True, slots=True)
 class _Felt:
-    """What cell and thermometer feel, before compensation and units."""
+    """What cell and thermometer feel, before compensation and units; and the true water around them."""
 
+    water: TrueWater
     conductivity_mS_cm: FloatArray
     temperature_degC: FloatArray
     pressure_dbar: FloatArray
@@ -103,7 +109,8 @@ class SimulatedSensor:
         """Return what the sensor sends at *times_us*; where it is silent there is no row."""
         if not times_us.size:
             nothing = np.empty(0)
-            return Sent(times_us, Readings(times_us, nothing, nothing, nothing), np.empty(0, dtype=bool))
+            channels = {channel_key(name): nothing for name in self.sensor.channels}
+            return Sent(times_us, Readings(times_us, nothing, nothing, nothing, channels), np.empty(0, dtype=bool))
         felt = self._felt(times_us)
         time_us = times_us.copy()
         is_sent, is_readable = np.ones(times_us.size, dtype=bool), np.ones(times_us.size, dtype=bool)
@@ -141,6 +148,7 @@ class SimulatedSensor:
         noise = CONDUCTIVITY_NOISE_PART * normal(times_us, seed=(*self._seed, 1))
         temperature = water.temperature_degC + self._offset_K
         return _Felt(
+            water,
             np.asarray(true * self._gain * film * (1.0 + noise)),
             np.asarray(temperature + TEMPERATURE_NOISE_K * normal(times_us, seed=(*self._seed, 2))),
             np.asarray(pressure),
@@ -199,8 +207,25 @@ class SimulatedSensor:
             _as_sent(conductivity, CONDUCTIVITY_UNITS[self.sensor.conductivity_unit]),
             np.where(is_filler, FILLER, temperature),
             _as_sent(felt.pressure_dbar, PRESSURE_UNITS[self.sensor.pressure_unit]),
+            {channel_key(name): self._channel(name, felt.water, times_us) for name in self.sensor.channels},
         )
         return Sent(times_us, readings, is_readable)
+
+    def _channel(self, name: str, water: TrueWater, times_us: IntArray) -> FloatArray:
+        """Return the values of a further channel: oxygen from the water, anything else quiet between its limits."""
+        channel, seed = self.sensor.channels[name], (*self._seed, 8, sum(name.encode()))
+        hours = self._hours(times_us)
+        wander = smooth_noise(hours, seed=seed, shortest_h=2.0, longest_h=30.0)
+        noise = CHANNEL_NOISE_PART * normal(times_us, seed=seed)
+        if name == OXYGEN:
+            by_day = 0.04 * self._hatchery.weather.sun(hours - 3.0)
+            part = np.asarray(OXYGEN_PART + by_day + 0.015 * wander + noise)
+            salt_g_kg = self._kind.absolute_salinity_from_salinity(water.salinity)
+            solubility = oxygen_solubility_mg_L(salt_g_kg, temperature_degC=water.temperature_degC)
+            return 100.0 * part if channel.unit == "%" else np.asarray(part * solubility)
+        low = 0.0 if channel.low is None else channel.low
+        high = low + 2.0 if channel.high is None else channel.high
+        return np.asarray((low + high) / 2.0 + (high - low) * (0.08 * wander + noise))
 
 
 def _as_sent(values: FloatArray, unit: LinearUnit) -> FloatArray:

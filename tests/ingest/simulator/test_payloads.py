@@ -77,6 +77,33 @@ def test_plain_numbers_have_topics_of_their_own_and_no_message_where_there_is_no
     assert encoded(lines, row) == [("sandbank/t1/temp", b"25.68")]
 
 
+CHANNELS = "\n    channels: {oxygen: {field: water.do, unit: mg/L}}"
+
+
+@pytest.mark.parametrize(
+    ("lines", "messages"),
+    [
+        (
+            "fields: {conductivity: water.c}",
+            [("sandbank/t1", b'{"water":{"c":48.123,"do":7.12}}')],
+        ),
+        (
+            "payload: number\n    fields: {conductivity: c}",
+            [("sandbank/t1/c", b"48.123"), ("sandbank/t1/water.do", b"7.12")],
+        ),
+        (
+            "payload: senml-json\n    fields: {conductivity: c}",
+            [("sandbank/t1", b'[{"bt":1796000000.123,"n":"c","v":48.123},{"n":"water.do","v":7.12}]')],
+        ),
+    ],
+)
+def test_further_channels_are_written_where_the_readings_hold_them(lines, messages):
+    sensor = one_tank(lines + CHANNELS).sensors[0]
+    row = Readings(ROW.time_us, ROW.conductivity, ROW.temperature, ROW.pressure, {"channel/oxygen": np.array([7.1234])})
+    assert encoder_for(sensor, has_channels=True)(row) == [messages]
+    assert b"do" not in encoder_for(sensor)(ROW)[0][0][1]
+
+
 def test_a_sensor_of_nothing_is_refused():
     site = one_tank("fields: {conductivity: c}")
     channel_only = site.sensors[0].model_copy(

@@ -119,3 +119,16 @@ def test_a_wrong_clock_moves_the_stated_time_only():
     sent = simulated(one_tank(), sensor_event("clock-wrong", size=-1.0)).sent(TIMES)
     assert np.array_equal(sent.sent_at_us, TIMES)
     assert np.array_equal(sent.readings.time_us, TIMES - is_on(TIMES) * HOUR_US)
+
+
+def test_further_channels_oxygen_from_the_water_and_others_between_their_limits():
+    """Oxygen at saturation by Garcia and Gordon 1992, as gsw has it (umol/kg; 31.998 g/mol)."""
+    lines = """fields: {conductivity: c, temperature: t}
+    channels: {oxygen: {field: do, unit: mg/L, low: 4}, ph: {field: ph, low: 7.6, high: 8.4}}"""
+    sent = simulated(one_tank(lines)).sent(TIMES)
+    reference = gsw.SR_from_SP(31.0)
+    saturated = gsw.O2sol_SP_pt(31.0, 25.0) * 31.998e-6 * gsw.rho_t_exact(reference, 25.0, 0.0)
+    part = sent.readings.channels["channel/oxygen"] / saturated
+    assert np.all((part > 0.82) & (part < 1.02))
+    assert np.all((sent.readings.channels["channel/ph"] > 7.6) & (sent.readings.channels["channel/ph"] < 8.4))
+    assert np.std(np.diff(part)) > 0.0

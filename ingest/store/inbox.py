@@ -76,25 +76,29 @@ class Inbox:
             raise StoreBusyError(str(self.path), reason=str(error)) from error
 
     def _insert(self, command: Command) -> None:
-        if not self.path.exists():
-            self.prepare()
-        with closing(open_writer(self.path)) as connection, transaction(connection):
-            connection.execute(
-                "INSERT OR IGNORE INTO command (id, kind, subject, body, body_version, actor, role, expected,"
-                " submitted_at, expires_at) VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
-                (
-                    command.id,
-                    command.kind,
-                    command.subject,
-                    msgspec.json.encode(command.body).decode(),
-                    command.body_version,
-                    command.actor,
-                    command.role,
-                    command.expected,
-                    command.submitted_at,
-                    command.expires_at,
-                ),
-            )
+        with closing(open_writer(self.path)) as connection:
+            # Every time: a file that is there may have been begun by another and not be finished.
+            migrate(connection, INBOX, path=str(self.path))
+            with transaction(connection):
+                self._insert_row(connection, command)
+
+    def _insert_row(self, connection: sqlite3.Connection, command: Command) -> None:
+        connection.execute(
+            "INSERT OR IGNORE INTO command (id, kind, subject, body, body_version, actor, role, expected,"
+            " submitted_at, expires_at) VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
+            (
+                command.id,
+                command.kind,
+                command.subject,
+                msgspec.json.encode(command.body).decode(),
+                command.body_version,
+                command.actor,
+                command.role,
+                command.expected,
+                command.submitted_at,
+                command.expires_at,
+            ),
+        )
 
 
 class InboxTaker:
@@ -110,6 +114,10 @@ class InboxTaker:
             "SELECT * FROM command WHERE seq > ? ORDER BY seq LIMIT ?", (seq, limit)
         ).fetchall()
         return [(int(row["seq"]), _from_row(row)) for row in rows]
+
+    def newest_seq(self) -> int:
+        """Return the newest sequence number, 0 before the first."""
+        return int(self._connection.execute("SELECT coalesce(max(seq), 0) FROM command").fetchone()[0])
 
     def close(self) -> None:
         """Close the connection."""

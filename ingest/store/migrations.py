@@ -101,6 +101,9 @@ STORE: tuple[Migration, ...] = (
             "CREATE INDEX event_kind ON event (kind, id)",
             "CREATE TRIGGER event_is_never_changed BEFORE UPDATE ON event BEGIN SELECT RAISE(ABORT, 'the ledger is append-only'); END",
             "CREATE TRIGGER event_is_never_deleted BEFORE DELETE ON event BEGIN SELECT RAISE(ABORT, 'the ledger is append-only'); END",
+            # INSERT OR REPLACE deletes without asking the trigger above: an id that is there is never written again.
+            "CREATE TRIGGER event_only_grows BEFORE INSERT ON event WHEN EXISTS (SELECT 1 FROM event WHERE id >= NEW.id)"
+            " BEGIN SELECT RAISE(ABORT, 'the ledger is append-only'); END",
             # Projections of the ledger and of the chain, rebuilt by replay.
             "CREATE TABLE alarm (subject TEXT NOT NULL, condition TEXT NOT NULL, state TEXT NOT NULL, priority TEXT NOT NULL,"
             " is_active INTEGER NOT NULL, occurrence INTEGER NOT NULL, raised_at INTEGER, value REAL, limit_value REAL,"

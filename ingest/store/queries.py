@@ -27,6 +27,8 @@ RAW_SPAN_US = 26 * HOUR_US
 Q15_SPAN_US = 62 * DAY_US
 H1_SPAN_US = 370 * DAY_US
 """Up to these spans a chart is drawn from single readings, quarter hours, hours; beyond, from days."""
+MOST_POINTS = 9_000
+"""No chart gets more points than this: single readings that are more are drawn as means with their extremes."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -331,9 +333,11 @@ class Queries:
 def _raw_history(connection: Any, sensor: int, from_us: int, to_us: int) -> History:
     rows = connection.execute(
         "SELECT measured_at, coalesce(practical_salinity, absolute_salinity_g_kg), temperature_degC, osmolality_mOsm_kg, quality"
-        " FROM reading WHERE measured_at >= ? AND measured_at < ? AND sensor = ? ORDER BY measured_at",
-        (from_us, to_us, sensor),
+        " FROM reading WHERE measured_at >= ? AND measured_at < ? AND sensor = ? ORDER BY measured_at LIMIT ?",
+        (from_us, to_us, sensor, MOST_POINTS + 1),
     ).fetchall()
+    if len(rows) > MOST_POINTS:
+        return _thinned_history(connection, sensor, from_us, to_us)
     salinity, temperature = _floats(rows, 1), _floats(rows, 2)
     return History(
         resolution_us=0,
@@ -349,6 +353,21 @@ def _raw_history(connection: Any, sensor: int, from_us: int, to_us: int) -> Hist
     )
 
 
+def _thinned_history(connection: Any, sensor: int, from_us: int, to_us: int) -> History:
+    """Return single readings that are too many for a chart as the rollups would hold them, in finer steps."""
+    step = -(-(to_us - from_us) // (MOST_POINTS - 1))
+    salinity = "CASE WHEN quality < 4 THEN coalesce(practical_salinity, absolute_salinity_g_kg) END"
+    temperature = "CASE WHEN quality < 4 THEN temperature_degC END"
+    rows = connection.execute(
+        f"SELECT measured_at / ? * ? AS bucket, avg({salinity}), min({salinity}), max({salinity}), avg({temperature}),"
+        f" min({temperature}), max({temperature}), avg(CASE WHEN quality < 4 THEN osmolality_mOsm_kg END),"
+        " CASE WHEN sum(quality IN (3, 4)) * 2 > count(*) THEN 3 ELSE 1 END"
+        " FROM reading WHERE measured_at >= ? AND measured_at < ? AND sensor = ? GROUP BY bucket ORDER BY bucket",
+        (step, step, from_us, to_us, sensor),
+    ).fetchall()
+    return _bucket_history(rows, resolution_us=step)
+
+
 def _rolled_history(connection: Any, table: str, sensor: int, from_us: int, to_us: int) -> History:
     rows = connection.execute(
         "SELECT bucket, salinity_sum / nullif(salinity_n, 0), salinity_min, salinity_max,"
@@ -356,8 +375,12 @@ def _rolled_history(connection: Any, table: str, sensor: int, from_us: int, to_u
         f" CASE WHEN suspect_n * 2 > n THEN 3 ELSE 1 END FROM {table} WHERE sensor = ? AND bucket >= ? AND bucket < ? ORDER BY bucket",
         (sensor, from_us, to_us),
     ).fetchall()
+    return _bucket_history(rows, resolution_us=rollups.LEVELS[table])
+
+
+def _bucket_history(rows: list[Any], *, resolution_us: int) -> History:
     return History(
-        resolution_us=rollups.LEVELS[table],
+        resolution_us=resolution_us,
         time_us=np.array([row[0] for row in rows], dtype=np.int64),
         salinity=_floats(rows, 1),
         salinity_min=_floats(rows, 2),

@@ -110,6 +110,8 @@ class Worker:
         self.store = Store(site.store.folder(site_file))
         self._inbox = InboxTaker(Inbox(self.store.folder))
         self._inbox_seq = restoring.meta_number(self.store.connection, "inbox_seq")
+        if self._inbox_seq > self._inbox.newest_seq():
+            self._inbox_seq = 0  # Another inbox than before, numbered anew; what was decided is known by its id.
         with self.store.transaction() as connection:
             numbers = register(
                 connection, site, text=text, actor=site.identity.default_actor.name, now_us=clock.now_us()

@@ -7,16 +7,23 @@ import os
 import signal
 import subprocess
 import sys
-from collections.abc import Iterator
+import threading
+import uuid
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from pathlib import Path
+from typing import Any, Self
 
 import gsw
 import numpy as np
 
+from ingest.clock import FakeClock
+from ingest.mqtt import Received
 from ingest.store.errors import MissingStoreError
+from ingest.store.inbox import Command, Inbox
 from ingest.store.lock import is_held
-from ingest.store.queries import Queries
+from ingest.store.queries import Outcome, Queries
+from ingest.worker.worker import Worker
 from tests.harness.process import wait_until
 
 START_US = 1_780_000_000_000_000
@@ -80,6 +87,94 @@ def steady_readings(
         sensor = index % sensors
         at_us = start_us + (index // sensors) * step_us + sensor
         yield f"quay/s{sensor}", payload(at_us, 31.0 + 0.02 * random.standard_normal())
+
+
+class Bench:
+    """A worker without a broker, on a clock that stands still: messages are handed to it, and it is ticked, by the test."""
+
+    def __init__(self, folder: Path, text: str, *, now_us: int = START_US) -> None:
+        self.site_file = folder / "site.yaml"
+        self.site_file.write_text(text, encoding="utf-8")
+        self.clock = FakeClock(now_us)
+        self.stop = threading.Event()
+        self.worker = Worker(self.site_file, clock=self.clock)
+        self.store = self.worker.store.folder
+        self.queries = Queries(self.store)
+
+    def __enter__(self) -> Self:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.worker.close()
+
+    def restart(self) -> None:
+        """Let go of the worker as a kill would, between two commits, and start another on the same store and clock."""
+        self.worker.close()
+        self.worker = Worker(self.site_file, clock=self.clock)
+
+    def received(self, topic: str, body: bytes, *, at_us: int | None = None, is_retained: bool = False) -> Received:
+        """Return a message as the broker would have delivered it now."""
+        return Received(topic, body, self.clock.now_us() if at_us is None else at_us, is_retained, 0, 0)
+
+    def send(self, topic: str, *bodies: bytes, is_retained: bool = False) -> bool:
+        """Hand messages of one topic to the worker as one block."""
+        return self.process([self.received(topic, body, is_retained=is_retained) for body in bodies])
+
+    def process(self, messages: Sequence[Received]) -> bool:
+        """Hand messages to the worker as one block."""
+        return self.worker.process(messages, self.stop)
+
+    def read(self, sensor: str, at_us: int, salinity: float, temperature_degC: float = 28.0) -> bool:
+        """Let one sensor send one reading."""
+        return self.send(f"quay/{sensor}", payload(at_us, salinity, temperature_degC))
+
+    def tick(self) -> None:
+        """Let everything happen that time alone brings."""
+        self.worker.tick(self.stop)
+
+    def roll_up(self) -> None:
+        """Roll up all there is."""
+        while self.worker.roll_up():
+            pass
+
+    def act(
+        self,
+        kind: str,
+        tank: str,
+        condition: str,
+        *,
+        actor: str = "Duty",
+        role: str = "manager",
+        expected: str | None = None,
+        life_s: float = 900.0,
+        command_id: str | None = None,
+        **body: Any,
+    ) -> Outcome:
+        """Let a person ask for something by way of the inbox, and return what became of it."""
+        command_id = command_id or str(uuid.uuid4())
+        now_us = self.clock.now_us()
+        Inbox(self.store).submit(
+            Command(
+                kind=kind,
+                subject=f"tank/{tank}",
+                actor=actor,
+                role=role,
+                submitted_at=now_us,
+                expires_at=now_us + round(life_s * 1e6),
+                body={"condition": condition, **body},
+                expected=expected,
+                id=command_id,
+            )
+        )
+        self.worker.take_commands(self.stop)
+        outcome = self.queries.outcome(command_id)
+        assert outcome is not None, "the worker has not decided"
+        return outcome
+
+    def alarm(self, tank: str, condition: str) -> str:
+        """Return the state of an alarm; normal where it never was anything else."""
+        found = {(row.subject, row.condition): row.state for row in self.queries.alarms()}
+        return found.get((f"tank/{tank}", condition), "normal")
 
 
 class WorkerProcess:

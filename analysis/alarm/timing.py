@@ -103,7 +103,7 @@ def judged_times(
     """
     offset = received_at_us - measured_at_us
     is_trusted = np.abs(offset) <= CLOCK_TOLERANCE_INTERVALS * interval_us[sensor]
-    is_plain = is_trusted & (np.bincount(sensor, minlength=times.offset_us.size)[sensor] == 1)
+    is_plain = _is_plain(times, sensor, measured_at_us, is_trusted)
     is_late = measured_at_us <= times.judged_at_us[sensor]
     result = JudgedTimes(measured_at_us.copy(), ~is_late, np.zeros(sensor.size, dtype=np.bool_), is_late)
     after = SensorTimes(
@@ -121,6 +121,18 @@ def judged_times(
         _judge_row(after, result, row, int(sensor[row]), int(measured_at_us[row]), int(received_at_us[row]),
                    int(interval_us[sensor[row]]), int(stale_after_us[sensor[row]]))  # fmt: skip
     return after, result
+
+
+def _is_plain(times: SensorTimes, sensor: IntArray, measured_at_us: IntArray, is_trusted: BoolArray) -> BoolArray:
+    """Return which readings are of sensors of which all readings here are trusted and each is newer than the one before."""
+    order = np.argsort(sensor, kind="stable")
+    owner, measured = sensor[order], measured_at_us[order]
+    before = times.judged_at_us[owner]
+    is_next = owner[1:] == owner[:-1]
+    before[1:][is_next] = measured[:-1][is_next]
+    is_odd = (measured <= before) | ~is_trusted[order]
+    odd_of = np.bincount(owner, weights=is_odd, minlength=times.offset_us.size)
+    return np.asarray(odd_of[sensor] == 0)
 
 
 def _judge_row(

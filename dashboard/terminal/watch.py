@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import gc
 import signal
 import sys
 import threading
@@ -43,6 +44,9 @@ def run(args: argparse.Namespace) -> int:
     for number in (signal.SIGINT, signal.SIGTERM):
         signal.signal(number, lambda *_: stop.set())
     signal.signal(signal.SIGHUP, lambda *_: worker.reload_soon())
+    # What is loaded now stays for years: the collector need not look at it again at every block.
+    gc.collect()
+    gc.freeze()
     server = health.serve(worker, port=args.health_port) if args.health_port else None
     try:
         worker.run(stop)

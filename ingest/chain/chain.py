@@ -25,7 +25,7 @@ from ingest.chain.animals import fresh_animals, restored_animals, step
 from ingest.chain.water import water
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
 
     from analysis.alarm.bank import AlarmBank
     from analysis.alarm.events import Event
@@ -274,30 +274,36 @@ def act(state: ChainState, *, tank: int, kind: ConditionKind, event: Event, now_
 QUANTITIES = ("salinity", "wet", "temperature", "osmolality")
 
 
-def tank_body(tanks: TankRoster, state: ChainState, tank: int) -> dict[str, Any]:
-    """Return what the chain remembers of the readings of one tank as plain JSON data: columns, one entry a sensor."""
-    watchers = tanks.watchers_of[tank]
-    times = state.times
-    body: dict[str, Any] = {
-        "sensors": tanks.sensors_of[tank],
-        "times": [
-            times.received_at_us[watchers].tolist(),
-            times.offset_us[watchers].tolist(),
-            times.judged_at_us[watchers].tolist(),
-            times.is_clock_doubted[watchers].tolist(),
-        ],
-    }
-    count = len(watchers)
-    for name in QUANTITIES:
-        latest: LatestReadings = getattr(state, name)
-        # The slots of a tank are its sensors in their order; what lies behind them belongs to no sensor.
-        body[name] = [
-            latest.value[tank, :count].tolist(),
-            latest.quality[tank, :count].tolist(),
-            latest.judged_at_us[tank, :count].tolist(),
-            latest.believed_at_us[tank, :count].tolist(),
+def tank_bodies(tanks: TankRoster, state: ChainState, touched: Sequence[int]) -> list[dict[str, Any]]:
+    """Return what the chain remembers of the readings of the tanks *touched*, each as plain JSON data.
+
+    A body holds columns, one entry a sensor. All tanks are taken out of the arrays at once: this runs for every block.
+    """
+    index = np.asarray(touched, dtype=np.int64)
+    # The slots of a tank are its sensors in their order; what lies behind them belongs to no sensor.
+    columns = {
+        name: [
+            getattr(getattr(state, name), member)[index].tolist()
+            for member in ("value", "quality", "judged_at_us", "believed_at_us")
         ]
-    return body
+        for name in QUANTITIES
+    }
+    times = state.times
+    kept = [
+        times.received_at_us.tolist(),
+        times.offset_us.tolist(),
+        times.judged_at_us.tolist(),
+        times.is_clock_doubted.tolist(),
+    ]
+    bodies = []
+    for place, tank in enumerate(touched):
+        sensors, watchers = tanks.sensors_of[tank], tanks.watchers_of[tank].tolist()
+        count = len(sensors)
+        body: dict[str, Any] = {name: [part[place][:count] for part in parts] for name, parts in columns.items()}
+        body["sensors"] = sensors
+        body["times"] = [[column[watcher] for watcher in watchers] for column in kept]
+        bodies.append(body)
+    return bodies
 
 
 def restored_state(
@@ -308,7 +314,7 @@ def restored_state(
     lives: Mapping[str, Mapping[str, Any]],
     alarms: Mapping[tuple[ConditionKind, int], AlarmState],
 ) -> ChainState:
-    """Return the state that was kept with `tank_body` and `animal_body`, by the tanks' ids, and the alarms; restoring fires nothing.
+    """Return the state that was kept with `tank_bodies` and `animal_body`, by the tanks' ids, and the alarms; restoring fires nothing.
 
     Sensors, tanks and cohorts that are gone are left out; new ones start fresh.
     """
@@ -321,7 +327,7 @@ def restored_state(
 
 
 def _restore_tank(tanks: TankRoster, state: ChainState, tank: int, body: Mapping[str, Any]) -> None:
-    """Put back what `tank_body` kept, in place in the arrays of a fresh state."""
+    """Put back what `tank_bodies` kept, in place in the arrays of a fresh state."""
     places = {sensor: place for place, sensor in enumerate(body["sensors"])}
     for slot, (watcher, sensor) in enumerate(
         zip(tanks.watchers_of[tank].tolist(), tanks.sensors_of[tank], strict=True)

@@ -10,7 +10,7 @@ from analysis.alarm.state import name_of, state_to_dict
 from analysis.alarm.transition import transition_to_dict
 from analysis.flags import Flag
 from ingest.chain.animals import animal_body
-from ingest.chain.chain import tank_body
+from ingest.chain.chain import tank_bodies
 from ingest.store.alarms import AlarmRow
 from ingest.store.block import ChannelRow, Conflict, Occurrence, OutboxRow, StressRow, TankState
 from ingest.store.ledger import Event
@@ -113,8 +113,8 @@ def tank_states(plant: Plant, state: ChainState, tanks: Sequence[int]) -> list[T
     """Return what the chain remembers of the readings of *tanks* as rows of the store."""
     newest = state.salinity.judged_at_us.max(axis=1)
     return [
-        TankState(int(plant.numbers.tank[tank]), int(newest[tank]), tank_body(plant.tanks, state, tank))
-        for tank in tanks
+        TankState(int(plant.numbers.tank[tank]), int(newest[tank]), body)
+        for tank, body in zip(tanks, tank_bodies(plant.tanks, state, tanks), strict=True)
     ]
 
 

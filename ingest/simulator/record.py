@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass
+from itertools import product
 from typing import TYPE_CHECKING, Final
 
 import numpy as np
@@ -11,7 +12,8 @@ import numpy as np
 from analysis.errors import InvalidInputError
 from analysis.water.units import CONDUCTIVITY_UNITS, PRESSURE_UNITS, TEMPERATURE_UNITS
 from ingest.simulator.payloads import QUANTITIES, TIME, Readings
-from ingest.tables import Table, TableError
+from ingest.tables import Hints, Table, TableError
+from ingest.tables.layout import SEPARATORS
 
 if TYPE_CHECKING:
     from collections.abc import Iterator, Mapping, Sequence
@@ -183,15 +185,19 @@ def _check_quantities(columns: Mapping[str, Sequence[str]], *, sensor: Sensor, s
 
 def _header_names(path: Path, wanted: Sequence[str]) -> tuple[str, ...]:
     """Return the names of all columns: the header is the line that has the wanted ones, or a usual name of the time."""
-    if wanted:
-        return Table(path, columns={}, texts={name: name for name in wanted}).layout.names
-    for name in USUAL_NAMES[TIME]:
+    tries = [wanted] if wanted else [[name] for name in USUAL_NAMES[TIME]]
+    # One separator after the other, blanks last: a header such as "Time (UTC),Conductivity (mS/cm)" has both.
+    for separator, names in product(SEPARATORS, tries):
         try:
-            return Table(path, columns={}, texts={TIME: name}).layout.names
+            texts = {name: name for name in names}
+            return Table(path, columns={}, texts=texts, hints=Hints(separator=separator)).layout.names
         except TableError as error:
             if not error.line:
-                raise  # not this name: the file itself cannot be read
-            found = error.found
+                raise  # not these names: the file itself cannot be read
+            if wanted and separator == SEPARATORS[-1]:
+                raise
+            if separator == SEPARATORS[0]:
+                found = error.found
     allowed = f"--column time=NAME, or a usual name: {', '.join(USUAL_NAMES[TIME])}"
     raise InvalidInputError("column of time", found=found, allowed=allowed, where=path.name)
 

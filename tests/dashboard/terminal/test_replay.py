@@ -73,6 +73,17 @@ def test_it_publishes_what_the_sensor_would_and_says_so(folder, capsys, protocol
     assert datetime.fromisoformat(last["t"]).timestamp() - datetime.fromisoformat(first["t"]).timestamp() == 5400.0
 
 
+def test_the_demos_record_goes_to_the_demos_sensor(folder, capsys):
+    demo_data = Path(__file__).parents[3] / "demo_data"
+    with Broker() as broker, Listener(broker, "larkfen/#") as heard:
+        site = (demo_data / "site.yaml").read_text(encoding="utf-8").replace("port: 1883", f"port: {broker.port}")
+        (folder / "site.yaml").write_text(site, encoding="utf-8")
+        options = ["--sensor", "y2-ct", "--site", str(folder / "site.yaml")]
+        assert main(["replay", str(demo_data / "record_y2.csv"), *options]) == 0
+        wait_until(lambda: len(heard.payloads) == 274, what="every row with a value")
+    assert capsys.readouterr().out.startswith("274 rows sent and acknowledged; 14 blank rows skipped")
+
+
 def test_kept_times_are_those_of_the_record(folder):
     with Broker() as broker, Listener(broker, "creek/#") as heard:
         assert replay(folder, broker, "--keep-times", "--column", "conductivity=spcond_mS_cm") == 0

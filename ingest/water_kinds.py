@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 import msgspec
 import numpy as np
 
-from analysis.water.ionic_table import IonicTable, tabulate
+from analysis.water.ionic_table import TABLE_VERSION, IonicTable, tabulate
 from analysis.water.ionic_water import IonicWater
 from analysis.water.properties import Seawater, WaterKind
 from analysis.water.sodium_chloride_water import SodiumChlorideWater
@@ -20,9 +20,6 @@ if TYPE_CHECKING:
 
     from ingest.site.models import Site
     from ingest.site.waters import Analysis
-
-TABLE_VERSION = 1
-"""Counts up when the way of making a table changes: an older table on disk is then made anew."""
 
 
 def kinds_of(site: Site, *, tables: Path) -> Mapping[str, WaterKind]:

@@ -11,7 +11,6 @@ from typing import TYPE_CHECKING
 from pydantic import ValidationError
 
 from analysis.water.ionic_water import IonicWater
-from analysis.water.ions import IonAnalysis
 from ingest.site.document import Document, read_document
 from ingest.site.problems import SiteFileError, nearest_word
 from ingest.site.waters import Analysis
@@ -45,18 +44,7 @@ def water_of_analysis_file(path: Path) -> IonicWater:
     except ValidationError as error:
         paths = [details["loc"] for details in error.errors(include_url=False, include_context=False)]
         raise SiteFileError([_problem(document, path) for path in paths]) from error
-    return IonicWater.from_analysis(
-        IonAnalysis(
-            name=found.id,
-            amounts={str(ion): amount for ion, amount in found.ions.items()},
-            unit=found.unit,
-            temperature_degC=found.temperature_degC,
-            density_kg_m3=found.density_kg_m3,
-            pH=found.pH,
-            conductivity_mS_cm=found.conductivity_mS_cm,
-            osmolality_mOsm_kg=found.osmolality_mOsm_kg,
-        )
-    )
+    return IonicWater.from_analysis(found.ion_analysis())
 
 
 def _problem(document: Document, path: tuple[str | int, ...]) -> Problem:

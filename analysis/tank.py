@@ -183,7 +183,7 @@ def tank_water(
         np.asarray(temperature_degC, dtype=np.float64),
     )
     if np.any(volume <= 0.0):
-        raise InvalidInputError("volume_L", found=volume.min(), allowed="above 0 L")
+        raise InvalidInputError("volume_L", found=float(volume.min()), allowed="above 0 L")
     if np.any((salinity < 0.0) | (salinity >= 1000.0)):
         raise InvalidInputError("absolute_salinity_g_kg", found=salinity.tolist(), allowed="0 to below 1000 g/kg")
     mass = solution.density_kg_m3(salinity, temperature_degC=temperature) * volume / LITRES_PER_M3
@@ -278,7 +278,7 @@ def _check(exchange: Exchange, duration_s: ArrayLike) -> None:
         *((f"inflows[{number}].flow_L_h", inflow.flow_L_h) for number, inflow in enumerate(exchange.inflows)),
     ]
     for name, value in named:
-        lowest = value if isinstance(value, float) else np.min(np.asarray(value))
+        lowest = value if isinstance(value, float) else np.min(np.asarray(value), initial=0.0)
         if lowest < 0.0:
             raise InvalidInputError(name, found=float(lowest), allowed="0 or more")
 

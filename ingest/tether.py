@@ -58,9 +58,8 @@ def start(command: list[str], *, log: IO[bytes]) -> tuple[subprocess.Popen[bytes
 
 
 def _end_with_tether() -> None:
-    """Ask the kernel, where it is Linux, to end this process should the tether itself be killed."""
-    if sys.platform == "linux":
-        ctypes.CDLL(None).prctl(PR_SET_PDEATHSIG, signal.SIGTERM)
+    """Ask the kernel of Linux to end this process should the tether itself be killed."""
+    ctypes.CDLL(None).prctl(PR_SET_PDEATHSIG, signal.SIGTERM)
 
 
 def _end_when_pipe_ends(process: subprocess.Popen[bytes]) -> None:
@@ -84,7 +83,7 @@ def main(command: list[str]) -> int:
         command,
         stdin=subprocess.DEVNULL,
         stdout=sys.stderr,
-        preexec_fn=_end_with_tether,
+        preexec_fn=_end_with_tether if sys.platform == "linux" else None,
     )
     sys.stdout.write(f"{process.pid}\n")
     sys.stdout.flush()

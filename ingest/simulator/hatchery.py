@@ -243,11 +243,10 @@ class _Plant:
         target = np.broadcast_to(self._set_salinity, (*hours.shape, self._set_salinity.size)).copy()
         for tank, plan in self._acclimations:
             target[..., tank] = plan.salinity(hours)
-        wander = [
-            smooth_noise(hours, seed=(self._seed, 5, tank), shortest_h=5.0, longest_h=60.0)
-            for tank in range(self._set_salinity.size)
-        ]
-        return np.asarray(target * (1.0 + BLEND_ERROR_PART * np.stack(wander, axis=-1)))
+        for tank in range(self._set_salinity.size):
+            wander = smooth_noise(hours, seed=(self._seed, 5, tank), shortest_h=5.0, longest_h=60.0)
+            target[..., tank] *= 1.0 + BLEND_ERROR_PART * wander
+        return target
 
     def _kept_degC(self, hours: FloatArray, surroundings_degC: FloatArray) -> FloatArray:
         """Return what a thermostat aims at: the set point, and above it what the walls lose."""

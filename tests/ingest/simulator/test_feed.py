@@ -1,6 +1,7 @@
 from __future__ import annotations
 
 import itertools
+import json
 
 import gsw
 import numpy as np
@@ -10,6 +11,7 @@ from ingest.payloads.decoder import Decoder
 from ingest.payloads.reason import PayloadError
 from ingest.simulator.feed import Feed, simulate
 from ingest.simulator.scenario import Scenario
+from ingest.site.loading import load_text
 from tests.ingest.simulator.conftest import ANCHOR_US, HOUR_US
 from tests.ingest.simulator.examples import one_tank
 
@@ -116,3 +118,19 @@ def test_some_payloads_of_the_demo_are_unreadable_on_purpose(demo_site, demo_sce
         except PayloadError:
             refused += 1
     assert 0 < refused < 20
+
+
+def test_a_site_with_no_tank_but_a_probe_in_its_intake():
+    site = load_text(
+        """
+site: {id: sandbank, name: Sandbank, time_zone: Europe/Lisbon}
+source_waters: [{id: intake, name: Intake}, {id: well, name: Well, salinity: 38, temperature_degC: 19}]
+sensors:
+  - {id: i-ct, source_water: intake, topic: s/i, interval_s: 60, fields: {conductivity: c, temperature: t, time: at}}
+  - {id: w-ct, source_water: well, topic: s/w, interval_s: 60, fields: {conductivity: c, temperature: t, time: at}}
+"""
+    )
+    messages = history(site, Scenario())
+    well = json.loads(next(payload for _, topic, payload in messages if topic == "s/w"))
+    assert gsw.SP_from_C(well["c"], well["t"], 0.0) == pytest.approx(38.0, abs=0.2)
+    assert len(messages) == 360

@@ -4,7 +4,8 @@ Raw conductivity of the same water follows its temperature by about 2 % a kelvin
 From pairs of readings a few hours apart, between which the temperature moved, comes the share of the expected
 change that the reported value made: 1 for raw, 0 for compensated, -1 for a value that was compensated twice. In
 a tank whose salinity is steady these shares lie close together; where salinity moves with the temperature (a
-tidal intake) they do not, and the check says that it cannot tell.
+tidal intake) they do not, and the check says that it cannot tell. A second sensor in the same water helps there:
+the ratio of the two does not depend on salinity.
 """
 
 from __future__ import annotations
@@ -130,6 +131,7 @@ def check_compensation(
     measured_at_us: ArrayLike,
     is_declared_compensated: bool,
     compensation: Compensation | None = None,
+    neighbour_mS_cm: ArrayLike | None = None,
 ) -> CompensationEvidence:
     """Return whether reported conductivities bear out how the sensor is declared to report.
 
@@ -145,6 +147,9 @@ def check_compensation(
         What the site file says.
     compensation : Compensation, optional
         The declared method; linear 1.91 %/K at 25 degC by default. The coefficient hardly matters here.
+    neighbour_mS_cm : array_like, (rows,), optional
+        Conductivity by a believed second sensor of the same water at the same times, at the water's own
+        temperature (any compensation undone). [mS/cm]
 
     Returns
     -------
@@ -154,12 +159,18 @@ def check_compensation(
     reported = np.asarray(reported_mS_cm, dtype=np.float64)
     temperature = np.asarray(temperature_degC, dtype=np.float64)
     time_us = np.asarray(measured_at_us, dtype=np.int64)
+    # what raw conductivity of this water would be, but for a constant: that of the neighbour, else steady salinity
+    beside = np.ones(reported.shape) if neighbour_mS_cm is None else np.asarray(neighbour_mS_cm, dtype=np.float64)
     with np.errstate(invalid="ignore"):
-        usable = (reported > LEAST_CONDUCTIVITY_MS_CM) & np.isfinite(temperature) & np.isfinite(reported)
-    middle_us, logarithm, warmth = _blocks(time_us[usable], np.log(reported[usable]), temperature[usable])
+        usable = (reported > LEAST_CONDUCTIVITY_MS_CM) & (beside > LEAST_CONDUCTIVITY_MS_CM)
+        usable &= np.isfinite(temperature) & np.isfinite(reported) & np.isfinite(beside)
+    logarithm = np.log(reported[usable]) - np.log(beside[usable])
+    middle_us, logarithm, warmth = _blocks(time_us[usable], logarithm, temperature[usable])
     steps = steps_of_the_water(logarithm, least_step=LEAST_STEP)
     due = np.log(method.factor(warmth))
     shares, stretches = _shares(middle_us, without_changes(logarithm, steps), without_changes(due, steps))
+    if neighbour_mS_cm is not None:
+        shares = shares + 1.0  # the neighbour follows its temperature in full
     span = float(np.ptp(np.percentile(warmth, (2.0, 98.0)))) if warmth.shape[0] else 0.0
     length_us = int(middle_us[-1] - middle_us[0]) if middle_us.shape[0] else 0
     expected = 0.0 if is_declared_compensated else 1.0

@@ -81,6 +81,29 @@ def test_water_changes_do_not_deceive():
     assert found.verdict is V.CONSISTENT
 
 
+@pytest.mark.parametrize("times", [0, 1, 2])
+@pytest.mark.parametrize("is_declared", [True, False])
+def test_under_a_tide_a_second_sensor_tells(times, is_declared):
+    """Salinity swings with the tide and with temperature; at 25 degC a wrong declaration is hardly an error yet."""
+    measured_at_us, temperature, _ = tank(level=25.0)
+    tide = np.sin(2 * np.pi * measured_at_us / (12.42 * 60 * MINUTE_US))
+    temperature = temperature - 0.5 * tide
+    raw = gsw.C_from_SP(20.0 + 9.0 * tide, temperature, 0.0)
+    rng = np.random.default_rng(2)
+    reported, neighbour = raw * (1 + rng.normal(0, 0.001, raw.shape)), 1.02 * raw
+    for _ in range(times):
+        reported = compensated(reported, temperature)
+    options = {
+        "temperature_degC": temperature,
+        "measured_at_us": measured_at_us,
+        "is_declared_compensated": is_declared,
+    }
+    assert check_compensation(reported, **options).verdict is V.UNDECIDED
+    found = check_compensation(reported, **options, neighbour_mS_cm=neighbour)
+    assert found.share_followed == pytest.approx(1.0 - times, abs=0.15)
+    assert found.contradicts_declaration is (times != (1 if is_declared else 0))
+
+
 def test_a_steady_temperature_tells_nothing():
     measured_at_us, temperature, raw = tank(swing_K=0.05)
     found = check_compensation(

@@ -8,8 +8,6 @@ from typing import TYPE_CHECKING
 import msgspec
 import numpy as np
 
-from analysis.water.ionic_table import TABLE_VERSION, IonicTable, tabulate
-from analysis.water.ionic_water import IonicWater
 from analysis.water.properties import Seawater, WaterKind
 from analysis.water.sodium_chloride_water import SodiumChlorideWater
 from ingest.site.waters import SEAWATER, SODIUM_CHLORIDE
@@ -44,19 +42,25 @@ def kinds_of(site: Site, *, tables: Path) -> Mapping[str, WaterKind]:
         kinds[SODIUM_CHLORIDE] = SodiumChlorideWater()
     for analysis in site.analyses:
         if analysis.id in named:
-            kinds[analysis.id] = IonicWater(_table(analysis, tables)).fitted_to(analysis.ion_analysis())
+            kinds[analysis.id] = _analysed(analysis, tables)
     return kinds
 
 
-def _table(analysis: Analysis, folder: Path) -> IonicTable:
+def _analysed(analysis: Analysis, folder: Path) -> WaterKind:
+    # Opened only where it is needed: the interpolation behind it takes a second to load, and most sites have no such water.
+    from analysis.water.ionic_table import TABLE_VERSION, IonicTable, tabulate
+    from analysis.water.ionic_water import IonicWater
+
+    description = analysis.ion_analysis()
     content = msgspec.json.encode([TABLE_VERSION, analysis.model_dump(mode="json")], order="deterministic")
     path = folder / f"{analysis.id}-{hashlib.sha256(content).hexdigest()[:16]}.npz"
     if path.exists():
         with np.load(path, allow_pickle=False) as stored:
-            return IonicTable.from_arrays(analysis.id, dict(stored))
-    table = tabulate(analysis.ion_analysis())
-    folder.mkdir(parents=True, exist_ok=True)
-    fresh = path.with_suffix(".new.npz")
-    np.savez(fresh, **table.to_arrays())  # type: ignore[arg-type]
-    fresh.replace(path)
-    return table
+            table = IonicTable.from_arrays(analysis.id, dict(stored))
+    else:
+        table = tabulate(description)
+        folder.mkdir(parents=True, exist_ok=True)
+        fresh = path.with_suffix(".new.npz")
+        np.savez(fresh, **table.to_arrays())  # type: ignore[arg-type]
+        fresh.replace(path)
+    return IonicWater(table).fitted_to(description)

@@ -24,6 +24,8 @@ NARROW = 560
 HEAD = 26
 """Room above each panel for its name. [px]"""
 FOOT = 26
+LIMIT_REACH = 0.6
+"""How far beyond what was measured an axis reaches for a limit or a projection, as a part of its height."""
 PENNANTS = 18.0
 """Room for the pennants above the first panel. [px]"""
 
@@ -190,15 +192,15 @@ def _range(panel: Panel) -> tuple[float, float]:
     pieces += [other.values[np.isfinite(other.values)] for other, _, _ in panel.others]
     known = [float(e) for piece in pieces if len(piece) for e in (piece.min(), piece.max())]
     known += list(panel.band or ())
-    if panel.projection is not None:
-        known += [float(v) for v in panel.projection[1] if math.isfinite(v)]
     if not known:
         return 0.0, panel.least_span
     low, high = min(known), max(known)
-    reach = max(high - low, panel.least_span) * 1.1
-    for limit in panel.limits:
-        if low - reach <= limit.value <= high + reach:
-            low, high = min(low, limit.value), max(high, limit.value)
+    reach = LIMIT_REACH * max(high - low, panel.least_span)
+    floor, ceiling = low - reach, high + reach
+    ahead = [] if panel.projection is None else [float(v) for v in panel.projection[1] if math.isfinite(v)]
+    for value in (*ahead, *(limit.value for limit in panel.limits)):
+        if floor <= value <= ceiling or value in ahead:
+            low, high = min(low, max(value, floor)), max(high, min(value, ceiling))
     spare = max((panel.least_span - (high - low)) / 2, (high - low) * 0.07)
     return low - spare, high + spare
 
@@ -230,7 +232,7 @@ def _band(frame: _Frame, panel: Panel, scale: _Scale) -> str:
         return ""
     top, bottom = float(scale.y(panel.band[1])), float(scale.y(panel.band[0]))
     words = ""
-    if panel.band_text and bottom - top > 16:
+    if panel.band_text and bottom - top > 20:
         words = (
             f'<text x="{LEFT + 7}" y="{top + 14:.1f}" style="fill:var(--water)">{html.escape(panel.band_text)}</text>'
         )
@@ -267,7 +269,7 @@ def _limits(frame: _Frame, panel: Panel, scale: _Scale) -> str:
         out += (
             f'<path d="M{LEFT} {y:.1f}H{frame.right:.1f}" stroke="var(--blood)" stroke-width="1.3"'
             ' stroke-dasharray="1.5 4" stroke-linecap="round"/>'
-            f'<text x="{LEFT + 7}" y="{y + (13 if limit.is_lower else -5):.1f}" style="fill:var(--blood)">'
+            f'<text x="{frame.right - 7:.1f}" y="{y + (13 if limit.is_lower else -5):.1f}" text-anchor="end" style="fill:var(--blood)">'
             f"{_limit_words(frame, limit)}</text>"
         )
     return out
@@ -352,7 +354,7 @@ def _last(frame: _Frame, panel: Panel, scale: _Scale) -> str:
         return ""
     known = panel.line.values[np.isfinite(panel.line.values)]
     y = float(scale.y(known[-1])) if len(known) else scale.top + scale.height / 2
-    y = min(max(y, scale.top + 8), scale.bottom - 4)
+    y = min(max(y, scale.top + 8), scale.bottom - (20 if panel.last_note else 4))
     x = frame.right + (9 if frame.width >= NARROW else 6)
     note = f'<text x="{x:.1f}" y="{y + 19:.1f}">{html.escape(panel.last_note)}</text>' if panel.last_note else ""
     style = "fill:var(--ink);font:600 15px var(--serif)"

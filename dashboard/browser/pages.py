@@ -58,7 +58,16 @@ def _chart(access: Access, found: TankSight, snapshot: Snapshot, visit: Visit, s
         events = access.alarm_events(subject=f"tank/{found.id}", from_us=from_us, to_us=to_us)
     except MissingStoreError:
         return None
-    return tank_chart(found, snapshot, visit, stretch=stretch, histories=histories, stress=stress, events=events)
+    return tank_chart(
+        found,
+        snapshot,
+        visit,
+        stretch=stretch,
+        histories=histories,
+        stress=stress,
+        events=events,
+        trend=access.trend(found, "salinity"),
+    )
 
 
 def _choose_form(done: Mapping[str, str], _snapshot: Snapshot, _visit: Visit) -> dict[str, str] | None:

@@ -14,7 +14,7 @@ from starlette.middleware.trustedhost import TrustedHostMiddleware
 
 from analysis.errors import EuryhaleError
 from dashboard.browser import house
-from dashboard.browser.routes import health, ways
+from dashboard.browser.routes import export, health, ways
 from dashboard.browser.theme import streamlit_config
 from ingest.clock import SystemClock
 
@@ -43,7 +43,7 @@ def options(*, host: str, port: int) -> dict[str, Any]:
 def board(allowed_hosts: tuple[str, ...]) -> st.App:
     """Return the board as an ASGI application; a request under a host name that is not allowed is refused before anything else."""
     guard = Middleware(TrustedHostMiddleware, allowed_hosts=list(allowed_hosts), www_redirect=False)
-    return st.App(SCRIPT, routes=[*health.ROUTES, *ways.ROUTES], middleware=[guard])
+    return st.App(SCRIPT, routes=[*health.ROUTES, *ways.ROUTES, *export.ROUTES], middleware=[guard])
 
 
 def main(arguments: list[str] | None = None) -> int:

@@ -97,6 +97,10 @@ class Sheet {
     if (!target || event.metaKey || event.ctrlKey || event.shiftKey) return;
     event.preventDefault();
     if (target.hasAttribute("disabled")) return;
+    if (target.dataset.do === "picture") {
+      takePicture(this.root, target.dataset.name);
+      return;
+    }
     if (target.dataset.once !== undefined) {
       // Pressed is pressed: it can not be pressed twice while the answer is on its way.
       target.setAttribute("disabled", "");
@@ -203,6 +207,35 @@ function uuid() {
   bytes[8] = (bytes[8] & 0x3f) | 0x80;
   const hex = [...bytes].map((byte) => byte.toString(16).padStart(2, "0")).join("");
   return `${hex.slice(0, 8)}-${hex.slice(8, 12)}-${hex.slice(12, 16)}-${hex.slice(16, 20)}-${hex.slice(20)}`;
+}
+
+// Save the chart as a PNG of twice its size. Colours are custom properties of the sheet: an image of its own does not know them.
+function takePicture(root, name) {
+  const svg = root.querySelector("svg.plot");
+  if (!svg) return;
+  const style = getComputedStyle(root);
+  const colour = (_, variable) => style.getPropertyValue(variable).trim().replaceAll('"', "'");
+  const { width, height } = svg.viewBox.baseVal;
+  const copy = svg.cloneNode(true);
+  for (const own of copy.querySelectorAll(".hair,.brush")) own.remove();
+  copy.setAttribute("xmlns", "http://www.w3.org/2000/svg");
+  copy.setAttribute("width", width * 2);
+  copy.setAttribute("height", height * 2);
+  const rules = `text{font-family:${style.getPropertyValue("--sans")};font-size:11px;fill:var(--ink2)}`;
+  copy.insertAdjacentHTML("afterbegin", `<style>${rules}</style><rect width="100%" height="100%" fill="var(--sheet)"/>`);
+  const text = new XMLSerializer().serializeToString(copy).replace(/var\((--[a-z0-9]+)\)/g, colour);
+  const image = new Image();
+  image.onload = () => {
+    const canvas = document.createElement("canvas");
+    canvas.width = width * 2;
+    canvas.height = height * 2;
+    canvas.getContext("2d").drawImage(image, 0, 0);
+    const link = document.createElement("a");
+    link.href = canvas.toDataURL("image/png");
+    link.download = name;
+    link.click();
+  };
+  image.src = `data:image/svg+xml;charset=utf-8,${encodeURIComponent(text)}`;
 }
 
 // --- reading values off a chart, and choosing a stretch of time -----------------------------------------------------------------

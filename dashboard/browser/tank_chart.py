@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from dashboard.browser.charts import AlarmMark, Chart, Limit, Line, Panel
+from dashboard.browser.trend import STANDING
 from ingest.words import numbers
 from ingest.words.alarms import priority_letter, priority_word, stress_band
 
@@ -18,6 +19,7 @@ if TYPE_CHECKING:
 
     from analysis.arrays import FloatArray, IntArray
     from dashboard.browser.sights import SensorSight, Snapshot, SpeciesLimit, TankSight
+    from dashboard.browser.trend import Trend
     from dashboard.browser.visit import Visit
     from ingest.store.ledger import Event
     from ingest.store.queries import History, StressHistory
@@ -38,6 +40,10 @@ STEPS_IN_SPAN = 800
 SHORTEST_SPAN_S = 60.0
 LEAST_SPANS = {"salinity": 1.0, "temperature": 1.0, "osmolality": 40.0}
 SILENT_INTERVALS = 3.0
+SHORTEST_PROJECTION, LONGEST_PROJECTION = 0.02, 0.2
+"""Parts of the stretch."""
+FARTHEST_S = 3 * HOUR_S
+"""No straight line is drawn further ahead: water seldom keeps its way for longer."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -87,13 +93,18 @@ def tank_chart(
     histories: Sequence[tuple[SensorSight, History]],
     stress: StressHistory | None,
     events: Sequence[Event],
+    trend: Trend = STANDING,
 ) -> Chart:
-    """Return the chart of a tank; the first of *histories* is the probe that stands for the tank, the others are finer lines."""
+    """Return the chart of a tank; the first of *histories* is the probe that stands for the tank, the others are finer lines.
+
+    Where the water moves the axis reaches beyond now, and *trend* is drawn dashed up to its next limit.
+    """
     main = histories[0][1] if histories else None
+    ahead = projection(tank, stretch, trend)
     panels = []
     if main is not None:
         panels = [
-            _salinity(tank, snapshot, visit, histories, stretch),
+            replace(_salinity(tank, snapshot, visit, histories, stretch), projection=ahead),
             _temperature(tank, visit, histories, stretch),
             _osmolality(tank, visit, histories, stress),
         ]
@@ -101,7 +112,7 @@ def tank_chart(
         panels.append(_stress(tank, visit, stress))
     return Chart(
         from_s=stretch.from_s,
-        to_s=stretch.to_s,
+        to_s=stretch.to_s if ahead is None else max(stretch.to_s, float(ahead[0][-1])),
         panels=tuple(panels),
         alarms=_marks(tank, visit, events),
         zone=snapshot.zone,
@@ -110,6 +121,21 @@ def tank_chart(
         now_s=snapshot.now_us / 1e6,
         id=f"chart-{tank.id}",
     )
+
+
+def projection(tank: TankSight, stretch: Stretch, trend: Trend) -> tuple[FloatArray, FloatArray] | None:
+    """Return (times_s, values) of the straight way on, up to the next limit; None where there is none or it is too short to be seen."""
+    shown = tank.shown
+    if not stretch.is_live or shown is None or shown.measured_at_us is None or not math.isfinite(trend.per_h):
+        return None
+    span = stretch.to_s - stretch.from_s
+    reach_s = trend.likely_min * 60 if math.isfinite(trend.likely_min) else LONGEST_PROJECTION * span
+    reach_s = min(reach_s, LONGEST_PROJECTION * span, FARTHEST_S)
+    if reach_s < SHORTEST_PROJECTION * span or not math.isfinite(shown.salinity):
+        return None
+    begin = shown.measured_at_us / 1e6
+    values = [shown.salinity, shown.salinity + trend.per_h * reach_s / HOUR_S]
+    return np.array([begin, begin + reach_s]), np.array(values)
 
 
 def _line(sensor: SensorSight, history: History, mean: FloatArray, low: FloatArray, high: FloatArray) -> Line:

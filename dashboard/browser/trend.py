@@ -16,8 +16,8 @@ if TYPE_CHECKING:
 LOOK_BACK_US = 60 * 60_000_000
 RESOLUTION = {"salinity": 0.02, "temperature": 0.05}
 """Steps of the values as the board trusts them. Common practice for field probes."""
-LONGEST_MIN = 24 * 60.0
-"""Beyond a day a straight line is no forecast."""
+LONGEST_MIN = 6 * 60.0
+"""Beyond half a tide a straight line is no forecast."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -20,6 +20,9 @@ QUANTITY_OF_CODE = {
     "off_plan": "salinity",
 }
 
+FAST_PER_H = 12.0
+"""From here on a rate is said for ten minutes: nobody pictures 60 an hour."""
+
 
 @dataclass(frozen=True, slots=True)
 class AlarmFacts:
@@ -90,8 +93,12 @@ def alarm_words(facts: AlarmFacts, *, now_us: int = 0, zone: tzinfo = UTC, langu
         title=title,
         what=fullest(whats, values),
         do=fullest(dos, values),
-        left=_left(facts, language),
+        left=_capitalised(_left(facts, language)),
     )
+
+
+def _capitalised(text: str) -> str:
+    return text[:1].upper() + text[1:]
 
 
 def priority_word(priority: str, *, language: Language = ENGLISH) -> str:
@@ -151,10 +158,13 @@ def _rate(facts: AlarmFacts, kind: str, language: Language) -> dict[str, str]:
     falls = facts.rate_per_h < 0
     if (facts.code.endswith("_low") and not falls) or (facts.code.endswith("_high") and falls):
         return {}
-    text = _with_unit(abs(facts.rate_per_h), kind, language, is_set=False)
-    if not text.strip("0. °C"):
+    is_fast = abs(facts.rate_per_h) >= FAST_PER_H
+    key, amount = ("per_ten_minutes", facts.rate_per_h / 6) if is_fast else ("per_hour", facts.rate_per_h)
+    text = _with_unit(abs(amount), kind, language, is_set=False)
+    if not any(digit in text for digit in "123456789"):
         return {}
-    return {"rate": text, "falling" if falls else "rising": text}
+    rate = str(language.TIMES[key]).format(n=text)
+    return {"rate": rate, "falling" if falls else "rising": rate}
 
 
 def _with_unit(value: float, kind: str, language: Language, *, is_set: bool) -> str:
@@ -170,4 +180,4 @@ def _left(facts: AlarmFacts, language: Language) -> str:
         return left
     kind = facts.quantity or QUANTITY_OF_CODE.get(facts.code, "salinity")
     limit = _with_unit(facts.next_limit, kind, language, is_set=True)
-    return str(language.TIMES["until"]).format(left=left, limit=limit)
+    return str(language.TIMES["until"]).format(left=left, quantity=language.QUANTITIES[kind], limit=limit)

@@ -58,7 +58,9 @@ TIMES: Final = {
     "between": "about {best} ({low} to {high})",
     "about": "about {best}",
     "less_than_minute": "less than a minute",
-    "until": "{left} until {limit}",
+    "until": "{left} until {quantity} {limit}",
+    "per_hour": "{n} an hour",
+    "per_ten_minutes": "{n} in 10 min",
 }
 
 PRIORITIES: Final = {
@@ -74,8 +76,8 @@ ALARMS: Final[dict[str, tuple[str, tuple[str, ...], tuple[str, ...]]]] = {
     "salinity_low": (
         "too fresh",
         (
-            "Turning fresh: {value}, set {set_point}, falling {rate} an hour.",
-            "Turning fresh: {value}, limit {limit}, falling {rate} an hour.",
+            "Turning fresh: {value}, set {set_point}, falling {rate}.",
+            "Turning fresh: {value}, limit {limit}, falling {rate}.",
             "Too fresh: {value}, set {set_point}.",
             "Too fresh: {value}, limit {limit}.",
             "The water is too fresh.",
@@ -85,8 +87,8 @@ ALARMS: Final[dict[str, tuple[str, tuple[str, ...], tuple[str, ...]]]] = {
     "salinity_high": (
         "too salty",
         (
-            "Turning salty: {value}, set {set_point}, rising {rate} an hour.",
-            "Turning salty: {value}, limit {limit}, rising {rate} an hour.",
+            "Turning salty: {value}, set {set_point}, rising {rate}.",
+            "Turning salty: {value}, limit {limit}, rising {rate}.",
             "Too salty: {value}, set {set_point}.",
             "Too salty: {value}, limit {limit}.",
             "The water is too salty.",
@@ -96,7 +98,7 @@ ALARMS: Final[dict[str, tuple[str, tuple[str, ...], tuple[str, ...]]]] = {
     "temperature_low": (
         "too cold",
         (
-            "Cooling: {value}, set {set_point}, falling {rate} an hour.",
+            "Cooling: {value}, set {set_point}, falling {rate}.",
             "Too cold: {value}, set {set_point}.",
             "Too cold: {value}, limit {limit}.",
             "The water is too cold.",
@@ -106,7 +108,7 @@ ALARMS: Final[dict[str, tuple[str, tuple[str, ...], tuple[str, ...]]]] = {
     "temperature_high": (
         "too warm",
         (
-            "Warming: {value}, set {set_point}, rising {rate} an hour.",
+            "Warming: {value}, set {set_point}, rising {rate}.",
             "Too warm: {value}, set {set_point}.",
             "Too warm: {value}, limit {limit}.",
             "The water is too warm.",
@@ -116,9 +118,9 @@ ALARMS: Final[dict[str, tuple[str, tuple[str, ...], tuple[str, ...]]]] = {
     "changing_too_fast": (
         "changing too fast",
         (
-            "Salinity is falling {falling} an hour; {limit} an hour is allowed.",
-            "Salinity is rising {rising} an hour; {limit} an hour is allowed.",
-            "The water is changing too fast: {rate} an hour.",
+            "Salinity is falling {falling}; {limit} an hour is allowed.",
+            "Salinity is rising {rising}; {limit} an hour is allowed.",
+            "The water is changing too fast: {rate}.",
             "The water is changing too fast.",
         ),
         ("Stop the exchange: close the inflow. All aeration on.",),
@@ -497,6 +499,9 @@ BOARD: Final = {
     "osmolality_unit": "mOsm/kg, freezing-point basis",
     "chart_of": "History of {tank}: salinity, temperature, osmolality and stress on one time axis",
     "chart_hint": "Point at the chart to read it off; drag across it to look closer; arrow keys move the hair.",
+    "take_data": "data (CSV)",
+    "take_picture": "picture (PNG)",
+    "then": "Then:",
     "time_span": "Stretch of time",
     "span_hour": "1 h",
     "span_six_hours": "6 h",

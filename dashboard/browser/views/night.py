@@ -32,7 +32,7 @@ def row(alarm: AlarmSight, snapshot: Snapshot, visit: Visit) -> str:
     kind, _, tank = alarm.subject.partition("/")
     place = link("tank", name, tank=tank) if kind == "tank" else name
     what = escape(words.what[:1].lower() + words.what[1:])
-    left = f" {escape(words.left[:1].upper() + words.left[1:])}." if words.left else ""
+    left = f" {escape(words.left)}." if words.left else ""
     waiting = " unacked" if alarm.is_waiting else ""
     return (
         f'<article class="nightrow {alarm.priority}{waiting}" data-k="{escape(alarm.key)}">'

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from html import escape
 
+from analysis.alarm.rationale import RATIONALE
 from dashboard.browser import glyphs
 from dashboard.browser.charts import Chart, multi_panel_chart
 from dashboard.browser.sights import Snapshot, TankSight
@@ -27,7 +28,7 @@ def page(snapshot: Snapshot, visit: Visit, *, tank: TankSight | None, chart: Cha
         return framed(snapshot, visit, title=visit.language.text("tank"), place=snapshot.site_name, body=body)
     body = (
         _action(tank, snapshot, visit)
-        + f'<div class="two" data-k="two"><section class="panel">{_history(visit, chart, stretch, snapshot)}</section>'
+        + f'<div class="two" data-k="two"><section class="panel">{_history(tank, visit, chart, stretch, snapshot)}</section>'
         + f'<div class="side">{_feel(tank, visit)}{_why(tank, visit)}{_believe(tank, snapshot, visit)}</div></div>'
     )
     return framed(snapshot, visit, title=tank.name, place=_place(tank, visit), body=body)
@@ -60,12 +61,21 @@ def _action(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
         lines.append(
             f'<div data-k="{escape(alarm.key)}">{say(alarm, snapshot, visit, size=26)}'
             f'<div class="verbs">{going(alarm, snapshot, visit, is_main=i == 0)}'
-            f'<span class="quiet">{who_has_it(alarm, snapshot, visit)}</span></div></div>'
+            f'<span class="quiet">{who_has_it(alarm, snapshot, visit)}</span></div>{_then(alarm.condition, visit)}</div>'
         )
     return f'<div class="action" data-k="action">{"".join(lines)}</div>'
 
 
-def _history(visit: Visit, chart: Chart | None, stretch: Stretch, snapshot: Snapshot) -> str:
+def _then(condition: str, visit: Visit) -> str:
+    """Return what to do after the first action, and what happens if nobody does."""
+    record = RATIONALE.get(condition)  # type: ignore[call-overload]
+    if record is None:
+        return ""
+    steps = " ".join(escape(step.sentence) for step in record.steps[1:])
+    return f'<p class="then"><b>{visit.text("then")}</b> {steps} <span class="quiet">{escape(record.consequence.sentence)}</span></p>'
+
+
+def _history(tank: TankSight, visit: Visit, chart: Chart | None, stretch: Stretch, snapshot: Snapshot) -> str:
     buttons = "".join(
         f'<button data-do="span" data-span="{name}" aria-pressed="{str(stretch.name == name).lower()}">'
         f"{visit.text(f'span_{name}')}</button>"
@@ -85,7 +95,20 @@ def _history(visit: Visit, chart: Chart | None, stretch: Stretch, snapshot: Snap
         return f'{bar}<div data-measure></div><p class="quiet" style="padding:40px 0">{visit.text("no_history")}</p>'
     drawn = multi_panel_chart(chart, width=max(300, visit.width))
     hint = visit.text("chart_hint")
-    return f'{bar}<div class="chart" data-measure tabindex="0" aria-label="{hint}">{drawn}</div><p class="source">{hint}</p>'
+    return (
+        f'{bar}<div class="chart" data-measure tabindex="0" aria-label="{hint}">{drawn}</div>'
+        f'<p class="source">{hint} <span class="take">{_take(tank, visit, stretch)}</span></p>'
+    )
+
+
+def _take(tank: TankSight, visit: Visit, stretch: Stretch) -> str:
+    """Return the ways to take the picture and the data along."""
+    name = escape(f"{tank.id}-{round(stretch.from_s)}-{round(stretch.to_s)}")
+    query = f"id={escape(tank.id)}&amp;from={stretch.from_s:.0f}&amp;to={stretch.to_s:.0f}"
+    return (
+        f'<a class="word" href="./export/tank.csv?{query}" download="{name}.csv">{visit.text("take_data")}</a>'
+        f'<a class="word" href="#" data-do="picture" data-name="{name}.png">{visit.text("take_picture")}</a>'
+    )
 
 
 def _from_to(stretch: Stretch, snapshot: Snapshot, visit: Visit) -> str:

@@ -122,11 +122,16 @@ def test_alarms_cross_all_panels_with_their_pennant():
 
 
 def test_a_projection_is_dashed_and_inside_the_axis():
-    panel = Panel("Salinity", "salinity", a_line(), projection=(np.array([80_000.0, DAY]), np.array([31.0, 22.0])))
+    panel = Panel("Salinity", "salinity", a_line(), projection=(np.array([80_000.0, DAY]), np.array([31.0, 30.2])))
     root = drawn(a_chart(panel, now_s=80_000.0))
     node = root.find(".//polyline[@class='projection']")
     assert node.attrib["stroke-dasharray"]
-    assert float(root.find(".//g[@class='panel-plot']").attrib["data-low"]) < 22
+    assert float(root.find(".//g[@class='panel-plot']").attrib["data-low"]) < 30.2
+
+
+def test_a_steep_projection_does_not_flatten_what_was_measured():
+    panel = Panel("Salinity", "salinity", a_line(), projection=(np.array([80_000.0, DAY]), np.array([31.0, 2.0])))
+    assert float(drawn(a_chart(panel)).find(".//g[@class='panel-plot']").attrib["data-low"]) > 28
 
 
 @pytest.mark.parametrize("values", [[], [np.nan, np.nan], [31.0]])

@@ -37,8 +37,8 @@ def test_a_trend_without_a_limit_ahead_has_no_end():
     assert math.isnan(trend.likely_min)
 
 
-def test_beyond_a_day_nothing_is_foretold():
-    trend = trend_of(*readings(-0.2, minutes=60), kind="salinity", limits=(5.0,))
+def test_beyond_half_a_tide_nothing_is_foretold():
+    trend = trend_of(*readings(-2.0, minutes=60), kind="salinity", limits=(5.0,))
     assert math.isnan(trend.likely_min)
 
 

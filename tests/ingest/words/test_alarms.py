@@ -28,7 +28,17 @@ def test_a_falling_salinity_says_how_fast_and_what_to_do_first():
     )
     assert words.what == "Turning fresh: 27.4, set 31 ± 2, falling 3.6 an hour."
     assert words.do.startswith("Close the fresh-water inflow.")
-    assert words.left == "about 11 min (9 to 14 min)"
+    assert words.left == "About 11 min (9 to 14 min)"
+
+
+def test_time_left_names_the_limit_it_counts_to():
+    words = alarm_words(AlarmFacts("salinity_low", time_left_min=11, next_limit=25))
+    assert words.left == "About 11 min until salinity 25"
+
+
+def test_a_torrent_is_told_in_ten_minutes():
+    words = alarm_words(AlarmFacts("salinity_low", value=25.4, set_point=31, band=2, rate_per_h=-62.5))
+    assert words.what == "Turning fresh: 25.4, set 31 ± 2, falling 10.4 in 10 min."
 
 
 def test_a_tank_that_recovers_is_not_said_to_turn_fresh():

@@ -74,27 +74,29 @@ class Thresholds:
             If the two lengths differ or a neighbour is the sensor itself or none at all.
         """
         row = np.stack([_per_variable(limits, name, side) for name, side in _ROW_COLUMNS])
+        beside = _neighbours(neighbour, len(limits))
+        bucket_s = _in_step(np.array([one.bucket_s for one in limits]), beside)
         return cls(
             row=row,
             in_air_mS_cm=np.array([one.in_air_mS_cm for one in limits]),
             climatology=_climatology(limits),
             gap_us=_microseconds([one.gap_s for one in limits]),
-            bucket_us=_microseconds([one.bucket_s for one in limits]),
+            bucket_us=_microseconds(bucket_s),
             rate_deviations=np.array([one.rate_deviations for one in limits]),
             multi_variate_deviations=np.array([one.multi_variate_deviations for one in limits]),
             rate_floor=_per_variable(limits, "rate_floor"),
-            rate_buckets=_buckets(limits, np.array([[one.rate_h for one in limits]]))[0],
+            rate_buckets=_buckets(bucket_s, np.array([[one.rate_h for one in limits]]))[0],
             flat_tolerance=_per_variable(limits, "flat_tolerance"),
-            flat_suspect_buckets=_buckets(limits, _per_variable(limits, "flat_suspect_h")),
-            flat_fail_buckets=_buckets(limits, _per_variable(limits, "flat_fail_h")),
+            flat_suspect_buckets=_buckets(bucket_s, _per_variable(limits, "flat_suspect_h")),
+            flat_fail_buckets=_buckets(bucket_s, _per_variable(limits, "flat_fail_h")),
             attenuated_suspect=_per_variable(limits, "attenuated_suspect"),
             attenuated_fail=_per_variable(limits, "attenuated_fail"),
-            attenuated_buckets=_buckets(limits, np.array([[one.attenuated_h for one in limits]]))[0],
+            attenuated_buckets=_buckets(bucket_s, np.array([[one.attenuated_h for one in limits]]))[0],
             is_still=np.array([one.is_still for one in limits], dtype=np.bool_),
             moved=_per_variable(limits, "moved"),
             noise_share=np.array([one.noise_share for one in limits]),
-            noise_buckets=_buckets(limits, np.array([[one.noise_h for one in limits]]))[0],
-            neighbour=_neighbours(neighbour, len(limits)),
+            noise_buckets=_buckets(bucket_s, np.array([[one.noise_h for one in limits]]))[0],
+            neighbour=beside,
             neighbour_difference=_per_variable(limits, "neighbour_difference"),
         )
 
@@ -118,14 +120,27 @@ def _per_variable(limits: Sequence[SensorLimits], name: str, side: int | None = 
     return np.ascontiguousarray(np.array(columns, dtype=np.float64).reshape(len(limits), 3).T)
 
 
-def _microseconds(seconds: Sequence[float]) -> IntArray:
+def _microseconds(seconds: Sequence[float] | FloatArray) -> IntArray:
     return np.rint(np.array(seconds, dtype=np.float64) * MICROSECONDS_PER_SECOND).astype(np.int64)
 
 
-def _buckets(limits: Sequence[SensorLimits], hours: FloatArray) -> IntArray:
+def _in_step(bucket_s: FloatArray, neighbour: IntArray) -> FloatArray:
+    """Return bucket widths, those of neighbours made equal: their buckets are compared by number."""
+    widths = bucket_s.copy()
+    has_one = np.flatnonzero(neighbour != NO_NEIGHBOUR)
+    other = neighbour[has_one]
+    for _ in range(has_one.shape[0]):
+        before = widths.copy()
+        np.maximum.at(widths, has_one, before[other])
+        np.maximum.at(widths, other, before[has_one])
+        if np.array_equal(before, widths):
+            break
+    return widths
+
+
+def _buckets(bucket_s: FloatArray, hours: FloatArray) -> IntArray:
     """Return how many whole buckets cover *hours* (variables, sensors): at least 1, at most the memory."""
-    width_h = np.array([one.bucket_s for one in limits]) / 3600.0
-    covering = np.ceil(np.nan_to_num(hours, nan=MEMORY_BUCKETS) / width_h - 1e-9)
+    covering = np.ceil(np.nan_to_num(hours, nan=MEMORY_BUCKETS) * 3600.0 / bucket_s - 1e-9)
     return np.clip(covering, 1, MEMORY_BUCKETS).astype(np.int64)
 
 

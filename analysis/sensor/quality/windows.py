@@ -73,17 +73,23 @@ class Line:
         """Return sums over the *width* buckets before each of *at*."""
         return np.asarray(self.sums[at] - self.sums[at - width])
 
-    def lowest(self, at: IntArray, width: int, variable: int) -> IntArray:
-        """Return the lowest value in the *width* buckets before each of *at*."""
-        return np.asarray(self.tally[at[:, None] + np.arange(-width, 0), LOWEST, variable].min(axis=1))
+    def before(self, at: IntArray) -> Before:
+        """Return lowest, highest and filled buckets over every width of window before each of *at*."""
+        held = self.tally[at[:, None] - np.arange(1, MEMORY_BUCKETS + 1)]
+        return Before(
+            lowest=np.minimum.accumulate(held[:, :, LOWEST], axis=1),
+            highest=np.maximum.accumulate(held[:, :, HIGHEST], axis=1),
+            filled=np.cumsum(held[:, :, COUNT] > 0, axis=1),
+        )
 
-    def highest(self, at: IntArray, width: int, variable: int) -> IntArray:
-        """Return the highest value in the *width* buckets before each of *at*."""
-        return np.asarray(self.tally[at[:, None] + np.arange(-width, 0), HIGHEST, variable].max(axis=1))
 
-    def filled(self, at: IntArray, width: int) -> IntArray:
-        """Return how many of the *width* buckets before each of *at* hold readings, (at, 3)."""
-        return np.asarray((self.tally[at[:, None] + np.arange(-width, 0), COUNT] > 0).sum(axis=1))
+@dataclass(slots=True)
+class Before:
+    """Windows that end before a bucket: (buckets, widths, 3), the width of 1 first."""
+
+    lowest: IntArray
+    highest: IntArray
+    filled: IntArray
 
 
 def line(bucket: IntArray, tally: IntArray) -> tuple[Line, IntArray]:
@@ -138,8 +144,9 @@ def verdicts(
     out = np.zeros((count, VERDICTS, VARIABLES))
     _rate_limits(out, row, at, sensor, thresholds)
     _noise_before(out, row, at, int(thresholds.noise_buckets[sensor]))
-    _flat_windows(out, row, at, sensor, thresholds)
-    out[:, ATTENUATED_LEVEL] = _attenuated(row, at, sensor, thresholds)
+    before = row.before(at)
+    _flat_windows(out, before, sensor, thresholds)
+    out[:, ATTENUATED_LEVEL] = _attenuated(row, before, at, sensor, thresholds)
     if thresholds.is_still[sensor]:
         _hold_back_still_water(out, row, at, numbers, sensor, thresholds, water_changed_us, neighbour_tally)
     if thresholds.neighbour[sensor] != NO_NEIGHBOUR:
@@ -169,21 +176,19 @@ def _noise_before(out: FloatArray, row: Line, at: IntArray, width: int) -> None:
     out[:, NOISY_BEFORE], out[:, COMPARED_BEFORE] = sums[:, NOISY], sums[:, COMPARED]
 
 
-def _flat_windows(out: FloatArray, row: Line, at: IntArray, sensor: int, thresholds: Thresholds) -> None:
-    out[:, [FLAT_SUSPECT_LOW, FLAT_FAIL_LOW]] = -BEYOND
-    out[:, [FLAT_SUSPECT_HIGH, FLAT_FAIL_HIGH]] = BEYOND
+def _flat_windows(out: FloatArray, before: Before, sensor: int, thresholds: Thresholds) -> None:
     windows = (
         (thresholds.flat_suspect_buckets, FLAT_SUSPECT_LOW, FLAT_SUSPECT_HIGH),
         (thresholds.flat_fail_buckets, FLAT_FAIL_LOW, FLAT_FAIL_HIGH),
     )
-    for variable in Variable:
-        for widths, low, high in windows:
-            width = int(widths[variable, sensor])
-            covered = row.filled(at, width)[:, variable] == width
-            out[covered, low, variable] = row.lowest(at, width, variable)[covered]
-            out[covered, high, variable] = row.highest(at, width, variable)[covered]
-            if low == FLAT_SUSPECT_LOW:
-                out[:, FLAT_JUDGED, variable] = covered & np.isfinite(thresholds.flat_tolerance[variable, sensor])
+    each = np.arange(VARIABLES)
+    for widths, low, high in windows:
+        width = widths[:, sensor]
+        covered = before.filled[:, width - 1, each] == width
+        out[:, low] = np.where(covered, before.lowest[:, width - 1, each], -BEYOND)
+        out[:, high] = np.where(covered, before.highest[:, width - 1, each], BEYOND)
+        if low == FLAT_SUSPECT_LOW:
+            out[:, FLAT_JUDGED] = covered & np.isfinite(thresholds.flat_tolerance[:, sensor])
 
 
 def shrunk(level: FloatArray) -> FloatArray:
@@ -192,12 +197,12 @@ def shrunk(level: FloatArray) -> FloatArray:
     return np.where(FULL_SIZE > 0.0, share, 1.0)
 
 
-def _attenuated(row: Line, at: IntArray, sensor: int, thresholds: Thresholds) -> FloatArray:
+def _attenuated(row: Line, before: Before, at: IntArray, sensor: int, thresholds: Thresholds) -> FloatArray:
     width = int(thresholds.attenuated_buckets[sensor])
     sums = row.over(at, width)
     deviation, due = _deviation(sums), shrunk(_mean(sums))
     suspect, fail = due * thresholds.attenuated_suspect[:, sensor], due * thresholds.attenuated_fail[:, sensor]
-    judged = (row.filled(at, width) >= SHARE_OF_WINDOW * width) & np.isfinite(deviation) & np.isfinite(suspect)
+    judged = (before.filled[:, width - 1] >= SHARE_OF_WINDOW * width) & np.isfinite(deviation) & np.isfinite(suspect)
     return np.where(judged, 1.0 + 2.0 * (deviation < suspect) + (deviation < fail), 0.0)
 
 

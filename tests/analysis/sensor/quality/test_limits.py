@@ -78,6 +78,15 @@ def test_neighbours_are_checked():
             Thresholds.from_limits(two, neighbour=wrong)
 
 
+def test_neighbours_keep_their_history_in_step():
+    """A slow and a fast logger in one tank: their hours are compared by number, so they must be the same hours."""
+    fast = default_limits(Surroundings.OPEN_TANK, interval_s=10.0)
+    slow = default_limits(Surroundings.OPEN_TANK, interval_s=1800.0)
+    thresholds = Thresholds.from_limits([fast, slow, fast, fast], neighbour=[1, 2, 0, -1])
+    assert (thresholds.bucket_us // 3_600_000_000).tolist() == [2, 2, 2, 1]
+    assert thresholds.flat_suspect_buckets[0].tolist() == [2, 2, 2, 3]
+
+
 def test_climatology_of_some_sensors_only():
     seasons = (((0.0, 1.0), (2.0, 3.0), (4.0, 5.0)),) * 12
     first = default_limits(Surroundings.POND, interval_s=60.0, climatology=seasons)

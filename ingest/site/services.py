@@ -58,3 +58,14 @@ class Board(Section):
     port: int = whole(1, 65535, 8501)
     allowed_hosts: tuple[Words, ...] = Field(default=("127.0.0.1", "localhost"), description="a list of host names")
     public_url: Words | None = words("address under which people outside reach the board", None)
+
+
+class CentralStore(Section):
+    """The section `central:`: an InfluxDB that receives everything of this and other sites. The site works without it."""
+
+    url: Words = words("address of the central InfluxDB, such as https://central.example:8086")
+    bucket: Words = words("bucket (or database) that takes the lines")
+    organisation: Words | None = words("organisation, where the server has any", None)
+    token_secret: Slug | None = slug("name of the secret that holds the token", None)
+    ca_file: Words | None = words("file of the certificate authority, relative to the site file", None)
+    largest_queue_MB: float = quantity(1, 1_000_000, "MB", 2000)

@@ -14,14 +14,15 @@ from analysis.acclimation.task import Method
 if TYPE_CHECKING:
     from analysis.acclimation.journey import Standing
     from analysis.acclimation.limits import Gate, Limits
+    from analysis.acclimation.source import SourceWater
     from analysis.acclimation.task import AcclimationTask
 
 FRESH: Final = 2.0
 """Salinity below which a source counts as the fresh water of an ion gate."""
 
 
-def usable_sources(task: AcclimationTask, *, needs_release: bool) -> tuple[AcclimationTask, tuple[str, ...]]:
-    """Return the task with the sources that may be used at its start, and words on those left out."""
+def usable_sources(task: AcclimationTask, *, needs_release: bool) -> tuple[tuple[SourceWater, ...], tuple[str, ...]]:
+    """Return the sources that may be used at the start of the task, and words on those left out."""
     kept, words = [], []
     for source in task.sources:
         obstacle = source.obstacle(task.begins_at)
@@ -31,24 +32,15 @@ def usable_sources(task: AcclimationTask, *, needs_release: bool) -> tuple[Accli
             words.append(f"Left out: {source.name} ({obstacle}).")
         else:
             kept.append(source)
-    if len(kept) == len(task.sources) or (not kept and task.salt is None):
-        return task, tuple(words)
-    return replace(task, sources=tuple(kept)), tuple(words)
+    return tuple(kept), tuple(words)
 
 
 def first_obstacle(task: AcclimationTask) -> str:
     """Return what forbids the task whatever the schedule; empty where nothing does."""
-    for check in (_no_source, _plain_salt, _wrong_direction, _out_of_reach):
+    for check in (_plain_salt, _wrong_direction, _out_of_reach):
         words = check(task)
         if words:
             return words
-    return ""
-
-
-def _no_source(task: AcclimationTask) -> str:
-    closed = [source for source in task.sources if source.release is not None and source.obstacle(task.begins_at)]
-    if task.salt is None and closed and len(closed) == len(task.sources):
-        return "; ".join(f"{source.name}: {source.obstacle(task.begins_at)}" for source in closed)
     return ""
 
 

@@ -195,7 +195,10 @@ def planned(
         True: a source that nobody has released is left out of the plan; False: it is used and the caution says
         that it must be released before the start.
     """
-    task, left_out = usable_sources(task, needs_release=needs_release)
+    kept, left_out = usable_sources(task, needs_release=needs_release)
+    if not kept and task.salt is None:
+        return _refused(task, limits, " ".join(left_out), left_out=())
+    task = replace(task, sources=kept)
     obstacle = first_obstacle(task)
     if obstacle:
         return _refused(task, limits, obstacle, left_out=left_out)

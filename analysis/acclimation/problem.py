@@ -16,7 +16,7 @@ from analysis.acclimation.windows import Mark, Windows
 if TYPE_CHECKING:
     from analysis.acclimation.limits import Limits, RollingLimit
     from analysis.acclimation.task import AcclimationTask, Water
-    from analysis.arrays import FloatArray
+    from analysis.arrays import BoolArray, FloatArray
 
 BLEND_STEP: Final = 0.2
 COARSE_BLEND_STEP: Final = 0.25
@@ -97,13 +97,17 @@ class Problem:
             total = np.maximum(total, effort / limit.cap * limit.window_min / 60.0)
         return total
 
+    def is_there(self, tank: ScenarioTank) -> BoolArray:
+        """Return True where the nominal water is the target within the tolerances; shape without the scenarios."""
+        there = np.abs(tank.salinity[..., NOMINAL] - self.target.salinity) <= self.task.tolerance_salinity
+        if self.has_target_temperature:
+            off_K = np.abs(tank.temperature_degC[..., NOMINAL] - self.target.temperature_degC)
+            there = there & (off_K <= self.task.tolerance_K)
+        return np.asarray(there)
+
     def has_arrived(self, tank: ScenarioTank) -> bool:
-        """Return True where the nominal water is the target within the tolerances."""
-        near = abs(float(tank.salinity[NOMINAL]) - self.target.salinity) <= self.task.tolerance_salinity
-        if not self.has_target_temperature:
-            return near
-        off = abs(float(tank.temperature_degC[NOMINAL]) - self.target.temperature_degC)
-        return near and off <= self.task.tolerance_K
+        """Return True where the nominal water of one tank is the target within the tolerances."""
+        return bool(self.is_there(tank))
 
 
 def problem_of(task: AcclimationTask, limits: Limits, *, slowness: float = 1.0, work: Work | None = None) -> Problem:

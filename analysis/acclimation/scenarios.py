@@ -15,7 +15,7 @@ import numpy as np
 
 from analysis.acclimation.source import SEAWATER
 from analysis.tank import Exchange, Inflow, TankWater, step, tank_water
-from analysis.water.seawater import REFERENCE_SALINITY_PER_SP
+from analysis.water.seawater import REFERENCE_SALINITY_PER_SP, density_from_absolute_salinity
 
 if TYPE_CHECKING:
     from collections.abc import Sequence
@@ -219,8 +219,9 @@ def exchanged(tank: ScenarioTank, sources: Sources, amounts: Amounts) -> Scenari
     salt: FloatArray | float = 0.0
     if amounts.salt_kg.any():
         salt = amounts.salt_kg[:, np.newaxis] * amounts.dry_fraction
-        crystal_water_L = amounts.salt_kg[:, np.newaxis] * (1.0 - amounts.dry_fraction)
-        inflows.append(Inflow(crystal_water_L, 0.0, water.temperature_degC))
+        crystal_water_kg = amounts.salt_kg[:, np.newaxis] * (1.0 - amounts.dry_fraction)
+        per_L = density_from_absolute_salinity(0.0, temperature_degC=water.temperature_degC) / 1000.0
+        inflows.append(Inflow(crystal_water_kg / per_L, 0.0, water.temperature_degC))
     after = step(kept, Exchange(inflows=tuple(inflows), dry_salt_kg_h=salt), duration_s=ONE_HOUR_S)
     added = np.broadcast_to(add_L[:, :, np.newaxis], (*add_L.shape, kept.volume_L.shape[-1]))
     return replace(tank, water=after, ph=mixed_ph(tank, kept.volume_L, sources.waters, added))

@@ -32,6 +32,8 @@ MOST_STEPS: Final = 2000
 SMALL_GAIN_H: Final = 1e-9
 DRIFT_WEIGHT_H_K: Final = 1e-4
 """Of blends that gain the same, the one that moves the temperature least. [h/K]"""
+ARRIVED_WEIGHT_H: Final = 1e-3
+"""Of candidates that arrive, the one nearest to the target. [h]"""
 WATER_WEIGHT_H: Final = 0.1
 """A blend that needs a whole tank volume more must gain this much by it. [h]"""
 
@@ -327,7 +329,8 @@ def _chosen(
     minute: float,
     least_gain_h: float,
 ) -> Move | None:
-    remaining = problem.remaining_h(after)
+    off = np.abs(after.salinity[:, NOMINAL] - problem.target.salinity)
+    remaining = np.where(problem.is_there(after), ARRIVED_WEIGHT_H * off, problem.remaining_h(after))
     drift = np.abs(after.temperature_degC[:, NOMINAL] - problem.task.start.temperature_degC)
     water = trial.add_L.sum(axis=1) / problem.task.vessel.volume_L
     score = np.where(allowed, remaining + DRIFT_WEIGHT_H_K * drift + WATER_WEIGHT_H * water, np.inf)

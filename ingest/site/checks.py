@@ -16,6 +16,7 @@ from pydantic import ValidationError
 
 from analysis.animal import tables
 from analysis.errors import InvalidInputError
+from ingest.site.call_checks import problems_of_calls
 from ingest.site.problems import listed, nearest_word
 from ingest.site.section import ANIMAL_PATTERN
 from ingest.site.sensor_checks import problems_of_sensors
@@ -28,7 +29,7 @@ if TYPE_CHECKING:
     from ingest.site.document import Document, Path
     from ingest.site.problems import Problem
 
-LISTS_WITH_IDS = ("source_waters", "analyses", "halls", "tanks", "sensors")
+LISTS_WITH_IDS = ("source_waters", "analyses", "halls", "tanks", "sensors", "people")
 
 
 def problems_across(document: Document, *, known_animals: Collection[str] | None = None) -> list[Problem]:
@@ -50,6 +51,7 @@ def problems_across(document: Document, *, known_animals: Collection[str] | None
         *_stock(document),
         *_animals(document, packaged_animals() if known_animals is None else known_animals),
         *problems_of_sensors(document),
+        *problems_of_calls(document),
     ]
 
 

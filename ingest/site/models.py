@@ -7,6 +7,7 @@ from zoneinfo import ZoneInfo
 
 from pydantic import Field
 
+from ingest.site.calls import Answers, CallLine, Duty, LifeSign, Person, TestMessage
 from ingest.site.identity import Identity
 from ingest.site.section import Section
 from ingest.site.sensors import Sensor
@@ -32,6 +33,12 @@ class Site(Section):
     tanks: tuple[Tank, ...] = Field((), description="a list of {id, name, hall, volume_L, water, set_point}")
     sensors: tuple[Sensor, ...] = Field((), description="a list of {id, tank, topic, fields}")
     species: tuple[SpeciesOverride, ...] = Field((), description="a list of {animal, figures, author, reason}")
+    people: tuple[Person, ...] = Field((), description="a list of {id, name, channels}")
+    duty: Duty = Field(Duty(), description="shifts, holidays, stand_ins, quiet_hours")
+    call_out: tuple[CallLine, ...] = Field((), description="a list of {who, by, wait_min}")
+    acknowledgements: Answers | None = Field(None, description="host, port, topic, user, secret, tls, ca_file")
+    heartbeat: LifeSign | None = Field(None, description="url_secret, every_s")
+    test_message: TestMessage | None = Field(None, description="at")
 
     @property
     def id(self) -> str:

@@ -16,7 +16,7 @@ if TYPE_CHECKING:
 
     from ingest.mqtt import Access
 
-IN_FLIGHT: Final = 400
+IN_FLIGHT: Final = 1000
 """Messages that may be on their way unacknowledged; few enough for any broker's own window to cope."""
 CONNECT_LIMIT_S: Final = 15.0
 CONFIRM_LIMIT_S: Final = 60.0

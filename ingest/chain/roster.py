@@ -10,12 +10,15 @@ import numpy as np
 
 from analysis.arrays import MICROSECONDS_PER_SECOND
 from analysis.water.units import CONDUCTIVITY_UNITS, PRESSURE_UNITS, TEMPERATURE_UNITS
+from ingest.chain.calibrated import in_force
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
 
     from analysis.arrays import BoolArray, FloatArray, IntArray
     from analysis.water.properties import WaterKind
+    from ingest.chain.calibrated import InForce
+    from ingest.chain.services import Service
     from ingest.site import Site
     from ingest.site.sensors import Sensor
 
@@ -42,6 +45,8 @@ class Roster:
         Of linear compensation.
     has_pressure : ndarray of bool
         Whether a pressure is expected; without one the probe is taken to be near the surface.
+    in_force : InForce or None
+        The calibrations; None where no sensor has one.
     """
 
     sensors: tuple[str, ...]
@@ -60,12 +65,15 @@ class Roster:
     interval_us: IntArray
     longitude: float
     latitude: float
+    in_force: InForce | None = None
 
     def __len__(self) -> int:
         return len(self.sensors)
 
 
-def roster(site: Site, kinds: Mapping[str, WaterKind]) -> Roster:
+def roster(
+    site: Site, kinds: Mapping[str, WaterKind], services: Mapping[str, Sequence[Service]] | None = None
+) -> Roster:
     """Return the site's sensors as arrays.
 
     Parameters
@@ -73,6 +81,8 @@ def roster(site: Site, kinds: Mapping[str, WaterKind]) -> Roster:
     site : Site
     kinds : mapping of str to WaterKind
         Every kind of water that the site names, by its word in the site file.
+    services : mapping of str to sequence of Service, optional
+        Work done on each sensor, in order, by its id.
     """
     sensors = site.sensors
     names = tuple(kinds)
@@ -96,6 +106,7 @@ def roster(site: Site, kinds: Mapping[str, WaterKind]) -> Roster:
         interval_us=_ints([round(sensor.interval_s * MICROSECONDS_PER_SECOND) for sensor in sensors]),
         longitude=np.nan if position is None else position.longitude,
         latitude=np.nan if position is None else position.latitude,
+        in_force=in_force([sensor.id for sensor in sensors], services or {}),
     )
 
 

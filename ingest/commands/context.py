@@ -1,13 +1,26 @@
-"""What a command may reach: the alarms of the running chain, and the time."""
+"""What a command may reach: the alarms of the running chain, the sensors and what was done to them, and the time."""
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING, Protocol
+from typing import TYPE_CHECKING, NamedTuple, Protocol
 
 if TYPE_CHECKING:
     from analysis.alarm.events import Event
     from analysis.alarm.transition import Transition
+    from analysis.water.properties import WaterKind
+    from ingest.chain.services import Service
+    from ingest.site.models import Site
     from ingest.store.block import Occurrence
+
+
+class Seen(NamedTuple):
+    """A stored reading as it was seen; None where a value is unknown."""
+
+    measured_at: int
+    conductivity_mS_cm: float | None
+    temperature_degC: float | None
+    salinity: float | None
+    quality: int
 
 
 class Context(Protocol):
@@ -24,4 +37,42 @@ class Context(Protocol):
 
     def occurrences(self, subject: str, condition: str, transitions: tuple[Transition, ...]) -> tuple[Occurrence, ...]:
         """Return what *transitions* leave in the ledger."""
+        ...
+
+    @property
+    def site(self) -> Site:
+        """The site as it is installed now."""
+        ...
+
+    def services(self, sensor: str) -> tuple[Service, ...]:
+        """Return the work done on a sensor so far, in order."""
+        ...
+
+    def water_kind(self, name: str) -> WaterKind:
+        """Return a kind of water by its word in the site file."""
+        ...
+
+    def as_measured(self, sensor: str, shown: float, *, temperature_degC: float) -> float:
+        """Return what a sensor measures when it shows *shown*: its unit converted, its compensation undone. [mS/cm]"""
+        ...
+
+    def seen_near(self, sensor: str, at_us: int) -> Seen | None:
+        """Return the stored reading nearest to a moment, if there is one within a few of the sensor's intervals."""
+        ...
+
+    def newest_us(self, sensor: str) -> int | None:
+        """Return when the newest reading of a sensor was measured; None if it has never spoken. [us UTC]"""
+        ...
+
+    def sensor_number(self, sensor: str) -> int:
+        """Return the store's number of a sensor."""
+        ...
+
+    def tank_number(self, tank: str) -> int:
+        """Return the store's number of a tank."""
+        ...
+
+    @property
+    def derives_as(self) -> tuple[str, int]:
+        """Code version and revision of the site file under which readings are derived."""
         ...

@@ -6,7 +6,8 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Literal, Self
 
 if TYPE_CHECKING:
-    from ingest.store.block import Occurrence
+    from ingest.store.block import Occurrence, SensorWork
+    from ingest.store.corrected import JobRow
 
 Verdict = Literal["applied", "refused", "expired"]
 
@@ -22,6 +23,8 @@ class Ruling:
     reason: str = ""
     occurrences: tuple[Occurrence, ...] = ()
     has_to_reload: bool = False
+    work: SensorWork | None = None
+    jobs: tuple[JobRow, ...] = ()
 
     @classmethod
     def refused(cls, reason: str) -> Self:

@@ -9,9 +9,10 @@ from pydantic import Field
 
 from ingest.site.calls import Answers, CallLine, Duty, LifeSign, Person, TestMessage
 from ingest.site.identity import Identity
+from ingest.site.records import Records
 from ingest.site.section import Section
 from ingest.site.sensors import Sensor
-from ingest.site.services import Board, Broker, Intake, Store
+from ingest.site.services import Board, Broker, CentralStore, Intake, Store
 from ingest.site.species import SpeciesOverride
 from ingest.site.tanks import MAIN_HALL, Hall, Tank
 from ingest.site.waters import Analysis, SourceWater
@@ -24,7 +25,11 @@ class Site(Section):
     store: Store = Field(Store(), description="path, hot_days, commit_interval_s")
     intake: Intake = Field(Intake(), description="largest_payload_kB")
     broker: Broker = Field(Broker(), description="host, port, protocol, tls, user, secret, client_id")
+    records: Records = Field(
+        Records(), description="correct_above_percent, correct_above_mS_cm, correct_above_K, calibration_valid_days"
+    )
     board: Board = Field(Board(), description="host, port, allowed_hosts, public_url")
+    central: CentralStore | None = Field(None, description="url, bucket, organisation, token_secret, ca_file")
     source_waters: tuple[SourceWater, ...] = Field((), description="a list of {id, name, kind}")
     analyses: tuple[Analysis, ...] = Field((), description="a list of {id, name, ions}")
     halls: tuple[Hall, ...] = Field(

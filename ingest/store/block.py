@@ -7,13 +7,15 @@ from typing import TYPE_CHECKING, Any, NamedTuple
 
 import msgspec
 
-from ingest.store import alarms, ledger, readings, refused, rollups
+from ingest.store import alarms, calibrations, corrected, forwarding, ledger, readings, refused, registry, rollups
 
 if TYPE_CHECKING:
     import sqlite3
 
     from analysis.arrays import IntArray
     from ingest.store.alarms import AlarmRow
+    from ingest.store.calibrations import PeriodRow, SampleRow, ServiceRow
+    from ingest.store.corrected import JobRow
     from ingest.store.ledger import Event
     from ingest.store.readings import ReadingRows
     from ingest.store.refused import Refusal
@@ -92,6 +94,19 @@ class OutcomeRow(NamedTuple):
     decided_at: int
 
 
+class SensorWork(NamedTuple):
+    """What a person's work on a sensor leaves, besides the event that tells of it.
+
+    `derives_as` names code version and revision of the site file under which readings are derived from now on: services
+    change the derivation.
+    """
+
+    services: tuple[ServiceRow, ...] = ()
+    periods: tuple[PeriodRow, ...] = ()
+    samples: tuple[SampleRow, ...] = ()
+    derives_as: tuple[str, int] | None = None
+
+
 @dataclass(slots=True)
 class BlockCommit:
     """All that a block leaves. Empty parts cost nothing."""
@@ -110,6 +125,11 @@ class BlockCommit:
     pending_alarms: list[AlarmRow] = field(default_factory=list)
     occurrences: list[Occurrence] = field(default_factory=list)
     outcomes: list[OutcomeRow] = field(default_factory=list)
+    forward: list[str] = field(default_factory=list)
+    queued_at: int = 0
+    work: SensorWork | None = None
+    jobs: list[JobRow] = field(default_factory=list)
+    now_us: int = 0
     meta: dict[str, str | int] = field(default_factory=dict)
 
 
@@ -139,6 +159,7 @@ def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: i
             f"INSERT OR REPLACE INTO {table} VALUES (?, ?, ?)",
             [(state.tank, state.measured_at, msgspec.json.encode(state.body).decode()) for state in states],
         )
+    forwarding.put(connection, block.forward, queued_at=block.queued_at)
     for row in block.pending_alarms:
         alarms.upsert(connection, row, event_id=None)
     event_ids = [_write_occurrence(connection, occurrence) for occurrence in block.occurrences]
@@ -147,11 +168,30 @@ def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: i
         " VALUES (?, ?, ?, ?, ?, ?, ?, ?)",
         [(*row, event_ids[0] if event_ids else None) for row in block.outcomes],
     )
+    if block.work is not None:
+        _write_work(connection, block.work, event_id=event_ids[0])
+    corrected.add_jobs(
+        connection, block.jobs, event_id=event_ids[0] if block.work is not None else None, now_us=block.now_us
+    )
     connection.executemany(
         "INSERT INTO meta VALUES (?, ?) ON CONFLICT (name) DO UPDATE SET value = excluded.value",
         list(block.meta.items()),
     )
     return event_ids
+
+
+def _write_work(connection: sqlite3.Connection, work: SensorWork, *, event_id: int) -> None:
+    calibrations.insert(connection, work.services, event_id=event_id)
+    calibrations.replace_periods(connection, work.periods)
+    calibrations.insert_samples(connection, work.samples, event_id=event_id)
+    if work.derives_as is not None:
+        code_version, revision = work.derives_as
+        registry.derivation_number(
+            connection,
+            code_version=code_version,
+            revision=revision,
+            calibration_set=calibrations.calibration_set(connection),
+        )
 
 
 def _write_occurrence(connection: sqlite3.Connection, occurrence: Occurrence) -> int:

@@ -111,15 +111,45 @@ STORE: tuple[Migration, ...] = (
             " PRIMARY KEY (subject, condition)) WITHOUT ROWID",
             "CREATE TABLE cohort (id TEXT PRIMARY KEY, tank INTEGER REFERENCES tank(id), animal TEXT NOT NULL,"
             " number INTEGER, since INTEGER NOT NULL, ended_at INTEGER, body TEXT NOT NULL) WITHOUT ROWID",
+            # Work done on a sensor: a calibration or a cleaning. Of two rows of one moment the later event holds.
+            "CREATE TABLE service (sensor INTEGER NOT NULL REFERENCES sensor(id), performed_at INTEGER NOT NULL,"
+            " event_id INTEGER NOT NULL REFERENCES event(id), kind TEXT NOT NULL, actor TEXT NOT NULL, next_due INTEGER,"
+            " body TEXT NOT NULL, PRIMARY KEY (sensor, performed_at, event_id)) WITHOUT ROWID",
+            "CREATE TABLE record_period (sensor INTEGER NOT NULL REFERENCES sensor(id), to_us INTEGER NOT NULL, from_us INTEGER,"
+            " fouling_percent REAL, drift_percent REAL, temperature_error_K REAL, rating TEXT, temperature_rating TEXT,"
+            " is_corrected INTEGER NOT NULL, PRIMARY KEY (sensor, to_us)) WITHOUT ROWID",
+            "CREATE TABLE rederivation (id INTEGER PRIMARY KEY, sensor INTEGER NOT NULL REFERENCES sensor(id),"
+            " from_us INTEGER NOT NULL, to_us INTEGER NOT NULL, reason TEXT NOT NULL, event_id INTEGER REFERENCES event(id),"
+            " created_at INTEGER NOT NULL, next_us INTEGER NOT NULL, row_count INTEGER NOT NULL DEFAULT 0, finished_at INTEGER)",
+            "CREATE INDEX rederivation_open ON rederivation (id) WHERE finished_at IS NULL",
+            "CREATE TABLE bench_sample (taken_at INTEGER NOT NULL, event_id INTEGER NOT NULL REFERENCES event(id),"
+            " tank INTEGER REFERENCES tank(id), sensor INTEGER REFERENCES sensor(id), actor TEXT NOT NULL, body TEXT NOT NULL,"
+            " PRIMARY KEY (taken_at, event_id)) WITHOUT ROWID",
+            "CREATE TABLE sensor_health (sensor INTEGER PRIMARY KEY REFERENCES sensor(id), assessed_at INTEGER NOT NULL,"
+            " belief INTEGER NOT NULL, since INTEGER NOT NULL, body TEXT NOT NULL)",
             "CREATE TABLE outbox (id INTEGER PRIMARY KEY, event_id INTEGER NOT NULL REFERENCES event(id), channel TEXT NOT NULL,"
             " body TEXT NOT NULL, created_at INTEGER NOT NULL, next_attempt_at INTEGER NOT NULL, attempts INTEGER NOT NULL DEFAULT 0,"
             " outcome TEXT, finished_at INTEGER)",
             "CREATE INDEX outbox_open ON outbox (next_attempt_at) WHERE finished_at IS NULL",
+            # Calls to people: a call-out's id is that of the event that began it.
+            "CREATE TABLE call_out (id INTEGER PRIMARY KEY, phase TEXT NOT NULL, updated_at INTEGER NOT NULL, body TEXT NOT NULL)",
+            "CREATE INDEX call_out_open ON call_out (id) WHERE phase <> 'over'",
+            "CREATE TABLE call_made (call_out INTEGER NOT NULL, number INTEGER NOT NULL, person TEXT NOT NULL, at INTEGER NOT NULL,"
+            " reason TEXT NOT NULL, covered TEXT NOT NULL, answered_at INTEGER, PRIMARY KEY (call_out, number)) WITHOUT ROWID",
+            "CREATE TABLE delivery (id INTEGER PRIMARY KEY, call_out INTEGER NOT NULL, number INTEGER NOT NULL, person TEXT NOT NULL,"
+            " channel TEXT NOT NULL, address TEXT NOT NULL, reason TEXT NOT NULL, title TEXT NOT NULL, body TEXT NOT NULL,"
+            " created_at INTEGER NOT NULL, next_attempt_at INTEGER NOT NULL, attempts INTEGER NOT NULL DEFAULT 0,"
+            " outcome TEXT, finished_at INTEGER)",
+            "CREATE INDEX delivery_open ON delivery (next_attempt_at) WHERE finished_at IS NULL",
+            "CREATE TABLE delivery_attempt (delivery INTEGER NOT NULL, number INTEGER NOT NULL, begun_at INTEGER NOT NULL,"
+            " ended_at INTEGER NOT NULL, is_delivered INTEGER NOT NULL, detail TEXT NOT NULL,"
+            " PRIMARY KEY (delivery, number)) WITHOUT ROWID",
             "CREATE TABLE command_outcome (id TEXT PRIMARY KEY, kind TEXT NOT NULL, subject TEXT NOT NULL, actor TEXT NOT NULL,"
             " outcome TEXT NOT NULL, reason TEXT NOT NULL, event_id INTEGER REFERENCES event(id), decided_at INTEGER NOT NULL)"
             " WITHOUT ROWID",
             "CREATE TABLE refused (id INTEGER PRIMARY KEY, topic TEXT NOT NULL, received_at INTEGER NOT NULL, payload BLOB NOT NULL,"
             " code TEXT NOT NULL, place TEXT NOT NULL, found TEXT NOT NULL, allowed TEXT NOT NULL, is_partly_kept INTEGER NOT NULL)",
+            "CREATE TABLE forward_queue (id INTEGER PRIMARY KEY AUTOINCREMENT, queued_at INTEGER NOT NULL, lines TEXT NOT NULL)",
             "CREATE TABLE counter (name TEXT PRIMARY KEY, value INTEGER NOT NULL) WITHOUT ROWID",
         ),
     ),

@@ -53,6 +53,15 @@ def derivation_number(connection: sqlite3.Connection, *, code_version: str, revi
     return int(row[0])
 
 
+def known_derivation(connection: sqlite3.Connection, *, code_version: str, revision: int, calibration_set: str) -> int:
+    """Return the number of a way of deriving that is in the store."""
+    row = connection.execute(
+        "SELECT id FROM derivation WHERE code_version = ? AND revision = ? AND calibration_set = ?",
+        (code_version, revision, calibration_set),
+    ).fetchone()
+    return int(row[0])
+
+
 def newest_revision(connection: sqlite3.Connection) -> tuple[int, str]:
     """Return number and text of the newest accepted site file; (0, "") before the first."""
     row = connection.execute("SELECT number, text FROM revision ORDER BY number DESC LIMIT 1").fetchone()

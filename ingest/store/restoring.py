@@ -8,6 +8,8 @@ import msgspec
 
 from analysis.alarm.state import state_from_dict
 from ingest.chain.animals import Stocked
+from ingest.chain.services import in_order, service
+from ingest.store import calibrations
 from ingest.store.alarms import read_all as alarm_rows
 from ingest.store.block import OutcomeRow
 
@@ -15,6 +17,7 @@ if TYPE_CHECKING:
     import sqlite3
 
     from analysis.alarm.state import AlarmState
+    from ingest.chain.services import Service
     from ingest.store.alarms import AlarmRow
     from ingest.store.inbox import Command
 
@@ -28,6 +31,7 @@ __all__ = [
     "newest_times",
     "outcome_row",
     "quality_memory",
+    "services",
     "stocked_tanks",
     "tank_bodies",
 ]
@@ -88,6 +92,14 @@ def stocked_tanks(connection: sqlite3.Connection) -> dict[str, Stocked]:
         row["slug"]: Stocked(row["id"], row["animal"], float(msgspec.json.decode(row["body"])["used_to_salinity"]))
         for row in rows
     }
+
+
+def services(connection: sqlite3.Connection) -> dict[str, tuple[Service, ...]]:
+    """Return the work done on each sensor, in order, by the sensor's id."""
+    found: dict[str, list[Service]] = {}
+    for row in calibrations.services(connection):
+        found.setdefault(row.sensor, []).append(service(row.sensor, row.performed_at, row.kind, row.body))
+    return {sensor: tuple(in_order(own)) for sensor, own in found.items()}
 
 
 def alarm_state(row: AlarmRow) -> AlarmState:

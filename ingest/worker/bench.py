@@ -4,23 +4,41 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from analysis.alarm.kinds import ConditionKind
 from ingest.chain.chain import Happened, act
+from ingest.chain.water import uncompensated
+from ingest.clock import MICROSECONDS_PER_SECOND
+from ingest.commands.context import Seen
+from ingest.store import corrected, restoring
 from ingest.worker.committing import occurrence
+from ingest.worker.registering import code_version
 
 if TYPE_CHECKING:
+    import sqlite3
+
     from analysis.alarm.events import Event
     from analysis.alarm.transition import Transition
+    from analysis.water.properties import WaterKind
     from ingest.chain.chain import ChainState
+    from ingest.chain.services import Service
+    from ingest.site.models import Site
     from ingest.store.block import Occurrence
     from ingest.worker.plant import Plant
+
+
+NEAR_INTERVALS = 3.0
+NEAR_S = 60.0
+"""A reading taken by hand is held against the stored one within three intervals and a minute."""
 
 
 class Bench:
     """A copy of the chain's state on which one command works (`ingest.commands.context.Context`)."""
 
-    def __init__(self, plant: Plant, state: ChainState, *, now_us: int) -> None:
+    def __init__(self, plant: Plant, state: ChainState, *, now_us: int, connection: sqlite3.Connection) -> None:
         self._plant = plant
+        self._connection = connection
         self.state = state
         self._now_us = now_us
 
@@ -47,3 +65,51 @@ class Bench:
             occurrence(self._plant, Happened(tank, kind, item), now_us=self._now_us, actor=item.who)
             for item in transitions
         )
+
+    @property
+    def site(self) -> Site:
+        """The site as it is installed now."""
+        return self._plant.site
+
+    def services(self, sensor: str) -> tuple[Service, ...]:
+        """Return the work done on a sensor so far, in order."""
+        return self._plant.services.get(sensor, ())
+
+    def water_kind(self, name: str) -> WaterKind:
+        """Return a kind of water by its word in the site file."""
+        return self._plant.kinds[name]
+
+    def as_measured(self, sensor: str, shown: float, *, temperature_degC: float) -> float:
+        """Return what a sensor measures when it shows *shown*: its unit converted, its compensation undone. [mS/cm]"""
+        roster = self._plant.roster
+        index = np.array([self._plant.site.sensor_index[sensor]])
+        conductivity = np.array([shown]) * roster.conductivity_scale[index]
+        return float(uncompensated(roster, index, conductivity, np.array([temperature_degC]))[0])
+
+    def seen_near(self, sensor: str, at_us: int) -> Seen | None:
+        """Return the stored reading nearest to a moment, if there is one within a few of the sensor's intervals."""
+        within_s = NEAR_INTERVALS * self._plant.site.sensor(sensor).interval_s + NEAR_S
+        row = corrected.nearest(
+            self._connection,
+            sensor=self.sensor_number(sensor),
+            at_us=at_us,
+            within_us=round(within_s * MICROSECONDS_PER_SECOND),
+        )
+        return None if row is None else Seen(*row)
+
+    def newest_us(self, sensor: str) -> int | None:
+        """Return when the newest reading of a sensor was measured; None if it has never spoken. [us UTC]"""
+        return restoring.newest_times(self._connection).get(sensor)
+
+    def sensor_number(self, sensor: str) -> int:
+        """Return the store's number of a sensor."""
+        return int(self._plant.numbers.sensor[self._plant.site.sensor_index[sensor]])
+
+    def tank_number(self, tank: str) -> int:
+        """Return the store's number of a tank."""
+        return int(self._plant.numbers.tank[self._plant.site.tank_index[tank]])
+
+    @property
+    def derives_as(self) -> tuple[str, int]:
+        """Code version and revision of the site file under which readings are derived."""
+        return code_version(), self._plant.numbers.revision

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
 from ingest.chain.animals import animal_roster
+from ingest.chain.calibrated import in_force
 from ingest.chain.roster import roster
+from ingest.chain.services import Rules, periods
 from ingest.chain.tanks import tank_roster
 from ingest.chain.trust import thresholds
 from ingest.payloads.decoder import Decoder
@@ -19,8 +21,10 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from analysis.sensor.quality.thresholds import Thresholds
+    from analysis.water.properties import WaterKind
     from ingest.chain.animals import AnimalRoster, Stocked
     from ingest.chain.roster import Roster
+    from ingest.chain.services import Period, Service
     from ingest.chain.tanks import TankRoster
     from ingest.site.models import Site
     from ingest.worker.registering import Numbers
@@ -28,7 +32,10 @@ if TYPE_CHECKING:
 
 @dataclass(frozen=True, slots=True)
 class Plant:
-    """What is installed, in the forms in which the worker needs it."""
+    """What is installed, in the forms in which the worker needs it.
+
+    `services` holds the work done on each sensor; `periods` what it says of their records, where these are corrected.
+    """
 
     site: Site
     text: str
@@ -38,6 +45,27 @@ class Plant:
     tanks: TankRoster
     animals: AnimalRoster
     decoder: Decoder
+    kinds: Mapping[str, WaterKind]
+    services: Mapping[str, tuple[Service, ...]]
+    periods: Mapping[str, tuple[Period, ...]]
+
+    def after_services(self, services: Mapping[str, tuple[Service, ...]], *, derivation: int) -> Plant:
+        """Return the same plant after more work on its sensors.
+
+        Parameters
+        ----------
+        services : mapping
+            All work on each sensor, in order, by the sensor's id.
+        derivation : int
+            The store's number of the way in which values are derived from now on.
+        """
+        return replace(
+            self,
+            numbers=replace(self.numbers, derivation=derivation),
+            roster=replace(self.roster, in_force=in_force(self.roster.sensors, services)),
+            services=services,
+            periods=_periods(self.site, services),
+        )
 
     @property
     def topics(self) -> tuple[str, ...]:
@@ -59,6 +87,7 @@ def plant(
     stocked: Mapping[str, Stocked],
     tables: Path,
     waiting_halves: Mapping[str, Any],
+    services: Mapping[str, tuple[Service, ...]] | None = None,
     has_horizon: bool = True,
     least_interval_s: float = 0.0,
 ) -> Plant:
@@ -77,6 +106,8 @@ def plant(
         Folder in which tables of laboratory analyses are kept.
     waiting_halves : mapping
         Halves of readings that wait for their partner, as last committed.
+    services : mapping of str to tuple of Service, optional
+        Work done on each sensor, in order, by the sensor's id.
     has_horizon : bool
         Whether measured times far in the past are refused; a replayed record may be of any age.
     least_interval_s : float
@@ -89,7 +120,8 @@ def plant(
         ]
         site = site.model_copy(update={"sensors": tuple(sensors_as)})
     kinds = kinds_of(site, tables=tables)
-    sensors = roster(site, kinds)
+    services = services or {}
+    sensors = roster(site, kinds, services)
     animals = animal_roster(site, kinds, stocked)
     read_as = site
     if not has_horizon:
@@ -104,4 +136,14 @@ def plant(
         tanks=tank_roster(site, sensors, is_larva=animals.is_larva, tolerable=animals.tolerable_salinity),
         animals=animals,
         decoder=Decoder(read_as, pairing=Pairing.restored(site, dict(waiting_halves))),
+        kinds=kinds,
+        services=services,
+        periods=_periods(site, services),
     )
+
+
+def _periods(site: Site, services: Mapping[str, tuple[Service, ...]]) -> Mapping[str, tuple[Period, ...]]:
+    """Return what services say of the records, of sensors whose record is corrected at all."""
+    rules = Rules.of(site.records)
+    found = {sensor: tuple(periods(own, rules)) for sensor, own in services.items()}
+    return {sensor: own for sensor, own in found.items() if any(one.found.is_corrected for one in own)}

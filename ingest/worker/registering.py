@@ -15,7 +15,7 @@ from ingest.clock import to_microseconds
 from ingest.site.differences import differences
 from ingest.site.loading import load_text
 from ingest.site.problems import SiteFileError
-from ingest.store import cohorts, registry
+from ingest.store import calibrations, cohorts, registry
 
 if TYPE_CHECKING:
     import sqlite3
@@ -77,12 +77,20 @@ def register(connection: sqlite3.Connection, site: Site, *, text: str, actor: st
     return Numbers(
         revision=revision,
         derivation=registry.derivation_number(
-            connection, code_version=version("euryhale"), revision=revision, calibration_set="none"
+            connection,
+            code_version=code_version(),
+            revision=revision,
+            calibration_set=calibrations.calibration_set(connection),
         ),
         sensor=np.array(sensors, dtype=np.int64),
         declaration=np.array(declarations, dtype=np.int64),
         tank=np.array(tanks, dtype=np.int64),
     )
+
+
+def code_version() -> str:
+    """Return the version of this program: part of the name of a derivation."""
+    return version("euryhale")
 
 
 def _midnight(day: date, site: Site) -> int:

@@ -21,7 +21,7 @@ from ingest.commands import desk
 from ingest.mqtt import Access, Intake
 from ingest.secrets import read_secret
 from ingest.site.loading import load_text
-from ingest.store import restoring
+from ingest.store import calibrations, registry, restoring
 from ingest.store.block import BlockCommit
 from ingest.store.inbox import Inbox, InboxTaker
 from ingest.store.readings import as_sent
@@ -42,8 +42,10 @@ from ingest.worker.committing import (
     tank_states,
 )
 from ingest.worker.decoding import decode
+from ingest.worker.outgoing import Outgoing, outgoing
 from ingest.worker.plant import Plant, plant
-from ingest.worker.registering import register
+from ingest.worker.rederiving import Rederiver, late_jobs
+from ingest.worker.registering import code_version, register
 from ingest.worker.schedule import Schedule
 from ingest.worker.stopwatch import Stopwatch
 
@@ -73,6 +75,9 @@ ROLLUP_EVERY_S = 20.0
 ROLLUP_LAG_US = 5 * 60 * MICROSECONDS_PER_SECOND
 """The rollups stay this far behind the newest time, so that a sensor that is a little late is swept, not added singly."""
 CHECKPOINT_EVERY_S = 60.0
+FORWARDING_EVERY_S = 2.0
+REDERIVE_EVERY_S = 0.1
+"""A slice of what is derived again is done this often at most: live blocks have the greater part of the time."""
 RETRY_S = (0.1, 0.5, 1.0, 2.0, 5.0)
 """Waits between attempts to commit; the last one repeats. Nothing is acknowledged meanwhile."""
 NEVER_SPOKEN = -(2**63)
@@ -116,6 +121,7 @@ class Worker:
             numbers = register(
                 connection, site, text=text, actor=site.identity.default_actor.name, now_us=clock.now_us()
             )
+        self._rederiver = Rederiver(self.store)
         self._committed_halves = "{}"
         self.plant = self._plant(site, text, numbers)
         self._newest_us: list[int] = []
@@ -124,6 +130,7 @@ class Worker:
         # A replayed record is received now, whatever time it speaks of.
         received_by = SystemClock() if self._is_replay else clock
         self.intake = Intake(self._access(), self.plant.topics, clock=received_by)
+        self._outgoing: Outgoing | None = None
         self._watching_since_us = clock.now_us()
         self._wants_reload = threading.Event()
         self._schedule = Schedule(clock)
@@ -133,6 +140,7 @@ class Worker:
 
     def run(self, stop: threading.Event) -> None:
         """Work until *stop* is set; whatever goes wrong beyond repair is raised: a worker dies loudly."""
+        self._outgoing = outgoing(self.plant.site, self.plant, site_file=self._site_file, store=self.store)
         self.intake.start()
         interval_s = self.plant.site.store.commit_interval_s
         last_end_s = self._clock.monotonic_s()
@@ -151,12 +159,18 @@ class Worker:
                 last_end_s = self._clock.monotonic_s()
         finally:
             self.intake.stop()
+            if self._outgoing is not None:
+                self._outgoing.forwarder.stop()
             self.close()
 
     def close(self) -> None:
         """Let go of the store."""
         self._inbox.close()
         self.store.close()
+
+    def forward_through(self, outgoing: Outgoing) -> None:
+        """Send what follows to a central store by *outgoing*, whose forwarder the caller starts and stops."""
+        self._outgoing = outgoing
 
     def reload_soon(self) -> None:
         """Ask for the site file to be read anew between two blocks; safe to call from a signal handler."""
@@ -187,6 +201,7 @@ class Worker:
             commit.latest = newest_rows(admission.block.sensor, found.flags)
             commit.sensor_states = sensor_states(admission.block.sensor[commit.latest], output.state)
             commit.rings = ring_rows(plant, found, output.state)
+            commit.jobs = late_jobs(plant, admission.block, found.flags)
         commit.conflicts = conflict_rows(self.plant, raw, admission.contradictions)
         commit.counts["readings"] = len(admission.block)
         commit.counts["duplicates"] = admission.duplicates
@@ -200,6 +215,7 @@ class Worker:
             return False
         self._newest_us = newest_us
         self.state = output.state
+        self._rederiver.has_work |= bool(commit.jobs)
         if isinstance(self._clock, ReplayClock) and len(admission.block):
             self._clock.follow(int(admission.block.measured_at_us[-1]))
         return True
@@ -213,12 +229,14 @@ class Worker:
         return {"waiting_halves": halves}
 
     def _with_output(self, commit: BlockCommit, output: ChainOutput) -> BlockCommit:
-        now_us = self._clock.now_us()
+        now_us = commit.now_us = self._clock.now_us()
         commit.tank_states = tank_states(self.plant, output.state, output.tanks)
         commit.animal_states = animal_states(self.plant, output.state, output.moved)
         commit.stress = stress_rows(self.plant, output)
         commit.pending_alarms = pending_rows(self.plant, output, now_us=now_us)
         commit.occurrences = [self._occurrence(item, now_us) for item in output.happened]
+        if self._outgoing is not None:
+            self._outgoing.add_lines(commit, now_us=now_us)
         return commit
 
     def _occurrence(self, happened: Happened, now_us: int) -> Occurrence:
@@ -257,13 +275,18 @@ class Worker:
             self.tick(stop)
         if self._schedule.is_due("heartbeat", HEARTBEAT_EVERY_S):
             self._commit(BlockCommit(meta={"alive_at": self._clock.now_us(), **self._condition()}), stop)
+        if self._outgoing is not None and self._schedule.is_due("forwarding", FORWARDING_EVERY_S):
+            self._outgoing.keep_house()
         if self._schedule.is_due("rollup", ROLLUP_EVERY_S) and self.roll_up():
             self._schedule.make_due("rollup")
+        if self._rederiver.has_work and self._schedule.is_due("rederive", REDERIVE_EVERY_S):
+            self.rederive()
         if self._schedule.is_due("checkpoint", CHECKPOINT_EVERY_S):
             self.store.checkpoint()
 
     def _condition(self) -> dict[str, str | int]:
-        return {
+        sending = {} if self._outgoing is None else self._outgoing.condition(self._clock.now_us())
+        return sending | {
             "broker_connected": int(self.intake.is_connected),
             "broker_problem": self.intake.last_problem,
             "dropped_by_broker": self.intake.dropped_by_broker,
@@ -299,13 +322,18 @@ class Worker:
     def take_commands(self, stop: threading.Event) -> None:
         """Decide on what people have asked for since the last look."""
         for seq, command in self._inbox.after(self._inbox_seq):
-            context = Bench(self.plant, self.state, now_us=self._clock.now_us())
+            context = Bench(self.plant, self.state, now_us=self._clock.now_us(), connection=self.store.connection)
             if restoring.has_outcome(self.store.connection, command.id):
                 self._inbox_seq = seq
                 continue
             ruling = desk.rule(command, context, roles=self.plant.roles)
             commit = BlockCommit(
-                occurrences=[*ruling.occurrences], meta={"inbox_seq": seq}, counts={f"commands.{ruling.outcome}": 1}
+                occurrences=[*ruling.occurrences],
+                meta={"inbox_seq": seq},
+                counts={f"commands.{ruling.outcome}": 1},
+                work=ruling.work,
+                jobs=[*ruling.jobs],
+                now_us=context.now_us,
             )
             commit.outcomes.append(restoring.outcome_row(command, ruling.outcome, ruling.reason, context.now_us))
             if not self._commit(commit, stop):
@@ -313,11 +341,29 @@ class Worker:
             self._inbox_seq = seq
             if ruling.outcome == "applied":
                 self.state = context.state
+            if ruling.work is not None and ruling.work.services:
+                self._take_up_services()
+            self._rederiver.has_work |= bool(ruling.jobs)
             if ruling.has_to_reload:
                 self._wants_reload.set()
             log.info(
                 "command", kind=command.kind, subject=command.subject, outcome=ruling.outcome, reason=ruling.reason
             )
+
+    def _take_up_services(self) -> None:
+        """Let what has been done to sensors hold from the next block on."""
+        connection = self.store.connection
+        derivation = registry.known_derivation(
+            connection,
+            code_version=code_version(),
+            revision=self.plant.numbers.revision,
+            calibration_set=calibrations.calibration_set(connection),
+        )
+        self.plant = self.plant.after_services(restoring.services(connection), derivation=derivation)
+
+    def rederive(self) -> bool:
+        """Do one slice of what has to be derived again; return whether there may be more to do."""
+        return self._rederiver.step(self.plant, now_us=self._clock.now_us())
 
     def reload(self) -> bool:
         """Read the site file anew; all or nothing. Return whether the new one is at work."""
@@ -350,6 +396,8 @@ class Worker:
             log.error("site file refused", reason=str(error))
             return False
         self.intake.resubscribe(self.plant.topics)
+        if self._outgoing is not None:
+            self._outgoing.take(self.plant)
         self.last_problem = ""
         log.info("site file accepted", revision=self.plant.numbers.revision)
         return True
@@ -366,6 +414,7 @@ class Worker:
             stocked=restoring.stocked_tanks(connection),
             tables=self.store.folder / "ion_tables",
             waiting_halves=msgspec.json.decode(self._committed_halves),
+            services=restoring.services(connection),
         )
 
     def _restore(self) -> None:

@@ -29,7 +29,7 @@ class Admission:
     Attributes
     ----------
     block : RawBlock
-        The new readings, sorted by time, then sensor; late ones carry the flag `late`.
+        The new readings in the order of arrival; late ones carry the flag `late`.
     duplicates : int
         Readings that are stored already with the same values.
     contradictions : tuple of int
@@ -82,7 +82,7 @@ def admit(newest_us: list[int], raw: RawBlock, *, stored: Callable[[int, int], A
             duplicates += 1
         else:
             contradictions.append(index)
-    return Admission(_sorted(raw, kept, late), duplicates, tuple(contradictions))
+    return Admission(_taken(raw, kept, late), duplicates, tuple(contradictions))
 
 
 def _values(raw: RawBlock, index: int) -> AsSent:
@@ -93,10 +93,7 @@ def _is_same(one: AsSent, other: AsSent) -> bool:
     return all(a == b or (a != a and b != b) for a, b in zip(one, other, strict=True))
 
 
-def _sorted(raw: RawBlock, kept: list[int], late: list[int]) -> RawBlock:
+def _taken(raw: RawBlock, kept: list[int], late: list[int]) -> RawBlock:
     if late:
         raw.flags[late] |= np.uint32(Flag.LATE)
-    order = np.array(kept, dtype=np.int64)
-    if order.size > 1:
-        order = order[np.lexsort((raw.sensor[order], raw.measured_at_us[order]))]
-    return raw.take(order)
+    return raw if len(kept) == len(raw) else raw.take(np.array(kept, dtype=np.int64))

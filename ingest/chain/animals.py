@@ -14,7 +14,7 @@ import numpy as np
 from analysis.animal.fallbacks import resolved
 from analysis.animal.osmoregulation import CohortState, StageArrays
 from analysis.animal.stage import Certainty
-from analysis.animal.stress import BAND_WORDS, DRIVER_WORDS, Band, Driver, Stress, advance, advance_series
+from analysis.animal.stress import BAND_WORDS, DRIVER_WORDS, Band, Driver, Stress, advance
 from analysis.animal.tables import load
 from analysis.arrays import MICROSECONDS_PER_SECOND
 
@@ -30,8 +30,6 @@ if TYPE_CHECKING:
 EVERY_US = 10 * MICROSECONDS_PER_SECOND
 RECORD_EVERY_US = 60 * MICROSECONDS_PER_SECOND
 """A row of the record is kept for the first step of each such slice of measured time, and for each change of band."""
-SERIES_FROM = 50
-"""From so many steps of one tank in a block on, the whole series is taken at once."""
 NO_ANIMALS = -1
 _NAN_STRESS = float("nan")
 
@@ -188,13 +186,10 @@ def step(
         return state, (), []
     state = AnimalState(_copied(state.cohorts), _copied(state.latest), state.recorded_us.copy())
     record: list[StressStep] = []
-    waves = _waves(rows[due], due)
-    if len(waves) >= SERIES_FROM:
-        for row in np.unique(rows[due]).tolist():
-            _step_series(roster, state, row, due[rows[due] == row], osmolality, temperature, record)
-    else:
-        for wave in waves:
-            _step_wave(roster, state, rows[wave], wave, osmolality, temperature, record)
+    # Step by step even where a block holds hours of one tank: a series taken at once is the same to rounding only,
+    # and the state must be that of the readings to the last bit, whatever blocks they came in.
+    for wave in _waves(rows[due], due):
+        _step_wave(roster, state, rows[wave], wave, osmolality, temperature, record)
     return state, tuple(np.unique(osmolality.tank[due]).tolist()), record
 
 
@@ -245,31 +240,6 @@ def _step_wave(
     _keep(roster, state, rows, after, stress, at_us, record)
 
 
-def _step_series(
-    roster: AnimalRoster,
-    state: AnimalState,
-    row: int,
-    due: IntArray,
-    osmolality: JudgedRows,
-    temperature: JudgedRows,
-    record: list[StressStep],
-) -> None:
-    rows = np.array([row])
-    cohorts = state.cohorts.take(rows)
-    at_us = osmolality.at_us[due]
-    if cohorts.updated_at_us[0] == 0:
-        cohorts = replace(cohorts, updated_at_us=at_us[:1])
-    after, stress = advance_series(
-        roster.figures.take(rows),
-        cohorts,
-        times_us=at_us,
-        osmolality_mOsm_kg=_farthest(osmolality, due, np.full(due.size, cohorts.acclimated[0])),
-        temperature_degC=temperature.high_value[due],
-    )
-    repeated = np.full(due.size, row, dtype=np.int64)
-    _keep(roster, state, repeated, replace(after, updated_at_us=at_us[-1:]), stress, at_us, record)
-
-
 def _keep(
     roster: AnimalRoster,
     state: AnimalState,
@@ -286,13 +256,12 @@ def _keep(
         if is_due or has_new_band:
             state.recorded_us[row] = time_us // RECORD_EVERY_US
             values = stress_values(stress, index)
-            values["acclimated_mOsm_kg"] = _number(after.acclimated[min(index, len(after) - 1)])
+            values["acclimated_mOsm_kg"] = _number(after.acclimated[index])
             record.append(StressStep(int(roster.tanks[row]), time_us, roster.cohorts[row], values))
         for member in fields(Stress):
             getattr(state.latest, member.name)[row] = getattr(stress, member.name)[index]
-    last = rows if len(after) == len(rows) else rows[-1:]
     for member in fields(CohortState):
-        getattr(state.cohorts, member.name)[last] = getattr(after, member.name)
+        getattr(state.cohorts, member.name)[rows] = getattr(after, member.name)
 
 
 def stress_values(stress: Stress, index: int) -> dict[str, Any]:

@@ -153,7 +153,8 @@ def run(
     state : ChainState
         Before the block; not changed.
     block : RawBlock
-        Admitted readings in order (`ingest.chain.admission`).
+        Admitted readings in the order of arrival (`ingest.chain.admission`): so what comes out is the same however the
+        stream is cut into blocks.
 
     Returns
     -------
@@ -170,9 +171,11 @@ def run(
         tests=trust.packed(tested),
         ring_changed=tested.ring_changed,
     )
+    # What is remembered of the times changes with every reading of a tank, judged or not.
+    touched = tuple(np.unique(roster.tank[block.sensor[judged.rows]]).tolist())
     live = judged.rows[judged.is_judged]
     if not live.size:
-        return found, ChainOutput(replace(state, quality=memory, times=times))
+        return found, ChainOutput(replace(state, quality=memory, times=times), tanks=touched)
     watcher = tanks.watcher_of[block.sensor[live]]
     tank = tanks.places.tank[watcher]
     judged_at_us = judged.judged_at_us[judged.is_judged]
@@ -202,7 +205,7 @@ def run(
     )
     creatures, moved, felt = step(animals, state.animals, osmolality=osmolality_rows, temperature=temperature_rows)
     after = ChainState(memory, times, salinity, wet, temperature, osmolality, bank, creatures)
-    output = _output(state, after, outcomes, tuple(np.unique(tank).tolist()))
+    output = _output(state, after, outcomes, touched)
     return found, replace(output, moved=moved, felt=tuple(felt))
 
 

@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from analysis import flags as flag_room
-from analysis.flags import Quality
+from analysis.flags import Flag, Quality
 from analysis.sensor.quality.evaluation import evaluate
 from analysis.sensor.quality.limits import SensorLimits, Surroundings, default_limits
+from analysis.sensor.quality.result import joined
 from analysis.sensor.quality.thresholds import Thresholds
 from analysis.sensor.quality.words import TESTS, QualityTest, rolled_up
 from ingest.chain.roster import NO_TANK
@@ -38,16 +40,42 @@ def thresholds(site: Site, roster: Roster) -> Thresholds:
 def judged(
     limits: Thresholds, state: QualityState, block: RawBlock, water: Water
 ) -> tuple[QualityState, QualityResult]:
-    """Run the quality tests on a block."""
+    """Run the quality tests on a block in the order of arrival; late readings come after all others, being older."""
+    late = (block.flags & np.uint32(Flag.LATE)) != 0
+    if not late.any():
+        return _evaluated(limits, state, block, water, slice(None))
+    behind = np.flatnonzero(late)
+    order = np.concatenate([np.flatnonzero(~late), behind[np.argsort(block.measured_at_us[behind], kind="stable")]])
+    count = len(block) - behind.size
+    state, on_time = _evaluated(limits, state, block, water, order[:count])
+    state, others = _evaluated(limits, state, block, water, order[count:])
+    return state, _in_order(joined([on_time, others]), np.argsort(order))
+
+
+def _evaluated(
+    limits: Thresholds, state: QualityState, block: RawBlock, water: Water, rows: slice | IntArray
+) -> tuple[QualityState, QualityResult]:
     return evaluate(
         state,
         limits,
-        sensor=block.sensor,
-        measured_at_us=block.measured_at_us,
-        conductivity=water.conductivity_mS_cm,
-        temperature=water.temperature_degC,
-        salinity=water.salinity,
-        flags=water.flags,
+        sensor=block.sensor[rows],
+        measured_at_us=block.measured_at_us[rows],
+        conductivity=water.conductivity_mS_cm[rows],
+        temperature=water.temperature_degC[rows],
+        salinity=water.salinity[rows],
+        flags=water.flags[rows],
+    )
+
+
+def _in_order(result: QualityResult, order: IntArray) -> QualityResult:
+    return replace(
+        result,
+        sensor=result.sensor[order],
+        measured_at_us=result.measured_at_us[order],
+        by_test=result.by_test[:, :, order],
+        by_variable=result.by_variable[:, order],
+        quality=result.quality[order],
+        flags=result.flags[order],
     )
 
 

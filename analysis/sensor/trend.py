@@ -60,14 +60,15 @@ class Trend:
 
 
 def block_medians(values: FloatArray, *, time_us: IntArray, block_us: int = BLOCK_US) -> tuple[FloatArray, FloatArray]:
-    """Return the median of each block of time that holds values, and the blocks' middles [d]."""
+    """Return the median of each block of time that holds values, and the blocks' middles [d]; rows in order of time."""
     keep = np.isfinite(values)
     if not keep.any():
         return np.zeros(0), np.zeros(0)
     block = time_us[keep] // block_us
     starts = np.flatnonzero(np.concatenate(([True], block[1:] != block[:-1])))
-    parts = np.split(values[keep], starts[1:])
-    medians = np.array([np.median(part) for part in parts])
+    counts = np.diff(starts, append=block.shape[0])
+    ordered = values[keep][np.lexsort((values[keep], block))]
+    medians = 0.5 * (ordered[starts + (counts - 1) // 2] + ordered[starts + counts // 2])
     days = (block[starts].astype(np.float64) + 0.5) * (block_us / DAY_US)
     return medians, np.asarray(days)
 

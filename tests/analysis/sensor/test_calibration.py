@@ -7,7 +7,7 @@ import json
 import gsw
 import numpy as np
 import pytest
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from analysis.errors import InvalidInputError
@@ -92,6 +92,7 @@ def test_one_standard_gives_the_factor_alone():
     assert point.error_percent == pytest.approx(-100 * 0.38 / 12.88)
 
 
+@settings(max_examples=20)
 @given(factor=st.floats(0.7, 1.4), offset=st.floats(-0.05, 0.05))
 def test_factor_and_offset_come_back(factor, offset):
     standards = [bottled_standard(1.413), bottled_standard(12.88), standard_seawater(1.0)]

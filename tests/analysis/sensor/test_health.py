@@ -9,7 +9,7 @@ from analysis.errors import InvalidInputError
 from analysis.sensor.compensation_check import CompensationEvidence, CompensationVerdict
 from analysis.sensor.health import Belief, BenchSample, Finding, Period, SampleKind, aligned, assess
 from analysis.sensor.quality.words import TESTS, QualityTest, Variable
-from analysis.sensor.trend import steps_of_the_water, trend, without_changes
+from analysis.sensor.trend import block_medians, steps_of_the_water, trend, without_changes
 
 HOUR_US = 3_600_000_000
 DAY_US = 24 * HOUR_US
@@ -287,6 +287,15 @@ class TestTrend:
         steps = steps_of_the_water(level, least_step=0.01)
         assert np.flatnonzero(steps).tolist() == [19]
         assert np.ptp(without_changes(level, steps)) < 0.003
+
+    def test_medians_of_blocks(self):
+        times = np.array([0, 10, 20, 130, 140, 900]) * 60_000_000
+        values = np.array([3.0, 1.0, 2.0, 5.0, np.nan, 7.0])
+        medians, day = block_medians(values, time_us=times, block_us=HOUR_US)
+        assert medians.tolist() == [2.0, 5.0, 7.0]
+        np.testing.assert_allclose(day * 24, [0.5, 2.5, 15.5])
+        even, _ = block_medians(np.array([4.0, 1.0]), time_us=times[:2], block_us=HOUR_US)
+        assert even.tolist() == [2.5]
 
     def test_nothing_in_nothing_out(self):
         empty = np.zeros(0)

@@ -55,7 +55,7 @@ def assert_same(first, second) -> None:
         np.testing.assert_array_equal(getattr(state_a, name), getattr(state_b, name), err_msg=name)
 
 
-@settings(max_examples=12, deadline=None, derandomize=True)
+@settings(max_examples=10, deadline=None, derandomize=True)
 @given(seed=st.integers(0, 40), cuts=st.lists(st.integers(0, 450), max_size=30))
 def test_cutting_a_stream_changes_nothing(seed, cuts):
     stream = eventful(seed)
@@ -63,7 +63,7 @@ def test_cutting_a_stream_changes_nothing(seed, cuts):
     assert_same(run(stream, []), run(stream, cuts))
 
 
-@pytest.mark.parametrize("seed", range(3))
+@pytest.mark.parametrize("seed", range(2))
 def test_row_by_row_equals_at_once(seed):
     stream = eventful(seed)
     assert_same(run(stream, []), run(stream, range(len(stream))))

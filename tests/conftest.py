@@ -8,7 +8,7 @@ from pathlib import Path
 import pytest
 from hypothesis import HealthCheck, settings
 
-pytest_plugins = ["tests.harness.broker"]
+pytest_plugins = ["tests.harness.broker", "tests.harness.influx"]
 
 # The same examples on every machine: a failure is the code's, never the dice's.
 settings.register_profile(

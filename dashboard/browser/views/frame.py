@@ -19,7 +19,7 @@ def framed(snapshot: Snapshot, visit: Visit, *, title: str, place: str, body: st
     return (
         masthead(snapshot, visit, title=title, place=place)
         + states(snapshot, visit)
-        + f'<main class="live" id="main">{body}</main>'
+        + f'<div class="live">{body}</div>'
         + foot(visit)
     )
 

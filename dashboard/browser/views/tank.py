@@ -119,6 +119,10 @@ def _from_to(stretch: Stretch, snapshot: Snapshot, visit: Visit) -> str:
     return visit.language.text("from_to", start=named(stretch.from_s), end=end)
 
 
+def _panel(key: str, title: str, inside: str) -> str:
+    return f'<section class="panel" data-k="{key}"><h2 class="sub">{title}</h2>{inside}</section>'
+
+
 def _feel(tank: TankSight, visit: Visit) -> str:
     balance = tank.balance
     water = "" if balance.water is None else numbers.number(balance.water, 0, language=visit.language)
@@ -140,7 +144,7 @@ def _feel(tank: TankSight, visit: Visit) -> str:
         if key
         else ""
     )
-    return f'<section class="panel" data-k="feel"><h3>{visit.text("feel")}</h3>{drawn}<p>{escape(label)}</p>{note}{figures}</section>'
+    return _panel("feel", visit.text("feel"), f"{drawn}<p>{escape(label)}</p>{note}{figures}")
 
 
 def _figures(tank: TankSight, visit: Visit) -> list[str]:
@@ -168,15 +172,14 @@ def _why(tank: TankSight, visit: Visit) -> str:
         if math.isfinite(strain)
     )
     word = stress_band(felt.stress, language=visit.language)
-    return (
-        f'<section class="panel" data-k="why"><h3>{visit.text("why", stress=stress, word=word)}</h3><table><tbody>{rows}</tbody></table>'
-        f'<p class="source">{visit.text("score_caution")}</p></section>'
-    )
+    caution = f'<p class="source">{visit.text("score_caution")}</p>'
+    title = visit.text("why", stress=stress, word=word)
+    return _panel("why", title, f"<table><tbody>{rows}</tbody></table>{caution}")
 
 
 def _believe(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
     if not tank.sensors:
-        return f'<section class="panel" data-k="believe"><h3>{visit.text("believe")}</h3><p>{visit.text("no_probe")}</p></section>'
+        return _panel("believe", visit.text("believe"), f"<p>{visit.text('no_probe')}</p>")
     rows = ""
     for sensor in tank.sensors:
         word, reason = trust_words(sensor, snapshot, visit)
@@ -193,4 +196,4 @@ def _believe(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
             f'<tr><th scope="row">{escape(sensor.name)}{chosen}</th><td>{escape(word)}<br><span class="quiet">{escape(reason)}</span></td>'
             f'<td class="n">{escape(value)}<br>{heard}</td></tr>'
         )
-    return f'<section class="panel" data-k="believe"><h3>{visit.text("believe")}</h3><table><tbody>{rows}</tbody></table></section>'
+    return _panel("believe", visit.text("believe"), f"<table><tbody>{rows}</tbody></table>")

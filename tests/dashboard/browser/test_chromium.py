@@ -81,7 +81,7 @@ def page(live: Live) -> Iterator[Page]:
 
 def open_page(page: Page, live: Live, query: str = "") -> None:
     page.goto(f"{live.url}/{query}")
-    page.wait_for_selector(".sheet main")
+    page.wait_for_selector(".sheet .live")
 
 
 def card(page: Page, tank: str) -> str:
@@ -226,7 +226,7 @@ def test_a_lost_connection_is_obvious(live: Live, tmp_path: Path):
     page.set_default_timeout(60_000)
     with running_board(scene.site_file, log=tmp_path / "board.log") as url:
         page.goto(url)
-        page.wait_for_selector(".sheet main")
+        page.wait_for_selector(".sheet .live")
     page.wait_for_selector('.sheet.lost .lost-line:visible:has-text("connection to the board is lost")')
     page.close()
     scene.stop_worker()
@@ -295,3 +295,23 @@ def test_health_tells_whether_somebody_watches(live: Live):
 def test_programs_are_not_let_in_by_the_agent_interface(live: Live):
     status, body = answer(live.url, "/_stcore/agent/interact")
     assert status >= 400, body
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("scheme", ["light", "dark"])
+def test_axe_finds_nothing_serious(live: Live, scheme: str):
+    axe = pytest.importorskip("axe_playwright_python.sync_playwright", reason="needs the package axe-playwright-python")
+    context = live.browser.new_context(color_scheme=scheme, reduced_motion="reduce")
+    page = context.new_page()
+    page.set_default_timeout(WAIT_MS)
+    found = []
+    for room in (*ROOMS, "tanks&form=tiles"):
+        open_page(page, live, f"?page={room}&id=l3")
+        found += [
+            (room, violation["id"], node["html"][:120])
+            for violation in axe.Axe().run(page).response["violations"]
+            if violation["impact"] in ("serious", "critical")
+            for node in violation["nodes"]
+        ]
+    context.close()
+    assert found == []

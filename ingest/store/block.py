@@ -114,6 +114,7 @@ class BlockCommit:
     readings: ReadingRows | None = None
     latest: IntArray | None = None
     sensor_states: list[bytes | None] = field(default_factory=list)
+    newest_at: list[int] = field(default_factory=list)
     rings: list[tuple[int, bytes]] = field(default_factory=list)
     channels: list[ChannelRow] = field(default_factory=list)
     conflicts: list[Conflict] = field(default_factory=list)
@@ -139,7 +140,7 @@ def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: i
         readings.insert(connection, block.readings)
         rollups.add_behind_mark(connection, block.readings.measured_at, block.readings.sensor, rolled_until)
         if block.latest is not None and len(block.latest):
-            readings.upsert_latest(connection, block.readings, block.latest, block.sensor_states)
+            readings.upsert_latest(connection, block.readings, block.latest, block.sensor_states, block.newest_at)
     connection.executemany("INSERT OR IGNORE INTO channel_reading VALUES (?, ?, ?, ?, ?, ?)", block.channels)
     connection.executemany("INSERT OR REPLACE INTO sensor_ring VALUES (?, ?)", block.rings)
     for conflict in block.conflicts:

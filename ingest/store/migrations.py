@@ -78,7 +78,8 @@ STORE: tuple[Migration, ...] = (
             "CREATE TABLE latest (sensor INTEGER PRIMARY KEY REFERENCES sensor(id), measured_at INTEGER NOT NULL,"
             " received_at INTEGER NOT NULL, conductivity_mS_cm REAL, temperature_degC REAL, practical_salinity REAL,"
             " absolute_salinity_g_kg REAL, density_kg_m3 REAL, osmolality_mOsm_kg REAL, flags INTEGER NOT NULL,"
-            " quality INTEGER NOT NULL, state BLOB)",
+            # newest_at: the newest measured time admitted, which a sensor whose clock is doubted may show less of.
+            " quality INTEGER NOT NULL, state BLOB, newest_at INTEGER NOT NULL)",
             "CREATE TABLE sensor_ring (sensor INTEGER PRIMARY KEY REFERENCES sensor(id), body BLOB NOT NULL)",
             "CREATE TABLE channel_reading (measured_at INTEGER NOT NULL, sensor INTEGER NOT NULL, channel TEXT NOT NULL,"
             " received_at INTEGER NOT NULL, value REAL, flags INTEGER NOT NULL,"

@@ -61,8 +61,9 @@ _LATEST_COLUMNS = (
     "quality",
 )
 _UPSERT_LATEST = (
-    f"INSERT INTO latest ({', '.join(_LATEST_COLUMNS)}, state) VALUES ({', '.join('?' * (len(_LATEST_COLUMNS) + 1))}) "
-    f"ON CONFLICT (sensor) DO UPDATE SET {', '.join(f'{name} = excluded.{name}' for name in (*_LATEST_COLUMNS[1:], 'state'))}"
+    f"INSERT INTO latest ({', '.join(_LATEST_COLUMNS)}, state, newest_at) VALUES ({', '.join('?' * (len(_LATEST_COLUMNS) + 2))}) "
+    f"ON CONFLICT (sensor) DO UPDATE SET {', '.join(f'{name} = excluded.{name}' for name in (*_LATEST_COLUMNS[1:], 'state'))},"
+    " newest_at = max(newest_at, excluded.newest_at)"
 )
 
 
@@ -72,11 +73,21 @@ def insert(connection: sqlite3.Connection, rows: ReadingRows) -> None:
 
 
 def upsert_latest(
-    connection: sqlite3.Connection, rows: ReadingRows, chosen: IntArray, states: Sequence[bytes | None]
+    connection: sqlite3.Connection,
+    rows: ReadingRows,
+    chosen: IntArray,
+    states: Sequence[bytes | None],
+    newest_at: Sequence[int],
 ) -> None:
-    """Make the rows at the indices *chosen* the newest of their sensors, each with the state of its sensor."""
+    """Make the rows at the indices *chosen* the newest of their sensors, each with the state of its sensor.
+
+    *newest_at* is the newest measured time that was admitted of each (empty: that of the row). It never falls, also where a clock that steps
+    back makes an older reading the one to be shown: by it, readings that are stored already are known.
+    """
     columns = [getattr(rows, name)[chosen].tolist() for name in _LATEST_COLUMNS]
-    connection.executemany(_UPSERT_LATEST, zip(*columns, states, strict=True))
+    connection.executemany(
+        _UPSERT_LATEST, zip(*columns, states, newest_at or rows.measured_at[chosen].tolist(), strict=True)
+    )
 
 
 def as_sent(connection: sqlite3.Connection, *, measured_at: int, sensor: int) -> tuple[float, float, float] | None:

@@ -51,10 +51,8 @@ def meta_text(connection: sqlite3.Connection, name: str) -> str:
 
 def newest_times(connection: sqlite3.Connection) -> dict[str, int]:
     """Return the newest processed measured time of each sensor, by its id. [us UTC]"""
-    rows = connection.execute(
-        "SELECT slug, measured_at FROM latest JOIN sensor ON sensor.id = latest.sensor"
-    ).fetchall()
-    return {row["slug"]: int(row["measured_at"]) for row in rows}
+    rows = connection.execute("SELECT slug, newest_at FROM latest JOIN sensor ON sensor.id = latest.sensor").fetchall()
+    return {row["slug"]: int(row["newest_at"]) for row in rows}
 
 
 def tank_bodies(connection: sqlite3.Connection) -> dict[str, dict[str, Any]]:

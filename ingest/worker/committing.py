@@ -61,7 +61,7 @@ def reading_rows(plant: Plant, block: RawBlock, said: Found) -> ReadingRows:
 
 
 def newest_rows(sensor: IntArray, flags: FlagArray) -> IntArray:
-    """Return the index of the newest reading of each sensor in a sorted block, late ones left out."""
+    """Return the index of the newest reading of each sensor in a block in the order of arrival, late ones left out."""
     live = np.flatnonzero((flags & np.uint32(Flag.LATE)) == 0)
     backwards = live[::-1]
     _, first = np.unique(sensor[backwards], return_index=True)

@@ -199,7 +199,9 @@ class Worker:
         if len(admission.block):
             commit.readings = reading_rows(plant, admission.block, found)
             commit.latest = newest_rows(admission.block.sensor, found.flags)
-            commit.sensor_states = sensor_states(admission.block.sensor[commit.latest], output.state)
+            shown = admission.block.sensor[commit.latest]
+            commit.sensor_states = sensor_states(shown, output.state)
+            commit.newest_at = [newest_us[sensor] for sensor in shown.tolist()]
             commit.rings = ring_rows(plant, found, output.state)
             commit.jobs = late_jobs(plant, admission.block, found.flags)
         commit.conflicts = conflict_rows(self.plant, raw, admission.contradictions)
@@ -217,7 +219,7 @@ class Worker:
         self.state = output.state
         self._rederiver.has_work |= bool(commit.jobs)
         if isinstance(self._clock, ReplayClock) and len(admission.block):
-            self._clock.follow(int(admission.block.measured_at_us[-1]))
+            self._clock.follow(int(admission.block.measured_at_us.max()))
         return True
 
     def _waiting_halves(self) -> dict[str, str | int]:

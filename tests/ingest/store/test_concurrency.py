@@ -4,6 +4,8 @@ import sqlite3
 import threading
 from contextlib import closing
 
+import pytest
+
 from ingest.store.block import BlockCommit
 from ingest.store.connection import open_writer, reader
 from ingest.store.errors import MissingStoreError
@@ -45,13 +47,11 @@ def test_a_checkpoint_gives_way_to_a_reader_and_works_without_one(tmp_path):
 
 def test_readers_cannot_write(tmp_path):
     store_with(tmp_path).close()
-    with reader(tmp_path / "store.db") as connection:
-        try:
-            connection.execute("INSERT INTO counter VALUES ('x', 1)")
-        except sqlite3.OperationalError as error:
-            assert "readonly" in str(error)
-        else:
-            raise AssertionError("a reader has written")
+    with (
+        reader(tmp_path / "store.db") as connection,
+        pytest.raises(sqlite3.OperationalError, match="readonly"),
+    ):
+        connection.execute("INSERT INTO counter VALUES ('x', 1)")
 
 
 def test_every_commit_is_on_disk_before_it_is_believed(tmp_path):

@@ -72,14 +72,19 @@ def test_a_contradiction_is_kept_aside_with_its_reason(store):
 
 def test_the_latest_row_of_a_sensor_is_the_one_that_was_chosen(store):
     block = rows([START_US, START_US + MINUTE_US, START_US], sensor=[1, 1, 2], salinity=[30.0, 31.0, 32.0])
-    store.commit(BlockCommit(readings=block, latest=np.array([1, 2]), sensor_states=[b"one", b"two"]))
+    store.commit(BlockCommit(readings=block, latest=np.array([1, 2]), sensor_states=[b"one", b"two"], newest_at=[1, 2]))
     store.commit(
         BlockCommit(
-            readings=rows([START_US + 2 * MINUTE_US], salinity=29.0), latest=np.array([0]), sensor_states=[b"three"]
+            readings=rows([START_US + 2 * MINUTE_US], salinity=29.0),
+            latest=np.array([0]),
+            sensor_states=[b"three"],
+            newest_at=[0],
         )
     )
     found = store.connection.execute("SELECT sensor, practical_salinity, state FROM latest ORDER BY sensor").fetchall()
     assert [tuple(row) for row in found] == [(1, 29.0, b"three"), (2, 32.0, b"two")]
+    # What is shown may go back with a clock; what has been admitted never does.
+    assert [row[0] for row in store.connection.execute("SELECT newest_at FROM latest ORDER BY sensor")] == [1, 2]
 
 
 def test_a_channel_row_is_stored_once(store):

@@ -264,6 +264,36 @@ ALARMS: Final[dict[str, tuple[str, tuple[str, ...], tuple[str, ...]]]] = {
     "unknown": ("needs a look", ("{code} in this tank.", "Something needs a look."), ("Go and look.",)),
 }
 
+# The message that calls a person. `trend_words`: if the sentence holds one of these, it tells the trend already.
+CALLS: Final = {
+    "title": "{priority}: {tank} {what}",
+    "and_more": " and {n} more",
+    "where": "{tank}: {what}",
+    "now": "Now {quantity} {value}.",
+    "falling": "Falling {rate} an hour.",
+    "rising": "Rising {rate} an hour.",
+    "no_trend": "No clear trend.",
+    "trend_words": ("alling", "ising"),
+    "normal_again": "It is back in its band by itself; look all the same.",
+    "animals": "Animals: {animals}.",
+    "animals_counted": "Animals: {animals}, {number}.",
+    "left": "Time left: {left}.",
+    "do": "First: {do}",
+    "also": "Also: {tanks}.",
+    "and_others": "And {n} more; see the board.",
+    "reasons": {
+        "nobody_answered": "Nobody has answered so far.",
+        "not_turning_back": "Somebody is on it, and it is not turning back.",
+        "worse": "It has got worse.",
+        "joined": "One more tank has joined.",
+    },
+    "answer_board": "{person}, if you are going: acknowledge on the board, so that nobody else is called.",
+    "answer_code": "{person}, if you are going: send this code to {topic} at {host}.",
+    "stamp": "{site}, {time}",
+    "test_title": "Test: {site}",
+    "test": "{person}, this is the daily test of the calls. Nothing is wrong. If it stays away, tell the others.",
+}
+
 ALARM_STATES: Final = {
     "normal": "normal",
     "unacknowledged": "nobody has it yet",

@@ -32,7 +32,7 @@ TOP_BOTTOM_MAX_AGE_MIN: Final = 60.0
 PAST_KEPT_MIN: Final = 1500.0
 
 
-class Standing(StrEnum):
+class Progress(StrEnum):
     """How a followed plan stands."""
 
     ON_PLAN = "on plan"
@@ -85,7 +85,7 @@ class Followed:
         Of the running plan.
     next_step : int
         Number of the step that is due next; one more than the last when all are done.
-    standing : Standing
+    progress : Progress
         Where it stands.
     why : str
         The reason, where it is not on plan.
@@ -106,7 +106,7 @@ class Followed:
     task: AcclimationTask
     steps: tuple[PlannedStep, ...]
     next_step: int
-    standing: Standing
+    progress: Progress
     why: str
     last: Seen | None
     seen: tuple[Seen, ...]
@@ -175,7 +175,7 @@ def started(plan: Plan, *, by: str, at: datetime, agreed: tuple[str, ...] = ()) 
         task=plan.task,
         steps=plan.steps,
         next_step=1,
-        standing=Standing.ON_PLAN,
+        progress=Progress.ON_PLAN,
         why="",
         last=None,
         seen=(),
@@ -247,18 +247,18 @@ def _thinned(seen: tuple[Seen, ...], new: Seen) -> tuple[Seen, ...]:
 
 
 def judged(state: Followed, *, at: datetime) -> Followed:
-    """Return the state with its standing judged at *at*: by the water, by the clock, by top and bottom."""
-    if state.standing in {Standing.PAUSED, Standing.FINISHED}:
+    """Return the state with its progress judged at *at*: by the water, by the clock, by top and bottom."""
+    if state.progress in {Progress.PAUSED, Progress.FINISHED}:
         return state
     why = _halting_reason(state, at)
     if why:
-        if state.standing is Standing.HALTED:
+        if state.progress is Progress.HALTED:
             return replace(state, why=why)
-        return _noted(replace(state, standing=Standing.HALTED, why=why), at, "halted", "monitor", why)
+        return _noted(replace(state, progress=Progress.HALTED, why=why), at, "halted", "monitor", why)
     if state.due is None and _has_arrived(state):
-        return _noted(replace(state, standing=Standing.FINISHED, why=""), at, "finished", "monitor")
-    standing, why = _standing(state, at)
-    return replace(state, standing=standing, why=why)
+        return _noted(replace(state, progress=Progress.FINISHED, why=""), at, "finished", "monitor")
+    progress, why = _progress(state, at)
+    return replace(state, progress=progress, why=why)
 
 
 def _halting_reason(state: Followed, at: datetime) -> str:
@@ -280,20 +280,20 @@ def _has_arrived(state: Followed) -> bool:
     return abs(state.last.water.salinity - target) <= tolerance + LEAST_BAND
 
 
-def _standing(state: Followed, at: datetime) -> tuple[Standing, str]:
+def _progress(state: Followed, at: datetime) -> tuple[Progress, str]:
     due = state.due
     late = 0.0 if due is None else (at - due.start) / timedelta(minutes=1) - due.duration_min
     if late > state.task.allowances.late_min:
-        return Standing.BEHIND, f"step {state.next_step} is {late:.0f} min late: plan anew before doing it"
+        return Progress.BEHIND, f"step {state.next_step} is {late:.0f} min late: plan anew before doing it"
     if state.last is None:
-        return Standing.ON_PLAN, ""
+        return Progress.ON_PLAN, ""
     band, salinity = band_at(state, at=at), state.last.water.salinity
     if band.low <= salinity <= band.high:
-        return Standing.ON_PLAN, ""
+        return Progress.ON_PLAN, ""
     falls = state.task.target.salinity < state.task.start.salinity
     has_gone_further = salinity < band.low if falls else salinity > band.high
     words = f"salinity {salinity:.1f}, the plan expects {band.low:.1f} to {band.high:.1f}"
-    return (Standing.AHEAD if has_gone_further else Standing.BEHIND), words
+    return (Progress.AHEAD if has_gone_further else Progress.BEHIND), words
 
 
 def step_done(state: Followed, *, by: str, at: datetime, words: str = "") -> Followed:
@@ -307,8 +307,8 @@ def step_done(state: Followed, *, by: str, at: datetime, words: str = "") -> Fol
     due = state.due
     if due is None or not by.strip():
         raise InvalidInputError("step done", found=(state.next_step, by), allowed="a step that is due, and a name")
-    if state.standing in {Standing.HALTED, Standing.PAUSED, Standing.FINISHED}:
-        raise InvalidInputError("step done", found=f"the plan is {state.standing.value}", allowed="resume or plan anew")
+    if state.progress in {Progress.HALTED, Progress.PAUSED, Progress.FINISHED}:
+        raise InvalidInputError("step done", found=f"the plan is {state.progress.value}", allowed="resume or plan anew")
     late = (at - due.start) / timedelta(minutes=1) - due.duration_min
     litres = ", ".join(f"{amount:g} L {name}" for name, amount in due.add.items())
     salts = ", ".join(f"{amount:g} kg {name}" for name, amount in due.salt.items())
@@ -323,7 +323,7 @@ def paused(state: Followed, *, by: str, at: datetime, reason: str) -> Followed:
     """Return the state of a plan that a named person has put on hold; nothing is due until it is resumed."""
     if not by.strip() or not reason.strip():
         raise InvalidInputError("pause", found=(by, reason), allowed="a name and a reason")
-    return _noted(replace(state, standing=Standing.PAUSED, why=reason), at, "paused", by, reason)
+    return _noted(replace(state, progress=Progress.PAUSED, why=reason), at, "paused", by, reason)
 
 
 def resumed(state: Followed, plan: Plan, *, by: str, at: datetime) -> Followed:
@@ -333,7 +333,7 @@ def resumed(state: Followed, plan: Plan, *, by: str, at: datetime) -> Followed:
     if not by.strip():
         raise InvalidInputError("plan to go on with", found=by, allowed="the name of the person")
     state = replace(
-        state, task=plan.task, steps=plan.steps, next_step=1, standing=Standing.ON_PLAN, why="", delay_min=0.0
+        state, task=plan.task, steps=plan.steps, next_step=1, progress=Progress.ON_PLAN, why="", delay_min=0.0
     )
     return judged(_noted(state, at, "planned anew", by, f"{len(plan.steps)} steps, {plan.total_hours:.1f} h"), at=at)
 

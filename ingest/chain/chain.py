@@ -194,7 +194,9 @@ def run(
     saltiness, warmth = saying.salinity[live], saying.temperature_degC[live]
     quality = trust.quality_for_alarms(saying, tested)[live]
     in_water = wet_quality(saltiness, quality=quality, tank=tank, dry_below=tanks.dry_below)
-    has_warmth = np.where(np.isnan(warmth), np.uint8(Quality.MISSING), np.uint8(Quality.PASS))
+    # A probe out of the water measures the air.
+    has_warmth = np.where(saltiness < tanks.dry_below[tank], np.uint8(Quality.FAIL), np.uint8(Quality.PASS))
+    has_warmth[np.isnan(warmth)] = Quality.MISSING
     salinity, salinity_rows = rows_of(state.salinity, saltiness, quality)
     wet, wet_rows = rows_of(state.wet, saltiness, in_water)
     temperature, temperature_rows = rows_of(state.temperature, warmth, has_warmth)

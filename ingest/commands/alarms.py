@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from typing import TYPE_CHECKING, Any
 
 from analysis.alarm.events import (
@@ -24,20 +25,31 @@ if TYPE_CHECKING:
     from ingest.store.inbox import Command
 
 
-def _occurrence(command: Command) -> int | None:
-    return int(command.expected) if command.expected and command.expected.isdigit() else None
+LATEST_US = 2**52
+"""No time of a command is later: the year 2112. What a person may enter is bounded by each alarm's rules anyway."""
+
+
+def _moment(value: object) -> int | None:
+    """Return a time of a command's details, None where it is none."""
+    if not isinstance(value, int) or isinstance(value, bool) or not 0 <= value <= LATEST_US:
+        return None
+    return value
 
 
 def _event(kind: str, command: Command) -> Event | None:
     """Return the state machine's event for a command, or None if its details are unusable."""
     who, why = command.actor, str(command.body.get("why", ""))
     if kind == "acknowledge":
-        return Acknowledge(who=who, why=why, occurrence=_occurrence(command))
+        if not command.expected:
+            return Acknowledge(who=who, why=why)
+        is_number = re.fullmatch("[0-9]{1,15}", command.expected) is not None
+        return Acknowledge(who=who, why=why, occurrence=int(command.expected)) if is_number else None
     if kind == "shelve":
-        until_us = command.body.get("until_us")
-        return Shelve(who=who, why=why, until_us=until_us) if isinstance(until_us, int) else None
+        until_us = _moment(command.body.get("until_us"))
+        return None if until_us is None else Shelve(who=who, why=why, until_us=until_us)
     if kind == "remove_from_service":
-        return RemoveFromService(who=who, why=why, expected_return_us=int(command.body.get("expected_return_us", 0)))
+        return_us = _moment(command.body.get("expected_return_us", 0))
+        return None if return_us is None else RemoveFromService(who=who, why=why, expected_return_us=return_us)
     plain: dict[str, Any] = {
         "unacknowledge": Unacknowledge,
         "silence": Silence,

@@ -13,13 +13,14 @@ import numpy as np
 from ingest.chain.roster import declaration
 from ingest.clock import to_microseconds
 from ingest.site.differences import differences
-from ingest.site.loading import load_text
+from ingest.site.loading import load, load_text
 from ingest.site.problems import SiteFileError
 from ingest.store import calibrations, cohorts, registry
 
 if TYPE_CHECKING:
     import sqlite3
     from datetime import date
+    from pathlib import Path
 
     from analysis.arrays import IntArray
     from ingest.site.models import Site
@@ -34,6 +35,22 @@ class Numbers:
     sensor: IntArray
     declaration: IntArray
     tank: IntArray
+
+
+def read_site(path: Path) -> tuple[Site, str]:
+    """Return the site that the file at *path* describes, and its text.
+
+    Raises
+    ------
+    SiteFileError
+        With every problem of the file.
+    """
+    try:
+        text = path.read_text(encoding="utf-8-sig")
+    except (OSError, UnicodeDecodeError):
+        load(path)  # It says what is wrong, and where.
+        return read_site(path)
+    return load_text(text, path.name), text
 
 
 def register(connection: sqlite3.Connection, site: Site, *, text: str, actor: str, now_us: int) -> Numbers:

@@ -18,9 +18,10 @@ from ingest.chain.block import RawBlock
 from ingest.chain.chain import fresh_state, restored_state, run, tick
 from ingest.clock import MICROSECONDS_PER_SECOND, ReplayClock, SystemClock
 from ingest.commands import desk
+from ingest.commands.ruling import Ruling
 from ingest.mqtt import Access, Intake
 from ingest.secrets import read_secret
-from ingest.site.loading import load_text
+from ingest.site.differences import differences
 from ingest.store import calibrations, registry, restoring
 from ingest.store.block import BlockCommit
 from ingest.store.inbox import Inbox, InboxTaker
@@ -45,7 +46,7 @@ from ingest.worker.decoding import decode
 from ingest.worker.outgoing import Outgoing, outgoing
 from ingest.worker.plant import Plant, plant
 from ingest.worker.rederiving import Rederiver, late_jobs
-from ingest.worker.registering import code_version, register
+from ingest.worker.registering import code_version, read_site, register
 from ingest.worker.schedule import Schedule
 from ingest.worker.stopwatch import Stopwatch
 
@@ -110,8 +111,7 @@ class Worker:
         self._site_file = site_file
         self._clock = clock
         self._is_replay = isinstance(clock, ReplayClock)
-        text = site_file.read_text(encoding="utf-8")
-        site = load_text(text, site_file.name)
+        site, text = read_site(site_file)
         self.store = Store(site.store.folder(site_file))
         self._inbox = InboxTaker(Inbox(self.store.folder))
         self._inbox_seq = restoring.meta_number(self.store.connection, "inbox_seq")
@@ -137,6 +137,7 @@ class Worker:
         self.counts: Counter[str] = Counter()
         self.stopwatch = Stopwatch(STEPS)
         self.last_problem = ""
+        self.site_problem = ""
 
     def run(self, stop: threading.Event) -> None:
         """Work until *stop* is set; whatever goes wrong beyond repair is raised: a worker dies loudly."""
@@ -291,6 +292,7 @@ class Worker:
         return sending | {
             "broker_connected": int(self.intake.is_connected),
             "broker_problem": self.intake.last_problem,
+            "site_problem": self.site_problem,
             "dropped_by_broker": self.intake.dropped_by_broker,
             "waiting_messages": self.intake.waiting,
         }
@@ -328,7 +330,12 @@ class Worker:
             if restoring.has_outcome(self.store.connection, command.id):
                 self._inbox_seq = seq
                 continue
-            ruling = desk.rule(command, context, roles=self.plant.roles)
+            try:
+                ruling = desk.rule(command, context, roles=self.plant.roles)
+            except Exception:
+                # Whatever somebody has put into a command, the worker must not die of it, again and again at each start.
+                log.exception("command failed", kind=command.kind, id=command.id)
+                ruling = Ruling.refused("unusable_details")
             commit = BlockCommit(
                 occurrences=[*ruling.occurrences],
                 meta={"inbox_seq": seq},
@@ -370,16 +377,16 @@ class Worker:
     def reload(self) -> bool:
         """Read the site file anew; all or nothing. Return whether the new one is at work."""
         try:
-            text = self._site_file.read_text(encoding="utf-8")
-            site = load_text(text, self._site_file.name)
-        except (OSError, EuryhaleError) as error:
-            self.last_problem = f"the new site file is refused, the old one stays: {error}"
-            log.error("site file refused", reason=str(error))
-            return False
-        if site.store.folder(self._site_file) != self.store.folder:
-            self.last_problem = "store.path has changed: that needs a restart; the old site file stays"
-            log.error("site file refused", reason=self.last_problem)
-            return False
+            site, text = read_site(self._site_file)
+        except EuryhaleError as error:
+            return self._refuse_site(str(error))
+        fixed = [
+            change.what
+            for change in differences(self.plant.site, site)
+            if change.needs_restart or change.what.startswith("broker.")
+        ]
+        if fixed:
+            return self._refuse_site(f"{', '.join(fixed)}: a change of that needs a restart")
         before = (self.plant, self.state, self._newest_us)
         try:
             with self.store.transaction() as connection:
@@ -394,15 +401,18 @@ class Worker:
                 self._restore()
         except (sqlite3.Error, EuryhaleError) as error:
             self.plant, self.state, self._newest_us = before
-            self.last_problem = f"the new site file is refused, the old one stays: {error}"
-            log.error("site file refused", reason=str(error))
-            return False
+            return self._refuse_site(str(error))
         self.intake.resubscribe(self.plant.topics)
         if self._outgoing is not None:
             self._outgoing.take(self.plant)
         self.last_problem = ""
         log.info("site file accepted", revision=self.plant.numbers.revision)
         return True
+
+    def _refuse_site(self, reason: str) -> bool:
+        self.site_problem = f"the new site file is refused, the old one stays: {reason}"
+        log.error("site file refused", reason=reason)
+        return False
 
     def _plant(self, site: Site, text: str, numbers: Numbers) -> Plant:
         connection = self.store.connection

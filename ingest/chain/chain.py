@@ -33,6 +33,7 @@ if TYPE_CHECKING:
     from analysis.alarm.state import AlarmState
     from analysis.alarm.transition import Transition
     from analysis.arrays import BoolArray, FlagArray, FloatArray, IntArray, QualityArray
+    from analysis.sensor.quality.result import Amendments
     from analysis.sensor.quality.thresholds import Thresholds
     from ingest.chain.animals import AnimalRoster, AnimalState, StressStep
     from ingest.chain.block import RawBlock
@@ -73,6 +74,8 @@ class Found:
         The flag of each test, packed (`ingest.chain.trust.unpacked`).
     ring_changed : ndarray of int64
         Sensors whose longer memory of the quality tests changed.
+    amendments : Amendments
+        What this block revealed of earlier readings.
     """
 
     water: Water
@@ -80,6 +83,7 @@ class Found:
     quality: QualityArray
     tests: IntArray
     ring_changed: IntArray
+    amendments: Amendments
 
 
 class Happened(NamedTuple):
@@ -170,6 +174,7 @@ def run(
         quality=tested.quality,
         tests=trust.packed(tested),
         ring_changed=tested.ring_changed,
+        amendments=tested.amendments,
     )
     # What is remembered of the times changes with every reading of a tank, judged or not.
     touched = tuple(np.unique(roster.tank[block.sensor[judged.rows]]).tolist())

@@ -7,13 +7,25 @@ from typing import TYPE_CHECKING, Any, NamedTuple
 
 import msgspec
 
-from ingest.store import alarms, calibrations, corrected, forwarding, ledger, readings, refused, registry, rollups
+from ingest.store import (
+    alarms,
+    amendments,
+    calibrations,
+    corrected,
+    forwarding,
+    ledger,
+    readings,
+    refused,
+    registry,
+    rollups,
+)
 
 if TYPE_CHECKING:
     import sqlite3
 
     from analysis.arrays import IntArray
     from ingest.store.alarms import AlarmRow
+    from ingest.store.amendments import AmendmentRow
     from ingest.store.calibrations import PeriodRow, SampleRow, ServiceRow
     from ingest.store.corrected import JobRow
     from ingest.store.ledger import Event
@@ -116,6 +128,7 @@ class BlockCommit:
     sensor_states: list[bytes | None] = field(default_factory=list)
     newest_at: list[int] = field(default_factory=list)
     rings: list[tuple[int, bytes]] = field(default_factory=list)
+    amendments: list[AmendmentRow] = field(default_factory=list)
     channels: list[ChannelRow] = field(default_factory=list)
     conflicts: list[Conflict] = field(default_factory=list)
     refusals: list[Refusal] = field(default_factory=list)
@@ -160,6 +173,7 @@ def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: i
             f"INSERT OR REPLACE INTO {table} VALUES (?, ?, ?)",
             [(state.tank, state.measured_at, msgspec.json.encode(state.body).decode()) for state in states],
         )
+    amendments.insert(connection, block.amendments)
     forwarding.put(connection, block.forward, queued_at=block.queued_at)
     for row in block.pending_alarms:
         alarms.upsert(connection, row, event_id=None)

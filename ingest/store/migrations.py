@@ -150,6 +150,9 @@ STORE: tuple[Migration, ...] = (
             " WITHOUT ROWID",
             "CREATE TABLE refused (id INTEGER PRIMARY KEY, topic TEXT NOT NULL, received_at INTEGER NOT NULL, payload BLOB NOT NULL,"
             " code TEXT NOT NULL, place TEXT NOT NULL, found TEXT NOT NULL, allowed TEXT NOT NULL, is_partly_kept INTEGER NOT NULL)",
+            "CREATE TABLE amendment (sensor INTEGER NOT NULL, from_us INTEGER NOT NULL, to_us INTEGER NOT NULL,"
+            " test INTEGER NOT NULL, variable INTEGER NOT NULL, quality INTEGER NOT NULL,"
+            " PRIMARY KEY (sensor, from_us, to_us, test, variable)) WITHOUT ROWID",
             "CREATE TABLE forward_queue (id INTEGER PRIMARY KEY AUTOINCREMENT, queued_at INTEGER NOT NULL, lines TEXT NOT NULL)",
             "CREATE TABLE counter (name TEXT PRIMARY KEY, value INTEGER NOT NULL) WITHOUT ROWID",
         ),

@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, Literal, TypeAlias
 
 import msgspec
 import numpy as np
 
 from analysis.animal.stress import BAND_WORDS, DRIVER_WORDS, Band, Driver
-from ingest.store import alarms, ledger, registry, restoring, rollups
+from ingest.store import alarms, amendments, calibrations, corrected, ledger, registry, restoring, rollups
 from ingest.store.connection import reader
 from ingest.store.lock import is_held
 from ingest.store.store import store_path
@@ -19,10 +19,13 @@ if TYPE_CHECKING:
 
     from analysis.arrays import FloatArray, IntArray
     from ingest.store.alarms import AlarmRow
+    from ingest.store.calibrations import HealthRow, KeptService, PeriodOfRecord
+    from ingest.store.corrected import JobState
     from ingest.store.ledger import Event
 
 HOUR_US = 3_600_000_000
 DAY_US = 24 * HOUR_US
+RowSet: TypeAlias = Literal["best", "seen"]
 RAW_SPAN_US = 26 * HOUR_US
 Q15_SPAN_US = 62 * DAY_US
 H1_SPAN_US = 370 * DAY_US
@@ -54,6 +57,7 @@ class History:
 
     All arrays have one length; NaN where nothing is known. `resolution_us` is 0 for single readings, else the
     length of a bucket, whose time is its start. `salinity` is practical salinity, or g/kg in water that has none.
+    `is_best` says whether corrected rows stand in the place of those that were seen: buckets of the rollups are as seen.
     """
 
     resolution_us: int
@@ -66,6 +70,7 @@ class History:
     temperature_max: FloatArray
     osmolality_mOsm_kg: FloatArray
     quality: IntArray
+    is_best: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -187,14 +192,24 @@ class Queries:
             ).fetchall()
         return {row["slug"]: Latest(*row) for row in rows}
 
-    def history(self, sensor: str, *, from_us: int, to_us: int) -> History:
-        """Return one sensor over [from_us, to_us), from the table that fits the span: at most about 9,000 points."""
+    def history(self, sensor: str, *, from_us: int, to_us: int, set: RowSet = "best") -> History:  # noqa: A002
+        """Return one sensor over [from_us, to_us), from the table that fits the span: at most about 9,000 points.
+
+        Parameters
+        ----------
+        sensor : str
+        from_us, to_us : int
+            [us UTC]
+        set : {"best", "seen"}
+            Best: of each reading the newest corrected row, where there is one. Seen: what the operator saw, for audits.
+            Spans that are drawn from rollups show what was seen.
+        """
         span = to_us - from_us
         with reader(self._path) as connection:
             row = connection.execute("SELECT id FROM sensor WHERE slug = ?", (sensor,)).fetchone()
             number = -1 if row is None else int(row["id"])
             if span <= RAW_SPAN_US:
-                return _raw_history(connection, number, from_us, to_us)
+                return _raw_history(connection, number, from_us, to_us, is_best=set == "best")
             table = "q15" if span <= Q15_SPAN_US else "h1" if span <= H1_SPAN_US else "d1"
             return _rolled_history(connection, table, number, from_us, to_us)
 
@@ -310,6 +325,37 @@ class Queries:
             for row in rows
         ]
 
+    def sensor_health(self) -> dict[str, HealthRow]:
+        """Return for each sensor that has been assessed whether it can be believed, and why."""
+        with reader(self._path) as connection:
+            return calibrations.health(connection)
+
+    def services(self, sensor: str | None = None) -> list[KeptService]:
+        """Return calibrations and cleanings in the order of time, of one sensor or of all."""
+        with reader(self._path) as connection:
+            rows = calibrations.services(connection)
+        return [row for row in rows if sensor is None or row.sensor == sensor]
+
+    def record_periods(self, sensor: str) -> list[PeriodOfRecord]:
+        """Return what each service says of the record of *sensor* before it, with the rating, oldest first."""
+        with reader(self._path) as connection:
+            return calibrations.periods(connection, sensor)
+
+    def calibrations_due(self) -> dict[str, int | None]:
+        """Return when each sensor's next calibration is due: a task, not an alarm. None: it has never been calibrated. [us UTC]"""
+        with reader(self._path) as connection:
+            return calibrations.due(connection)
+
+    def bench_samples(self, *, since_us: int) -> list[dict[str, Any]]:
+        """Return readings taken by hand since *since_us*, oldest first: the entry, and what the sensor said at that moment."""
+        with reader(self._path) as connection:
+            return calibrations.samples(connection, since_us=since_us)
+
+    def rederivations(self, *, most: int = 100) -> list[JobState]:
+        """Return the newest jobs of deriving again, newest first, with how far each has come."""
+        with reader(self._path) as connection:
+            return corrected.job_states(connection, most=most)
+
     def refused(self, *, most: int = 200) -> list[Refused]:
         """Return the newest refused payloads, newest first."""
         with reader(self._path) as connection:
@@ -330,18 +376,24 @@ class Queries:
             return int(connection.execute("SELECT count(*) FROM reading").fetchone()[0])
 
 
-def _raw_history(connection: Any, sensor: int, from_us: int, to_us: int) -> History:
+def _source(is_best: bool) -> str:
+    return f"({corrected.BEST})" if is_best else "reading"
+
+
+def _raw_history(connection: Any, sensor: int, from_us: int, to_us: int, *, is_best: bool) -> History:
     rows = connection.execute(
         "SELECT measured_at, coalesce(practical_salinity, absolute_salinity_g_kg), temperature_degC, osmolality_mOsm_kg, quality"
-        " FROM reading WHERE measured_at >= ? AND measured_at < ? AND sensor = ? ORDER BY measured_at LIMIT ?",
+        f" FROM {_source(is_best)} WHERE measured_at >= ? AND measured_at < ? AND sensor = ? ORDER BY measured_at LIMIT ?",
         (from_us, to_us, sensor, MOST_POINTS + 1),
     ).fetchall()
     if len(rows) > MOST_POINTS:
-        return _thinned_history(connection, sensor, from_us, to_us)
+        return _thinned_history(connection, sensor, from_us, to_us, is_best=is_best)
     salinity, temperature = _floats(rows, 1), _floats(rows, 2)
+    times = np.array([row[0] for row in rows], dtype=np.int64)
+    quality = np.array([row[4] for row in rows], dtype=np.int64)
     return History(
         resolution_us=0,
-        time_us=np.array([row[0] for row in rows], dtype=np.int64),
+        time_us=times,
         salinity=salinity,
         salinity_min=salinity,
         salinity_max=salinity,
@@ -349,11 +401,12 @@ def _raw_history(connection: Any, sensor: int, from_us: int, to_us: int) -> Hist
         temperature_min=temperature,
         temperature_max=temperature,
         osmolality_mOsm_kg=_floats(rows, 3),
-        quality=np.array([row[4] for row in rows], dtype=np.int64),
+        quality=amendments.worsened(connection, sensor=sensor, time_us=times, quality=quality) if is_best else quality,
+        is_best=is_best,
     )
 
 
-def _thinned_history(connection: Any, sensor: int, from_us: int, to_us: int) -> History:
+def _thinned_history(connection: Any, sensor: int, from_us: int, to_us: int, *, is_best: bool) -> History:
     """Return single readings that are too many for a chart as the rollups would hold them, in finer steps."""
     step = -(-(to_us - from_us) // (MOST_POINTS - 1))
     salinity = "CASE WHEN quality < 4 THEN coalesce(practical_salinity, absolute_salinity_g_kg) END"
@@ -362,7 +415,7 @@ def _thinned_history(connection: Any, sensor: int, from_us: int, to_us: int) -> 
         f"SELECT measured_at / ? * ? AS bucket, avg({salinity}), min({salinity}), max({salinity}), avg({temperature}),"
         f" min({temperature}), max({temperature}), avg(CASE WHEN quality < 4 THEN osmolality_mOsm_kg END),"
         " CASE WHEN sum(quality IN (3, 4)) * 2 > count(*) THEN 3 ELSE 1 END"
-        " FROM reading WHERE measured_at >= ? AND measured_at < ? AND sensor = ? GROUP BY bucket ORDER BY bucket",
+        f" FROM {_source(is_best)} WHERE measured_at >= ? AND measured_at < ? AND sensor = ? GROUP BY bucket ORDER BY bucket",
         (step, step, from_us, to_us, sensor),
     ).fetchall()
     return _bucket_history(rows, resolution_us=step)

@@ -12,6 +12,7 @@ from analysis.flags import Flag
 from ingest.chain.animals import animal_body
 from ingest.chain.chain import tank_bodies
 from ingest.store.alarms import AlarmRow
+from ingest.store.amendments import AmendmentRow
 from ingest.store.block import ChannelRow, Conflict, Occurrence, OutboxRow, StressRow, TankState
 from ingest.store.ledger import Event
 from ingest.store.readings import ReadingRows
@@ -77,6 +78,23 @@ def ring_rows(plant: Plant, said: Found, state: ChainState) -> list[tuple[int, b
     """Return the longer memory of the quality tests of the sensors for which it changed."""
     return [
         (int(plant.numbers.sensor[sensor]), state.quality.ring_bytes(sensor)) for sensor in said.ring_changed.tolist()
+    ]
+
+
+def amendment_rows(plant: Plant, said: Found) -> list[AmendmentRow]:
+    """Return what the block revealed of earlier readings as rows of the store."""
+    lines = said.amendments
+    return [
+        AmendmentRow(int(plant.numbers.sensor[sensor]), from_us, to_us, test, variable, quality)
+        for sensor, from_us, to_us, test, variable, quality in zip(
+            lines.sensor.tolist(),
+            lines.from_us.tolist(),
+            lines.to_us.tolist(),
+            lines.test.tolist(),
+            lines.variable.tolist(),
+            lines.quality.tolist(),
+            strict=True,
+        )
     ]
 
 

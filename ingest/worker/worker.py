@@ -30,6 +30,7 @@ from ingest.store.store import Store
 from ingest.topics import worker_status_topic
 from ingest.worker.bench import Bench
 from ingest.worker.committing import (
+    amendment_rows,
     animal_states,
     channel_rows,
     conflict_rows,
@@ -204,6 +205,7 @@ class Worker:
             commit.sensor_states = sensor_states(shown, output.state)
             commit.newest_at = [newest_us[sensor] for sensor in shown.tolist()]
             commit.rings = ring_rows(plant, found, output.state)
+            commit.amendments = amendment_rows(plant, found)
             commit.jobs = late_jobs(plant, admission.block, found.flags)
         commit.conflicts = conflict_rows(self.plant, raw, admission.contradictions)
         commit.counts["readings"] = len(admission.block)

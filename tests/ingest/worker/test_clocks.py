@@ -12,7 +12,7 @@ HOUR_US = 60 * MINUTE_US
 def test_a_probe_clock_that_steps_back_neither_hides_its_readings_nor_stops_the_worker(tmp_path):
     with Bench(tmp_path, site_text(port=1), now_us=START_US) as bench:
         sent = []
-        for minute in range(10):
+        for _ in range(10):
             bench.clock.advance(60)
             sent.append(payload(bench.clock.now_us(), 31.0))
             assert bench.send("quay/s0", sent[-1])

@@ -30,7 +30,7 @@ SAMPLE_MIN: Final = 10.0
 PROBES: Final = 48
 HIGHEST_TURNOVER_PER_H: Final = 1.0
 HORIZON_MIN: Final = 60.0 * 24.0 * 90.0
-MOST_SECTIONS: Final = 2000
+MOST_SECTIONS: Final = 400
 
 
 def flowed(

@@ -65,13 +65,18 @@ def found(task: AcclimationTask, stage: Stage, limits: Limits, *, state: CohortS
     journey = stress_of_journey(task, stage, schedule, state=state)
     slowness = 1.0
     if schedule.has_arrived and _is_too_much(journey, limits):
-        schedule, journey, slowness = _slowed(task, stage, limits, pace, work, state=state)
+        schedule, journey, slowness = _slowed(task, stage, limits, pace, work, before=journey.worst, state=state)
     alternatives = _alternatives(runs, schedule) if slowness == 1.0 else ()
     return Found(schedule, journey, slowness, pace, alternatives, work)
 
 
 def _is_too_much(journey: JourneyStress, limits: Limits) -> bool:
-    return bool(journey.worst > limits.stress_cap + STRESS_SLACK)  # not known counts as not too much; it is said
+    """Return True where the journey breaks its cap; animals that begin above it may at least not get worse.
+
+    Not known counts as not too much: it is said elsewhere.
+    """
+    highest = np.fmax(limits.stress_cap, journey.journey[0])
+    return bool(journey.worst > highest + STRESS_SLACK)
 
 
 def run(
@@ -135,6 +140,7 @@ def _slowed(
     pace: Pace,
     work: Work,
     *,
+    before: float,
     state: CohortState | None,
 ) -> tuple[Schedule, JourneyStress, float]:
     """Return the fastest schedule of one pace whose journey keeps the cap on stress, by halving the slowness."""
@@ -151,9 +157,11 @@ def _slowed(
         if not _is_too_much(attempt[1], limits):
             best = attempt
             break
-        high = low
+        if attempt[1].worst > before - STRESS_SLACK:
+            break  # slower does not help: it is not the journey's pace that makes the stress
+        high, before = low, attempt[1].worst
     if best is None:
-        words = f"{limits.stress_limit.name} ({limits.stress_limit.value}): {attempt[1].worst:.0f} even at {100 * high:.0f} % of the rates"
+        words = f"{limits.stress_limit.name} ({limits.stress_limit.value}): {attempt[1].worst:.0f} even at {100 * attempt[2]:.0f} % of the rates"
         return replace(attempt[0], has_arrived=False, obstacle=words), attempt[1], attempt[2]
     low = best[2]
     for _ in range(HALVINGS):

@@ -28,10 +28,12 @@ MOST_DRAINED_SHARE: Final = 0.5
 """Common practice: the animals keep half of their water. [1]"""
 SHORTEST_STEP_MIN: Final = 5.0
 HORIZON_MIN: Final = 60.0 * 24.0 * 90.0
-MOST_STEPS: Final = 2000
+MOST_STEPS: Final = 400
 SMALL_GAIN_H: Final = 1e-9
 DRIFT_WEIGHT_H_K: Final = 1e-4
 """Of blends that gain the same, the one that moves the temperature least. [h/K]"""
+SOURCE_WEIGHT_H: Final = 0.05
+"""Each further source in a step must gain this much: a person measures it out. [h]"""
 ARRIVED_WEIGHT_H: Final = 1e-3
 """Of candidates that arrive, the one nearest to the target. [h]"""
 WATER_WEIGHT_H: Final = 0.1
@@ -333,7 +335,9 @@ def _chosen(
     remaining = np.where(problem.is_there(after), ARRIVED_WEIGHT_H * off, problem.remaining_h(after))
     drift = np.abs(after.temperature_degC[:, NOMINAL] - problem.task.start.temperature_degC)
     water = trial.add_L.sum(axis=1) / problem.task.vessel.volume_L
-    score = np.where(allowed, remaining + DRIFT_WEIGHT_H_K * drift + WATER_WEIGHT_H * water, np.inf)
+    further = np.maximum((trial.add_L > 0.0).sum(axis=1) - 1, 0)
+    cost = DRIFT_WEIGHT_H_K * drift + WATER_WEIGHT_H * water + SOURCE_WEIGHT_H * further
+    score = np.where(allowed, remaining + cost, np.inf)
     before = float(problem.remaining_h(place.tank))
     for number in np.argsort(score, kind="stable"):
         if not np.isfinite(score[number]):

@@ -118,8 +118,12 @@ def worst_share(plan: Plan, track: Track, *, direction: str, governs: str = "hou
     named = {limit.name: limit for limit in plan.limits}
     allowed_step = float(named["salinity per step"].value.split()[0])
     shares["step"] = _largest_change(track.salinity, 600) / (allowed_step * 1.05)  # printed with two digits
-    shares["temperature per hour"] = _largest_change(track.temperature_degC, 3600) / _printed(named, "temperature per hour")
-    shares["temperature per step"] = _largest_change(track.temperature_degC, 600) / _printed(named, "temperature per step")
+    shares["temperature per hour"] = _largest_change(track.temperature_degC, 3600) / _printed(
+        named, "temperature per hour"
+    )
+    shares["temperature per step"] = _largest_change(track.temperature_degC, 600) / _printed(
+        named, "temperature per step"
+    )
     assert home >= 0.0
     return shares
 

@@ -81,7 +81,9 @@ def test_flow_through_equals_the_worked_examples(source_salinity: float, minutes
     inflow = 5.0 * _salt_g_L(source_salinity, 20.0) / 1000.0  # kg/min
     salt = float(of.tank.water.salt_kg[0])
     lasting = inflow / 5.0 * 1000.0
-    assert after.water.salt_kg[0, 0] == pytest.approx(lasting + (salt - lasting) * math.exp(-5.0 * minutes / 1000.0), rel=1e-9)
+    assert after.water.salt_kg[0, 0] == pytest.approx(
+        lasting + (salt - lasting) * math.exp(-5.0 * minutes / 1000.0), rel=1e-9
+    )
     # The tank's volume shrinks by 0.02 % in mixing, which the worked example holds constant.
     assert after.salinity[0, 0] == pytest.approx(20.0, rel=2e-4)
 
@@ -139,10 +141,14 @@ def random_task(generator: np.random.Generator) -> AcclimationTask:
     method = Method(generator.choice([Method.STEPS, Method.ADD, Method.DOSE]))
     start = float(np.round(generator.uniform(0.0, 38.0), 1))
     change = float(generator.uniform(1.0, 12.0))
-    target = min(60.0, start + change) if method is Method.DOSE or generator.random() < 0.5 else max(0.2, start - change)
+    target = (
+        min(60.0, start + change) if method is Method.DOSE or generator.random() < 0.5 else max(0.2, start - change)
+    )
     volume = float(np.round(10.0 ** generator.uniform(1.0, 4.5), 1))
     sources = tuple(
-        SourceWater(f"s{n}", float(np.round(generator.uniform(0.0, 45.0), 1)), float(np.round(generator.uniform(10, 32), 1)))
+        SourceWater(
+            f"s{n}", float(np.round(generator.uniform(0.0, 45.0), 1)), float(np.round(generator.uniform(10, 32), 1))
+        )
         for n in range(int(generator.integers(1, 4)))
     )
     salt = Salt("salt", float(np.round(generator.uniform(0.6, 1.0), 2))) if method is Method.DOSE else None
@@ -190,6 +196,8 @@ def test_the_printed_table_is_the_balanced_schedule() -> None:
         assert step.drain_L == pytest.approx(sum(step.add.values()))
         kept = _salt_g_L(salinity, 28.0) * (volume - step.drain_L)
         brought = sum(litres * _salt_g_L({"tap": 0.0, "sea": 36.5}[name], 28.0) for name, litres in step.add.items())
-        assert _salt_g_L(step.salinity, step.temperature_degC) * step.volume_L == pytest.approx(kept + brought, rel=1e-5)
+        assert _salt_g_L(step.salinity, step.temperature_degC) * step.volume_L == pytest.approx(
+            kept + brought, rel=1e-5
+        )
         volume, salinity = step.volume_L, step.salinity
     assert sum(found.water_used_L.values()) == pytest.approx(found.drained_L)

@@ -255,7 +255,9 @@ def test_planning_anew_brings_a_disturbed_tank_home_inside_the_limits(
     share = _rate_share(track, rates(SHRIMP, direction="down", per="h"), 3600)
     stepped = _largest_change(track, 600) / (0.2 * (20.0 - 2.0))
     anew = sum(done.what == "planned anew" for done in state.record)
-    print(f"volume x{volume_factor}, source {source_salinity}: home in {track.size / 3600:.1f} h, planned anew {anew} times,")
+    print(
+        f"volume x{volume_factor}, source {source_salinity}: home in {track.size / 3600:.1f} h, planned anew {anew} times,"
+    )
     print(f"  hour used to {share:.3f}, step to {stepped:.3f}")
     assert share <= 1.0
     assert stepped <= 1.0

@@ -131,7 +131,9 @@ def test_hours_at_the_limit_are_those_of_the_published_rates() -> None:
 
 def test_gates_ask_for_age_chloride_window() -> None:
     assert any("PL12" in gate.text for gate in gates("penaeus-vannamei/pl10", direction="down", target_salinity=4.0))
-    assert not any("PL12" in gate.text for gate in gates("penaeus-vannamei/pl12", direction="down", target_salinity=4.0))
+    assert not any(
+        "PL12" in gate.text for gate in gates("penaeus-vannamei/pl12", direction="down", target_salinity=4.0)
+    )
     (chloride,) = gates("sciaenops-ocellatus/juvenile", direction="down", target_salinity=0.2)
     assert (chloride.kind, chloride.least_mg_L) == ("chloride", 130.0)
     assert any(gate.kind == "window" for gate in gates("salmo-salar/smolt", direction="up", target_salinity=34.0))

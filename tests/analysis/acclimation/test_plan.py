@@ -144,7 +144,11 @@ def test_a_limit_that_forbids_every_step_is_named_with_its_source() -> None:
 
 
 def release(**changes: object) -> Release:
-    settings: dict[str, object] = {"by": "Ines", "valid_until": EIGHT + timedelta(days=1), "chlorine_mg_L": 0.0} | changes
+    settings: dict[str, object] = {
+        "by": "Ines",
+        "valid_until": EIGHT + timedelta(days=1),
+        "chlorine_mg_L": 0.0,
+    } | changes
     return Release(**settings)  # type: ignore[arg-type]
 
 
@@ -160,7 +164,9 @@ def test_a_source_whose_release_does_not_hold_is_not_used(given: Release, words:
     found = plan(task(SHRIMP, 20.0, 14.0, (replace(TAP, release=given),)))
     assert not found.is_feasible
     assert words in found.reason
-    other = plan(task(SHRIMP, 20.0, 14.0, (replace(TAP, release=given), SourceWater("well", 1.0, 28.0, release=release()))))
+    other = plan(
+        task(SHRIMP, 20.0, 14.0, (replace(TAP, release=given), SourceWater("well", 1.0, 28.0, release=release())))
+    )
     assert other.is_feasible
     assert set(other.water_used_L) == {"well"}
     assert any(words in caution for caution in other.cautions)

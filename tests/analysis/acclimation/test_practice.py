@@ -37,7 +37,9 @@ def published_task(row: dict[str, str]) -> AcclimationTask:
 def test_published_tasks_take_half_to_twice_the_published_time_and_bounded_work(row: dict[str, str]) -> None:
     found = plan(published_task(row))
     share = found.total_hours / float(row["hours"])
-    print(f"{row['task']}: {found.total_hours:.1f} h, published {row['hours']} h, {share:.2f} times, {len(found.steps)} steps")
+    print(
+        f"{row['task']}: {found.total_hours:.1f} h, published {row['hours']} h, {share:.2f} times, {len(found.steps)} steps"
+    )
     assert found.is_feasible, found.reason
     assert 0.5 <= share <= 2.0
     assert found.worst_journey_stress <= 60.5 or np.isnan(found.worst_journey_stress)
@@ -119,7 +121,7 @@ def test_no_plan_breaks_a_limit_with_everything_wrong_that_is_allowed_for(name: 
 @pytest.mark.slow
 def test_day_governed_plans_keep_the_day_with_everything_wrong() -> None:
     found = plan(task("dicentrarchus-labrax/fry-juvenile", 20.0, 12.0, degC=24.0))
-    for factor, offset, late in product((0.9, 1.1), (0.0, 1.0), ({}, {2: 20.0}, {n: 20.0 for n in range(1, 60, 2)})):
+    for factor, offset, late in product((0.9, 1.1), (0.0, 1.0), ({}, {2: 20.0}, dict.fromkeys(range(1, 60, 2), 20.0))):
         track = replayed(found, Wrong(factor, {"tap": offset}, late))
         shares = worst_share(found, track, direction="down", governs="day")
         assert max(shares.values()) <= ROUNDING, (factor, offset, late, shares)
@@ -158,7 +160,9 @@ def test_the_cap_on_stress_slows_a_journey_that_would_be_too_fast() -> None:
     fast = Override("salinity per hour", 6.0, "Ines", "test of the cap")
     of = task("oreochromis-niloticus/juvenile", 0.0, 30.0, (SEA,))
     capped = plan(of, governs="hour", overrides=[fast])
-    free = plan(of, governs="hour", overrides=[fast, Override("stress of the journey", None, "Ines", "test of the cap")])
+    free = plan(
+        of, governs="hour", overrides=[fast, Override("stress of the journey", None, "Ines", "test of the cap")]
+    )
     assert free.worst_journey_stress > 60.5
     assert capped.worst_journey_stress <= 60.5
     assert capped.total_hours > free.total_hours

@@ -377,7 +377,7 @@ def _time_rules(frame: _Frame, scales: Sequence[_Scale]) -> str:
 
 
 def _time_ticks(frame: _Frame) -> list[tuple[float, str, bool]]:
-    most = max(2, int((frame.right - LEFT) // 84))
+    most = max(3, int((frame.right - LEFT) // (84 if frame.width >= NARROW else 62)))
     chart = frame.chart
     return time_ticks(chart.from_s, chart.to_s, chart.zone, most=most, language=chart.language)
 

@@ -91,7 +91,7 @@ def card(page: Page, tank: str) -> str:
 def test_the_first_page_shows_the_tanks_of_the_store(page: Page, live: Live):
     open_page(page, live)
     assert page.title() == "Tanks · euryhale"
-    assert "Too fresh" in card(page, "l3")
+    assert "Turning fresh" in card(page, "l3")
     assert page.inner_text('article[data-k="l4"] .big') == "31.1"
     assert page.locator('[data-testid="stHeader"]').is_hidden()
 
@@ -201,6 +201,22 @@ def test_a_chart_is_read_off_zoomed_and_set_back(page: Page, live: Live):
     page.focus(".chart")
     page.keyboard.press("ArrowLeft")
     page.wait_for_selector(".readout:visible")
+
+
+def test_data_and_picture_can_be_taken_along(page: Page, live: Live):
+    open_page(page, live, "?page=tank&id=q1&span=hour")
+    with page.expect_download() as data:
+        page.click('a:has-text("data (CSV)")')
+    lines = Path(data.value.path()).read_text().splitlines()
+    assert lines[0].startswith("time_utc,sensor,salinity")
+    assert len(lines) > 50
+    with page.expect_download() as picture:
+        page.click('a:has-text("picture (PNG)")')
+    content = Path(picture.value.path()).read_bytes()
+    assert content.startswith(b"\x89PNG")
+    assert len(content) > 10_000
+    ARTEFACTS.mkdir(exist_ok=True)
+    (ARTEFACTS / "tank-picture.png").write_bytes(content)
 
 
 @pytest.mark.slow

@@ -161,7 +161,8 @@ def _slowed(
             break  # slower does not help: it is not the journey's pace that makes the stress
         high, before = low, attempt[1].worst
     if best is None:
-        words = f"{limits.stress_limit.name} ({limits.stress_limit.value}): {attempt[1].worst:.0f} even at {100 * attempt[2]:.0f} % of the rates"
+        told = f"{attempt[1].worst:.0f} even at {100 * attempt[2]:.0f} % of the rates"
+        words = f"{limits.stress_limit.name} ({limits.stress_limit.value}): {told}"
         return replace(attempt[0], has_arrived=False, obstacle=words), attempt[1], attempt[2]
     low = best[2]
     for _ in range(HALVINGS):

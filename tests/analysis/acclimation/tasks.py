@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import sys
 from collections.abc import Sequence
 from datetime import datetime
 from typing import Any
@@ -65,3 +66,8 @@ def plan(of: AcclimationTask, *, governs: Governs | None = None, overrides: Sequ
 def override(name: str, value: float | None) -> Override:
     """Return an override by an invented person."""
     return Override(name, value, by="Marta", reason="trial of a slower batch")
+
+
+def say(text: str) -> None:
+    """Write a measured figure; seen with ``pytest -s`` or beside a failure."""
+    sys.stdout.write(text + "\n")

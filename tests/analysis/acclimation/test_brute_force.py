@@ -18,7 +18,7 @@ from numpy.typing import NDArray
 from analysis.acclimation.limits import Limits
 from analysis.acclimation.source import SourceWater
 from analysis.acclimation.task import AcclimationTask, Grid, Method, Vessel
-from tests.analysis.acclimation.tasks import SEA, TAP, limits, override, plan, task
+from tests.analysis.acclimation.tasks import SEA, TAP, limits, override, plan, say, task
 
 Array = NDArray[np.float64]
 STEP_MIN = 5.0
@@ -96,7 +96,7 @@ def _scenarios(of: AcclimationTask) -> tuple[Array, Array]:
 def _choices(of: AcclimationTask, litres: float) -> Array:
     most = int(0.5 * of.vessel.volume_L * (1.0 - of.allowances.volume_share) / litres + 1e-9)
     if of.method is Method.ADD:
-        most = int(round((of.vessel.max_volume_L - of.vessel.volume_L) / litres))
+        most = round((of.vessel.max_volume_L - of.vessel.volume_L) / litres)
     rows = [row for row in product(range(most + 1), repeat=len(of.sources)) if sum(row) <= most]
     return litres * np.array(rows, dtype=np.float64)
 
@@ -182,7 +182,7 @@ def test_within_two_percent_of_the_exhaustive_optimum(name: str) -> None:
     of = _on_grid(of, litres, clock)
     found = plan(of)
     best = exhaustive_hours(of, rate=rate, step=step_of(limits(of)), litres=litres, clock_min=clock, slots=slots)
-    print(f"{name}: planned {found.total_hours:.3f} h, exhaustive {best:.3f} h")
+    say(f"{name}: planned {found.total_hours:.3f} h, exhaustive {best:.3f} h")
     assert np.isfinite(best)
     assert found.is_feasible
     assert found.total_hours <= 1.02 * best
@@ -218,6 +218,6 @@ def test_blends_for_salinity_and_temperature_within_two_percent(name: str) -> No
     best = exhaustive_hours(
         of, rate=POSTLARVAE, step=step_of(limits(of)), litres=litres, clock_min=clock, slots=slots, degrees=(3.0, 1.0)
     )
-    print(f"{name}: planned {found.total_hours:.3f} h, exhaustive {best:.3f} h")
+    say(f"{name}: planned {found.total_hours:.3f} h, exhaustive {best:.3f} h")
     assert np.isfinite(best)
     assert best - 1e-9 <= found.total_hours <= 1.02 * best

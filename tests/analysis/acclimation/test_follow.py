@@ -33,7 +33,7 @@ from analysis.animal import tables
 from analysis.errors import InvalidInputError
 from analysis.tank import Exchange, Inflow, step, tank_water
 from tests.analysis.acclimation.replay import _largest_change, _rate_share
-from tests.analysis.acclimation.tasks import EIGHT, LISBON, limits, plan, task
+from tests.analysis.acclimation.tasks import EIGHT, LISBON, limits, plan, say, task
 
 SHRIMP = "penaeus-vannamei/pl10"
 RELEASED = SourceWater("tap", 0.0, 28.0, release=Release("Ines", EIGHT + timedelta(days=5), chlorine_mg_L=0.0))
@@ -255,10 +255,10 @@ def test_planning_anew_brings_a_disturbed_tank_home_inside_the_limits(
     share = _rate_share(track, rates(SHRIMP, direction="down", per="h"), 3600)
     stepped = _largest_change(track, 600) / (0.2 * (20.0 - 2.0))
     anew = sum(done.what == "planned anew" for done in state.record)
-    print(
+    say(
         f"volume x{volume_factor}, source {source_salinity}: home in {track.size / 3600:.1f} h, planned anew {anew} times,"
     )
-    print(f"  hour used to {share:.3f}, step to {stepped:.3f}")
+    say(f"  hour used to {share:.3f}, step to {stepped:.3f}")
     assert share <= 1.0
     assert stepped <= 1.0
     assert not math.isnan(share)

@@ -6,6 +6,7 @@ import json
 import math
 from dataclasses import replace
 from datetime import datetime, time, timedelta
+from itertools import pairwise
 
 import pytest
 
@@ -222,7 +223,7 @@ def test_ph_is_kept_where_it_is_known_and_said_where_it_is_not() -> None:
     without = plan(hard)
     assert with_ph.total_hours > without.total_hours
     steps = [8.2, *(step.ph for step in with_ph.steps)]
-    assert max(abs(after - before) for before, after in zip(steps, steps[1:], strict=False)) <= 0.25 + 1e-9
+    assert max(abs(after - before) for before, after in pairwise(steps)) <= 0.25 + 1e-9
     assert any("pH is not known" in caution for caution in without.cautions)
 
 

@@ -15,7 +15,7 @@ from analysis.acclimation.source import SourceWater
 from analysis.acclimation.task import AcclimationTask, Allowances, Method, Vessel
 from analysis.tank import Exchange, Inflow, step, tank_water
 from tests.analysis.acclimation.replay import Wrong, replayed, worst_share
-from tests.analysis.acclimation.tasks import SEA, TAP, limits, plan, task
+from tests.analysis.acclimation.tasks import SEA, TAP, limits, plan, say, task
 from tests.reference.published import FOLDER
 
 ROUNDING = 1.0005
@@ -37,7 +37,7 @@ def published_task(row: dict[str, str]) -> AcclimationTask:
 def test_published_tasks_take_half_to_twice_the_published_time_and_bounded_work(row: dict[str, str]) -> None:
     found = plan(published_task(row))
     share = found.total_hours / float(row["hours"])
-    print(
+    say(
         f"{row['task']}: {found.total_hours:.1f} h, published {row['hours']} h, {share:.2f} times, {len(found.steps)} steps"
     )
     assert found.is_feasible, found.reason
@@ -115,7 +115,7 @@ def test_no_plan_breaks_a_limit_with_everything_wrong_that_is_allowed_for(name: 
         for _ in range(20)
     ]
     worst = assert_keeps_limits(found, wrongs=wrongs)
-    print(f"{name}: {len(wrongs)} replays, worst shares { {key: round(value, 4) for key, value in worst.items()} }")
+    say(f"{name}: {len(wrongs)} replays, worst shares { {key: round(value, 4) for key, value in worst.items()} }")
 
 
 @pytest.mark.slow

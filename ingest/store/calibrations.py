@@ -61,6 +61,36 @@ class KeptService(NamedTuple):
     body: dict[str, Any]
 
 
+class PeriodOfRecord(NamedTuple):
+    """A stretch of a sensor's record, from the work before to a service, as that service judges it (USGS TM 1-D3).
+
+    `rating` and `temperature_rating` are the words of TM 1-D3, None where nothing can be said.
+    """
+
+    to_us: int
+    from_us: int | None
+    fouling_percent: float | None
+    drift_percent: float | None
+    temperature_error_K: float | None
+    rating: str | None
+    temperature_rating: str | None
+    is_corrected: bool
+
+
+class HealthRow(NamedTuple):
+    """Whether a sensor can be believed: `belief` is a number of `analysis.sensor.health.Belief`, held since `since`.
+
+    `body` holds `reasons`, each with `finding`, `belief` and `figures`, and `compensation`, what the data say of the
+    declared compensation.
+    """
+
+    sensor: str
+    assessed_at: int
+    belief: int
+    since: int
+    body: dict[str, Any]
+
+
 def insert(connection: sqlite3.Connection, services: Iterable[ServiceRow], *, event_id: int) -> None:
     """Keep services that *event_id* tells of."""
     connection.executemany(
@@ -100,6 +130,43 @@ def services(connection: sqlite3.Connection) -> list[KeptService]:
         " JOIN sensor ON sensor.id = service.sensor ORDER BY performed_at, event_id"
     ).fetchall()
     return [KeptService(**{**dict(row), "body": msgspec.json.decode(row["body"])}) for row in rows]
+
+
+def periods(connection: sqlite3.Connection, sensor: str) -> list[PeriodOfRecord]:
+    """Return what is said of the record of a sensor, oldest first."""
+    rows = connection.execute(
+        "SELECT to_us, from_us, fouling_percent, drift_percent, temperature_error_K, rating, temperature_rating, is_corrected"
+        " FROM record_period WHERE sensor = (SELECT id FROM sensor WHERE slug = ?) ORDER BY to_us",
+        (sensor,),
+    ).fetchall()
+    return [PeriodOfRecord(**{**dict(row), "is_corrected": bool(row["is_corrected"])}) for row in rows]
+
+
+def due(connection: sqlite3.Connection) -> dict[str, int | None]:
+    """Return when the next calibration of each sensor is due, None where it never had one, by the sensor's id."""
+    rows = connection.execute(
+        "SELECT slug, (SELECT next_due FROM service WHERE service.sensor = sensor.id AND next_due IS NOT NULL"
+        " ORDER BY performed_at DESC, event_id DESC LIMIT 1) AS next_due FROM sensor"
+    ).fetchall()
+    return {row["slug"]: row["next_due"] for row in rows}
+
+
+def health(connection: sqlite3.Connection) -> dict[str, HealthRow]:
+    """Return the newest assessment of each sensor, by its id."""
+    rows = connection.execute(
+        "SELECT slug AS sensor, assessed_at, belief, since, body FROM sensor_health JOIN sensor ON sensor.id = sensor_health.sensor"
+    ).fetchall()
+    return {row["sensor"]: HealthRow(**{**dict(row), "body": msgspec.json.decode(row["body"])}) for row in rows}
+
+
+def upsert_health(
+    connection: sqlite3.Connection, *, sensor: int, assessed_at: int, belief: int, since: int, body: dict[str, Any]
+) -> None:
+    """Write down the newest assessment of a sensor (the store's number)."""
+    connection.execute(
+        "INSERT OR REPLACE INTO sensor_health (sensor, assessed_at, belief, since, body) VALUES (?, ?, ?, ?, ?)",
+        (sensor, assessed_at, belief, since, _text(body)),
+    )
 
 
 def calibration_set(connection: sqlite3.Connection) -> str:

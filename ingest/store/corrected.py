@@ -19,11 +19,27 @@ _INSERT = (
 _UNSIGNED = {"flags": np.uint32, "quality": np.uint8}
 _WHOLE = {"measured_at", "sensor", "received_at", "declaration", "derivation", "tests"}
 
-NEWEST = (
-    "(SELECT derivation FROM corrected AS c WHERE c.measured_at = reading.measured_at AND c.sensor = reading.sensor"
+_SHOWN = (
+    "temperature_degC",
+    "practical_salinity",
+    "absolute_salinity_g_kg",
+    "density_kg_m3",
+    "osmolality_mOsm_kg",
+    "conductivity_mS_cm",
+    "flags",
+    "quality",
+)
+BEST = (
+    "SELECT reading.measured_at, reading.sensor, "
+    + ", ".join(
+        f"CASE WHEN better.sensor IS NULL THEN reading.{name} ELSE better.{name} END AS {name}" for name in _SHOWN
+    )
+    + " FROM reading LEFT JOIN corrected AS better ON better.measured_at = reading.measured_at"
+    " AND better.sensor = reading.sensor AND better.derivation = (SELECT c.derivation FROM corrected AS c"
+    " WHERE c.measured_at = reading.measured_at AND c.sensor = reading.sensor"
     " ORDER BY c.recorded_at DESC, c.derivation DESC LIMIT 1)"
 )
-"""The derivation of the newest corrected row of a reading; NULL where there is none."""
+"""Of each reading the newest corrected row, or itself where there is none."""
 
 
 class JobRow(NamedTuple):
@@ -49,6 +65,19 @@ class Job(NamedTuple):
     row_count: int
 
 
+class JobState(NamedTuple):
+    """How far a job has come; `finished_at` is None while it runs."""
+
+    sensor: str
+    from_us: int
+    to_us: int
+    reason: str
+    created_at: int
+    next_us: int
+    row_count: int
+    finished_at: int | None
+
+
 def add_jobs(connection: sqlite3.Connection, jobs: Iterable[JobRow], *, event_id: int | None, now_us: int) -> None:
     """Write down what has to be derived again."""
     connection.executemany(
@@ -64,6 +93,16 @@ def next_job(connection: sqlite3.Connection) -> Job | None:
         " JOIN sensor ON sensor.id = rederivation.sensor WHERE finished_at IS NULL ORDER BY rederivation.id LIMIT 1"
     ).fetchone()
     return None if row is None else Job(*row)
+
+
+def job_states(connection: sqlite3.Connection, *, most: int) -> list[JobState]:
+    """Return the newest jobs, newest first."""
+    rows = connection.execute(
+        "SELECT slug, from_us, to_us, reason, created_at, next_us, row_count, finished_at FROM rederivation"
+        " JOIN sensor ON sensor.id = rederivation.sensor ORDER BY rederivation.id DESC LIMIT ?",
+        (most,),
+    ).fetchall()
+    return [JobState(*row) for row in rows]
 
 
 def slice_end(connection: sqlite3.Connection, job: Job, *, most: int) -> int:

@@ -58,8 +58,14 @@ def ask(
     return outcome
 
 
+def wait_until_time(bench: Bench, at_us: int) -> None:
+    """Let time go on until a moment; a moment that is past changes nothing."""
+    bench.clock.advance(max(0, at_us - bench.clock.now_us()) / 1e6)
+
+
 def send(bench: Bench, at_us: int, conductivity: float, temperature_degC: float = 25.0, *, sensor: str = "s0") -> None:
-    """Let a sensor send one reading as it measures it."""
+    """Let a sensor send one reading as it measures it; time goes on until then."""
+    wait_until_time(bench, at_us)
     body = json.dumps({"c": conductivity, "t": temperature_degC, "at": at_us}).encode()
     assert bench.send(f"quay/{sensor}", body)
 

@@ -7,7 +7,6 @@ from typing import Annotated, Literal
 
 from pydantic import Field, NaiveDatetime, StringConstraints
 
-from ingest.site.identity import Role
 from ingest.site.section import Section, Slug, Words, one_of, quantity, slug, whole, words
 
 ChannelKind = Literal["mail", "sms", "push", "voice", "webhook"]
@@ -49,7 +48,7 @@ class Person(Section):
 
     id: Slug = slug("id of the person")
     name: Words = words("name of the person")
-    role: Role = one_of("viewer", "operator", "biologist", "manager", default="operator")
+    role: Literal["operator", "biologist", "manager"] = one_of("operator", "biologist", "manager", default="operator")
     channels: tuple[Channel, ...] = Field(min_length=1, description="a list of {kind, url_secret, rings}, at least one")
 
 

@@ -183,6 +183,12 @@ def write_text(connection: sqlite3.Connection, delivery: Delivery) -> None:
     )
 
 
+def attempt_count(connection: sqlite3.Connection, delivery: int) -> int:
+    """Return how often a delivery has been tried."""
+    row = connection.execute("SELECT attempts FROM delivery WHERE id = ?", (delivery,)).fetchone()
+    return 0 if row is None else int(row[0])
+
+
 def write_attempt(connection: sqlite3.Connection, attempt: AttemptRow, *, next_attempt_at: int) -> None:
     """Write an attempt and what follows from it for its delivery, inside the caller's transaction."""
     connection.execute(

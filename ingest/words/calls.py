@@ -121,7 +121,7 @@ def _numbers(alarm: CalledAlarm, what: str, language: Language) -> list[str]:
     found = []
     value = numbers.quantity(facts.value, kind, language=language)
     if math.isfinite(facts.value) and value not in what:
-        found.append(words["now"].format(quantity=language.QUANTITIES[kind], value=value))
+        found.append(words["now"].format(quantity=language.QUANTITIES.get(kind, kind), value=value))
     if math.isfinite(facts.rate_per_h):
         rate = numbers.quantity(abs(facts.rate_per_h), kind, language=language)
         is_said = any(word in what for word in words["trend_words"])

@@ -19,12 +19,16 @@ def condition(worker: Worker) -> dict[str, Any]:
     """Return how the worker is: connected or not, what waits, what went wrong last."""
     intake = worker.intake
     return {
-        "is_well": intake.is_connected and not worker.last_problem and not worker.site_problem,
+        "is_well": intake.is_connected
+        and not worker.last_problem
+        and not worker.site_problem
+        and not worker.calling.problem,
         "broker_connected": intake.is_connected,
         "waiting_messages": intake.waiting,
         "dropped_by_broker": intake.dropped_by_broker,
         "refused_subscriptions": intake.refused_subscriptions,
         "problem": worker.last_problem or worker.site_problem or intake.last_problem,
+        **worker.calling.condition(),
         "site_revision": worker.plant.numbers.revision,
         "schema": worker.store.schema,
     }

@@ -76,7 +76,7 @@ class Plant:
     def roles(self) -> Mapping[str, str]:
         """The role of every person known here, by name."""
         actor = self.site.identity.default_actor
-        return {actor.name: actor.role}
+        return {**{person.name: person.role for person in self.site.people}, actor.name: actor.role}
 
 
 def plant(

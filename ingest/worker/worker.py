@@ -29,6 +29,7 @@ from ingest.store.readings import as_sent
 from ingest.store.store import Store
 from ingest.topics import worker_status_topic
 from ingest.worker.bench import Bench
+from ingest.worker.calling import Calling
 from ingest.worker.committing import (
     amendment_rows,
     animal_states,
@@ -132,6 +133,7 @@ class Worker:
         received_by = SystemClock() if self._is_replay else clock
         self.intake = Intake(self._access(), self.plant.topics, clock=received_by)
         self._outgoing: Outgoing | None = None
+        self.calling = Calling(self.store, site_file, clock=clock, plant=self.plant, is_replay=self._is_replay)
         self._watching_since_us = clock.now_us()
         self._wants_reload = threading.Event()
         self._schedule = Schedule(clock)
@@ -160,6 +162,7 @@ class Worker:
                     self.stopwatch.lap("acknowledge")
                 last_end_s = self._clock.monotonic_s()
         finally:
+            self.calling.stop()
             self.intake.stop()
             if self._outgoing is not None:
                 self._outgoing.forwarder.stop()
@@ -278,6 +281,7 @@ class Worker:
             self.take_commands(stop)
         if self._schedule.is_due("tick", TICK_EVERY_S):
             self.tick(stop)
+        self.calling.step(self.plant, self.state, self.intake)
         if self._schedule.is_due("heartbeat", HEARTBEAT_EVERY_S):
             self._commit(BlockCommit(meta={"alive_at": self._clock.now_us(), **self._condition()}), stop)
         if self._outgoing is not None and self._schedule.is_due("forwarding", FORWARDING_EVERY_S):

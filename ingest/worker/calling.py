@@ -1,0 +1,248 @@
+"""Calls to people, as the worker's main loop drives them: a short step at each look, threads only for what has to wait."""
+
+from __future__ import annotations
+
+import sqlite3
+from typing import TYPE_CHECKING, Any
+
+import structlog
+
+from analysis.errors import EuryhaleError
+from ingest.mqtt import Access, Intake
+from ingest.notify import codes
+from ingest.notify.desk import CallDesk
+from ingest.notify.life_sign import LifeSign
+from ingest.notify.publishing import Publisher
+from ingest.notify.sending import Sender
+from ingest.notify.trail import EVERY_S as TRAIL_EVERY_S
+from ingest.notify.trail import Trail
+from ingest.notify.writing import Writer
+from ingest.secrets import read_secret
+from ingest.store import calls as rows
+from ingest.store.inbox import Inbox
+from ingest.words import times
+from ingest.worker.schedule import Schedule
+
+if TYPE_CHECKING:
+    from pathlib import Path
+
+    from ingest.chain.chain import ChainState
+    from ingest.clock import Clock
+    from ingest.notify.sending import Post, Report
+    from ingest.store.store import Store
+    from ingest.worker.plant import Plant
+
+log = structlog.get_logger(__name__)
+
+CALLING_EVERY_S = 0.2
+PUBLISH_EVERY_S = 1.0
+LOOK_EVERY_S = 5.0
+MOST_ANSWERS = 50
+
+
+class Calling:
+    """Everything about calls that belongs to one worker.
+
+    Parameters
+    ----------
+    store : Store
+        Written only from the caller's thread.
+    site_file : Path
+        Beside it lie the secrets.
+    clock : Clock
+    is_replay : bool
+        Old readings pass by: nobody is called, nothing is published.
+    plant : Plant
+        The site at the start.
+    post : Post, optional
+        How messages leave; through apprise where not given.
+    """
+
+    def __init__(
+        self,
+        store: Store,
+        site_file: Path,
+        *,
+        clock: Clock,
+        plant: Plant,
+        is_replay: bool = False,
+        post: Post | None = None,
+    ) -> None:
+        self._store = store
+        self._site_file = site_file
+        self._clock = clock
+        self._is_replay = is_replay
+        self._post = post
+        self._schedule = Schedule(clock)
+        self._trail = Trail()
+        self._publisher = Publisher()
+        self._inbox = Inbox(store.folder)
+        self._plant: Plant | None = None
+        self._desk = CallDesk(plant.site, store, is_replay=is_replay)
+        self._sender: Sender | None = None
+        self._answers: Intake | None = None
+        self._life_sign: LifeSign | None = None
+        self._unwritten: list[Report] = []
+        self._told: dict[str, str | int] = {}
+        self.problem = ""
+
+    def step(self, plant: Plant, state: ChainState, intake: Intake) -> None:
+        """Do what is due: short, and never waiting for anybody outside."""
+        if not self._schedule.is_due("calling", CALLING_EVERY_S):
+            return
+        if plant is not self._plant:
+            self._take_plant(plant)
+        self._trail.follow(state)
+        if self._schedule.is_due("trail", TRAIL_EVERY_S):
+            self._trail.keep()
+        try:
+            self._call(plant, state)
+        except sqlite3.OperationalError as error:
+            # The store is busy or full; what was not written is done again at the next look.
+            self.problem = f"calls cannot be written down: {error}"
+            log.error("calls cannot be written down", reason=str(error))
+        if not self._is_replay and self._schedule.is_due("publish", PUBLISH_EVERY_S):
+            self._publisher.publish(plant, state, intake)
+        every_s = 0.0 if plant.site.heartbeat is None else plant.site.heartbeat.every_s
+        if self._life_sign is not None and self._schedule.is_due("life sign", every_s):
+            self._life_sign.ask(self._sign(plant, intake))
+
+    def stop(self) -> None:
+        """Let the threads end; what they have just delivered is written down if it can be."""
+        if self._sender is not None:
+            self._sender.stop()
+            self._take_reports()
+            try:
+                self._write_reports()
+            except sqlite3.OperationalError as error:
+                log.warning("last attempts not written down; they are made again", reason=str(error))
+        if self._answers is not None:
+            self._answers.stop()
+        if self._life_sign is not None:
+            self._life_sign.stop()
+
+    def condition(self) -> dict[str, Any]:
+        """Return how the calls are, for /health."""
+        sign = self._life_sign
+        return {
+            "delivery_problem": self.problem,
+            "deliveries_on_their_way": 0 if self._sender is None else len(self._sender.in_flight),
+            "signs_given": 0 if sign is None else sign.given,
+            "signs_failed": 0 if sign is None else sign.failed,
+        }
+
+    def _take_plant(self, plant: Plant) -> None:
+        """Follow a new site file."""
+        before = None if self._plant is None else self._plant.site
+        self._plant, site = plant, plant.site
+        self._trail.clear()
+        if before is not None:
+            self._desk.take_site(site)
+        if self._desk.plan is not None and self._sender is None:
+            self._desk.key = codes.key_of(self._site_file)
+            self._sender = Sender(self._post or self._apprise(), self._clock)
+        if self._is_replay:
+            return
+        if before is None or before.acknowledgements != site.acknowledgements:
+            self._dial(plant)
+        if before is None or before.heartbeat != site.heartbeat:
+            if self._life_sign is not None:
+                self._life_sign.stop()
+            sign = site.heartbeat
+            self._life_sign = None if sign is None else LifeSign(sign.url_secret, site_file=self._site_file)
+
+    def _apprise(self) -> Post:
+        # Only a site that declares people pays for loading it.
+        from ingest.notify.posting import ApprisePost
+
+        return ApprisePost(self._site_file)
+
+    def _dial(self, plant: Plant) -> None:
+        """Connect to the broker outside on which people answer."""
+        if self._answers is not None:
+            self._answers.stop()
+            self._answers = None
+        way = plant.site.acknowledgements
+        if way is None:
+            return
+        try:
+            password = None if way.secret is None else read_secret(way.secret, site_file=self._site_file)
+        except EuryhaleError as error:
+            log.error("answers cannot be heard", reason=str(error))
+            self.problem = str(error)
+            return
+        access = Access(
+            host=way.host,
+            port=way.port,
+            client_id=f"euryhale-{plant.site.id}-answers",
+            user=way.user,
+            password=password,
+            is_tls=way.tls,
+            ca_file=None if way.ca_file is None else (self._site_file.parent / way.ca_file).resolve(),
+        )
+        self._answers = Intake(access, (way.topic,), clock=self._clock)
+        self._answers.start()
+
+    def _call(self, plant: Plant, state: ChainState) -> None:
+        desk, now_us = self._desk, self._clock.now_us()
+        self._take_reports()
+        self._write_reports()
+        self._hear_answers(desk, now_us)
+        if desk.follow(now_us=now_us):
+            self._schedule.make_due("calling")
+        desk.test_if_due(now_us=now_us)
+        if self._sender is not None:
+            for parcel in desk.write(
+                lambda: self._writer(plant, state, now_us), without=self._sender.in_flight, now_us=now_us
+            ):
+                self._sender.hand_over(parcel)
+        if self._schedule.is_due("look", LOOK_EVERY_S):
+            self._tell_problem(plant, desk, now_us)
+
+    def _writer(self, plant: Plant, state: ChainState, now_us: int) -> Writer:
+        batches = rows.batches(self._store.connection)
+        return Writer(plant, state, self._trail, batches, self._desk.key, now_us)
+
+    def _take_reports(self) -> None:
+        if self._sender is not None:
+            self._unwritten += self._sender.reports()
+
+    def _write_reports(self) -> None:
+        self._desk.report(self._unwritten, now_us=self._clock.now_us())
+        self._unwritten.clear()
+
+    def _hear_answers(self, desk: CallDesk, now_us: int) -> None:
+        if self._answers is None or not self._answers.waiting:
+            return
+        messages = self._answers.take(MOST_ANSWERS)
+        for message in messages:
+            desk.answer(message.payload[:2000].decode("utf-8", "replace"), self._inbox, now_us=now_us)
+        self._answers.acknowledge(messages)
+
+    def _sign(self, plant: Plant, intake: Intake) -> dict[str, Any]:
+        return {
+            "site": plant.site.id,
+            "at_us": self._clock.now_us(),
+            "broker_connected": intake.is_connected,
+            "delivery_problem": self.problem,
+        }
+
+    def _tell_problem(self, plant: Plant, desk: CallDesk, now_us: int) -> None:
+        """Say on every screen what keeps calls from going out: the board reads it from the store's named values."""
+        since_us = desk.failing_since_us(now_us=now_us)
+        found = []
+        if since_us is not None:
+            found.append(
+                f"messages to people do not go out since {times.moment(since_us, plant.site.zone, now_us=now_us)}"
+            )
+        if desk.nobody_since_us is not None:
+            found.append("nobody is on duty: nobody could be called")
+        if self._answers is not None and not self._answers.is_connected:
+            found.append("the broker on which people answer cannot be reached")
+        if self._life_sign is not None and self._life_sign.problem:
+            found.append(f"the sign of life does not get through: {self._life_sign.problem}")
+        self.problem = "; ".join(found)
+        told: dict[str, str | int] = {"delivery_problem": self.problem, "delivery_failing_since": since_us or 0}
+        if told != self._told:
+            desk.tell(told)
+            self._told = told

@@ -50,9 +50,8 @@ class Limits:
 
 def narrowing(figures: StageArrays, temperature_degC: FloatArray, model: Constants) -> FloatArray:
     """Return how far the tolerated range has narrowed on either side at this temperature. [mOsm/kg]"""
-    cold = np.fmax(0.0, figures.optimal_low_degC - temperature_degC)
-    warm = np.fmax(0.0, temperature_degC - figures.optimal_high_degC)
-    return np.asarray(cold * model.cold_mOsm_kg_K + warm * model.warm_mOsm_kg_K)
+    cold = np.fmax(0.0, figures.optimal_low_degC - model.cold_onset_K - temperature_degC)
+    return np.asarray(cold * model.cold_mOsm_kg_K)
 
 
 def limits_at(figures: StageArrays, temperature_degC: FloatArray, model: Constants) -> Limits:
@@ -181,9 +180,9 @@ def exposure_steps(
 ) -> ExposureSteps:
     """Return what *hours* in *water* do to the exposure of animals used to *acclimated*. One dimension, shapes equal."""
     limits = limits_at(figures, temperature_degC, model)
-    tau = np.where(water < acclimated, figures.tau_down, figures.tau_up) * settling_factor(
-        figures, temperature_degC, model
-    )
+    tau = np.where(water < acclimated, figures.tau_down, figures.tau_up) + np.zeros(water.shape)
+    # Cold slows settling, death and repair alike: all three run in the animals' own time.
+    hours = hours / settling_factor(figures, temperature_degC, model)
     rate = level_rate_per_h(figures, limits, water)
     shock, lasting = _shock(figures, limits, acclimated=acclimated, water=water, hours=hours, tau=tau, level_rate=rate)
     rest = hours - lasting

@@ -25,6 +25,7 @@ INF = math.inf
 RULES: Mapping[str, str] = MappingProxyType(
     {
         "level from direct test": "no figure after slow acclimation: the level of the direct test (on the safe side)",
+        "level beyond direct test": "only a direct test of days: slow change moves the level out by 12 % of its jump (KAU1988, MARINO1994)",
         "level from tolerable low": "no lethal level: two thirds of the tolerable salinity, the median ratio of the stages that have both",
         "level from tolerable high": "no lethal level: 1.25 times the tolerable salinity, below the median ratio (1.4) where both exist",
         "no lower limit": "tolerates 1 ppt or less and has no lethal level: fresh water sets no lower limit",
@@ -51,6 +52,9 @@ RULES: Mapping[str, str] = MappingProxyType(
 """The table of fallbacks: name of the rule -> its reasoning. The name stands in the note of every assumed figure."""
 
 DEFAULT_TEST_H = 48.0
+SHORT_TEST_H = 120.0
+SLOW_GAIN = 0.12
+"""Part of the direct lethal jump by which slow change moves the lethal level out: the lower quartile of the published pairs."""
 MIN_GAP_PPT = 0.5
 EXTRAPOLATION_FROM_PPT = 100.0
 
@@ -122,9 +126,17 @@ class _Side:
 
 def _level(side: _Side) -> None:
     """Find the median lethal level for animals that came slowly."""
-    if side.keep("level", side.own("gradual")) or side.keep("level", side.own("lethal")):
+    if side.keep("level", side.own("gradual")):
         return
-    tolerable, direct = side.own("tolerable"), side.own("direct")
+    tolerable, direct, lethal = side.own("tolerable"), side.own("direct"), side.own("lethal")
+    if direct is not None and (lethal is None or lethal.value == direct.value) and _is_short_test(side):
+        start = side.stage.figures.get(f"direct_{side.side}_from_ppt")
+        if start is not None:
+            wider = direct.value + side.out * SLOW_GAIN * abs(direct.value - start.value)
+            side.assume("level", max(0.0, wider), "level beyond direct test", because=(direct,))
+            return
+    if side.keep("level", lethal):
+        return
     if tolerable is not None:
         if side.side == "low" and tolerable.value <= 1.0:
             side.assume("level", -INF, "no lower limit", because=(tolerable,))
@@ -136,6 +148,11 @@ def _level(side: _Side) -> None:
         side.assume("level", direct.value, "level from direct test", because=(direct,))
     elif side.side == "low" and side.stage.value("optimal_low_ppt") <= 1.0:
         side.assume("level", -INF, "no lower limit", because=(side.own("optimal"),))
+
+
+def _is_short_test(side: _Side) -> bool:
+    """A test of days, in which animals from other water had no time to settle."""
+    return not side.stage.value(f"direct_{side.side}_h") > SHORT_TEST_H
 
 
 def _tolerable(side: _Side) -> None:

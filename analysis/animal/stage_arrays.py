@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from analysis.animal.constants import Constants, constants
+from analysis.animal.constants import FISH_GROUPS, Constants, constants
 from analysis.animal.exposure import exposure_steps
 from analysis.animal.fallbacks import Resolved, resolved
 from analysis.animal.stage import Certainty
@@ -125,7 +125,8 @@ def _row(stage: Resolved, model: Constants) -> dict[str, float]:
         row[f"range_cap_{side}"] = 0.6 if is_timed else 1.0
         for kind in ("level", "jump"):
             row[f"{kind}_{side}_h"] *= hours_to_median(stage.value(f"{kind}_{side}_alive"), model.steepness)
-    row["decade"] = model.decade_timer_mOsm_kg if stage.is_timer else model.decade_mOsm_kg
+    usual = model.decade_fish_mOsm_kg if stage.stage.group in FISH_GROUPS else model.decade_mOsm_kg
+    row["decade"] = model.decade_timer_mOsm_kg if stage.is_timer else usual
     return row
 
 
@@ -152,7 +153,7 @@ def _with_calibrated_jumps(figures: StageArrays, model: Constants) -> StageArray
         water: FloatArray = getattr(figures, f"jump_{side}_to")
         start = water + up * getattr(figures, f"jump_{side}")
         shortest, longest = printed_h * 1e-4, printed_h.copy()
-        for _ in range(40):
+        for _ in range(30):
             middle = np.sqrt(shortest * longest)
             tried = _replaced(calibrated, f"jump_{side}_h", middle)
             step = exposure_steps(

@@ -8,14 +8,14 @@ import numpy as np
 
 from analysis.animal.constants import Constants, constants
 from analysis.animal.exposure import exposure_steps, settling_factor
-from analysis.animal.fallbacks import resolved
-from analysis.animal.stage import Certainty, Stage, Supports
+from analysis.animal.fallbacks import osmolality_from_ppt, resolved
+from analysis.animal.stage import Certainty, Figure, Stage, Supports
 from analysis.animal.stage_arrays import StageArrays
 from analysis.arrays import FloatArray
 from analysis.errors import InvalidInputError
 
 EXPOSURE_FACTOR = 4.0
-"""Factor by which exposure is uncertain either way; derived from the predicted cases of VALIDATION.md."""
+"""Factor by which exposure is uncertain either way: about two of three predicted cases of VALIDATION.md lie within it."""
 NOT_KNOWN = "not known"
 
 
@@ -170,11 +170,23 @@ def survival_basis(
     if not stage.supports & Supports.EXPOSURE:
         return None
     ready = resolved(stage)
-    used = []
-    for side, is_used in (("low", lowest < home), ("high", highest > home)):
+    used: list[Figure] = []
+    low_edge, high_edge = ready.value("optimal_low"), ready.value("optimal_high")
+    is_low, is_high = lowest < home or lowest < low_edge, highest > home or highest > high_edge
+    if not is_low and not is_high:
+        used = [
+            figure
+            for side in ("low", "high")
+            for figure in _published_harmless(stage, side, lowest=lowest, highest=highest)
+        ]
+    for side, is_used in (("low", is_low), ("high", is_high)):
+        if not is_used:
+            continue
         times = [ready.figures.get(f"{kind}_{side}_h") for kind in ("level", "jump")]
         timed = [figure for figure in times if figure is not None and figure.certainty is not Certainty.ASSUMED]
-        if is_used and not timed and not _stays_inside(ready.value(f"optimal_{side}"), side, lowest, highest):
+        if not timed:
+            timed = _published_harmless(stage, side, lowest=lowest, highest=highest)
+        if not timed:
             return None
         used += timed
     if not used:
@@ -183,5 +195,13 @@ def survival_basis(
     return weakest, tuple(dict.fromkeys(name for figure in used for name in figure.sources))
 
 
-def _stays_inside(edge: float, side: str, lowest: float, highest: float) -> bool:
-    return lowest >= edge if side == "low" else highest <= edge
+def _published_harmless(stage: Stage, side: str, *, lowest: float, highest: float) -> list[Figure]:
+    """Return the published figure that calls this water harmless: a transfer without loss, or the optimum."""
+    for limit in ("harmless", "optimal"):
+        figure = stage.figures.get(f"{limit}_{side}_ppt")
+        if figure is None:
+            continue
+        edge = osmolality_from_ppt(figure.value)
+        if (lowest >= edge) if side == "low" else (highest <= edge):
+            return [figure]
+    return []

@@ -125,9 +125,9 @@ def test_the_sentence_says_why_and_which_way_water_moves():
         optimal_low_mOsm_kg=580.0,
         gap_mOsm_kg=300.0,
     )
-    assert (
-        words
-        == "Strained: the water is much fresher than what they are used to, and their bodies take up water (body 300 mOsm/kg above the water)."
+    assert words == (
+        "Strained: the water is much fresher than what they are used to, "
+        "and their bodies take up water (body 300 mOsm/kg above the water)."
     )
     assert one_sentence(band=Band.SETTLED, driver=Driver.NONE, water_mOsm_kg=700.0) == "Settled: the water suits them."
     assert one_sentence(band=Band.UNKNOWN, driver=Driver.UNKNOWN, water_mOsm_kg=700.0).startswith("Not known")

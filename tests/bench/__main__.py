@@ -5,6 +5,7 @@ from __future__ import annotations
 import tempfile
 from pathlib import Path
 
+from tests.analysis.sensor.quality import speed
 from tests.bench import road
 
 
@@ -34,7 +35,14 @@ def print_memory(folder: Path) -> None:
         print(f"   after {seconds / 60:4.0f} min of readings {megabytes:7.1f} MB")
 
 
+def print_quality() -> None:
+    print("a million readings through conversion, uncertainty and all quality tests (asked for: less than 8 times bare):")
+    for line in speed.measure().lines():
+        print(f"   {line}")
+
+
 def main() -> None:
+    print_quality()
     with tempfile.TemporaryDirectory(prefix="euryhale-bench-") as name:
         folder = Path(name)
         print_road(folder)

@@ -1,4 +1,4 @@
-"""The animals in the tanks: their figures as arrays, what they are used to, and what each reading does to them.
+"""What the animals in the tanks are used to, and what each reading does to them: a row for each cohort.
 
 A tank's animals are moved on at most once in `EVERY_US` of measured time, by the first reading of each such slice: their own
 times are hours, and the rule looks at the readings alone, so the result does not depend on how the stream was cut into blocks.
@@ -11,85 +11,21 @@ from typing import TYPE_CHECKING, Any, NamedTuple
 
 import numpy as np
 
-from analysis.animal.fallbacks import resolved
-from analysis.animal.osmoregulation import CohortState, StageArrays
-from analysis.animal.stage import Certainty
+from analysis.animal.osmoregulation import SPREAD_MOSM_KG, CohortState
 from analysis.animal.stress import BAND_WORDS, DRIVER_WORDS, Band, Driver, Stress, advance
-from analysis.animal.tables import load
 from analysis.arrays import MICROSECONDS_PER_SECOND
 
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
     from analysis.alarm.nearest import JudgedRows
-    from analysis.animal.stage import Stage
-    from analysis.arrays import BoolArray, FloatArray, IntArray
-    from analysis.water.properties import WaterKind
-    from ingest.site.models import Site
+    from analysis.arrays import FloatArray, IntArray
+    from ingest.chain.animal_roster import AnimalRoster
 
 EVERY_US = 10 * MICROSECONDS_PER_SECOND
 RECORD_EVERY_US = 60 * MICROSECONDS_PER_SECOND
 """A row of the record is kept for the first step of each such slice of measured time, and for each change of band."""
-NO_ANIMALS = -1
 _NAN_STRESS = float("nan")
-
-LARVAL_WORDS = frozenset(
-    {
-        "egg",
-        "embryo",
-        "nauplius",
-        "zoea",
-        "mysis",
-        "larva",
-        "megalopa",
-        "phyllosoma",
-        "trochophore",
-        "veliger",
-        "alevin",
-    }
-)
-"""Words in a stage's id that make its animals larvae for the alarm band. Common practice."""
-
-
-class Stocked(NamedTuple):
-    """Which animals are in a tank: the cohort, ``genus-species/stage``, and the salinity they were used to when they came."""
-
-    cohort: str
-    animal: str
-    used_to_salinity: float
-
-
-@dataclass(frozen=True, slots=True)
-class AnimalRoster:
-    """The animals of every tank.
-
-    Attributes
-    ----------
-    stages : tuple of Stage or None
-        One a tank; None where no animals are, or none that a table knows.
-    is_larva : ndarray of bool, one a tank
-    tolerable_salinity : ndarray of float64, shape (tanks, 2)
-        Lowest and highest salinity that a published figure calls tolerable, in the tank's own salinity; NaN where there is none.
-        Assumed figures are left out: a limit that nobody has measured wakes nobody.
-    tanks : ndarray of int64
-        Index of the tank of each row of `figures` and of the cohorts' state.
-    row_of : ndarray of int64
-        For each tank its row; -1 where there is none.
-    cohorts : tuple of str
-        Id of the cohort of each row.
-    figures : StageArrays
-    used_to_mOsm_kg : ndarray of float64
-        What each row's animals were used to when they came.
-    """
-
-    stages: tuple[Stage | None, ...]
-    is_larva: BoolArray
-    tolerable_salinity: FloatArray
-    tanks: IntArray
-    row_of: IntArray
-    cohorts: tuple[str, ...]
-    figures: StageArrays
-    used_to_mOsm_kg: FloatArray
 
 
 @dataclass(frozen=True, slots=True)
@@ -113,48 +49,12 @@ class StressStep(NamedTuple):
     values: dict[str, Any]
 
 
-def animal_roster(site: Site, kinds: Mapping[str, WaterKind], stocked: Mapping[str, Stocked]) -> AnimalRoster:
-    """Return the animals of every tank.
-
-    Parameters
-    ----------
-    site : Site
-    kinds : mapping of str to WaterKind
-        Every kind of water that the site names.
-    stocked : mapping of str to Stocked
-        What is in which tank, by the tank's id.
-    """
-    known = load()
-    stages = tuple(known.get(stocked[tank.id].animal) if tank.id in stocked else None for tank in site.tanks)
-    limits = [_tolerable(stage, kinds[tank.water]) for stage, tank in zip(stages, site.tanks, strict=True)]
-    tanks = np.array([index for index, stage in enumerate(stages) if stage is not None], dtype=np.int64)
-    row_of = np.full(len(site.tanks), NO_ANIMALS, dtype=np.int64)
-    row_of[tanks] = np.arange(len(tanks))
-    in_rows = [site.tanks[index] for index in tanks]
-    return AnimalRoster(
-        stages=stages,
-        is_larva=np.array([is_larva(stage) for stage in stages], dtype=np.bool_),
-        tolerable_salinity=np.array(limits, dtype=np.float64).reshape(-1, 2),
-        tanks=tanks,
-        row_of=row_of,
-        cohorts=tuple(stocked[tank.id].cohort for tank in in_rows),
-        figures=StageArrays.from_stages([stage for stage in stages if stage is not None]),
-        used_to_mOsm_kg=np.array(
-            [float(kinds[tank.water].osmolality_from_salinity(stocked[tank.id].used_to_salinity)) for tank in in_rows],
-            dtype=np.float64,
-        ),
-    )
-
-
-def is_larva(stage: Stage | None) -> bool:
-    """Return whether the animals of *stage* are larvae."""
-    return stage is not None and not LARVAL_WORDS.isdisjoint(stage.id.partition("/")[2].split("-"))
-
-
 def fresh_animals(roster: AnimalRoster) -> AnimalState:
     """Return the state of animals that have lived until now in the water they were used to when they came."""
+    cohorts = CohortState.used_to(roster.used_to_mOsm_kg)
+    doubt = np.where(np.isnan(roster.used_to_mOsm_kg), SPREAD_MOSM_KG, cohorts.uncertainty)
     return AnimalState(
-        cohorts=CohortState.used_to(roster.used_to_mOsm_kg),
+        cohorts=replace(cohorts, uncertainty=doubt),
         latest=_unknown_stress(len(roster.tanks)),
         recorded_us=np.full(len(roster.tanks), -1, dtype=np.int64),
     )
@@ -178,44 +78,51 @@ def step(
     Returns
     -------
     tuple of (AnimalState, tuple of int, list of StressStep)
-        After, the tanks whose animals were moved on, and what goes into the record.
+        After, the rows of the roster that were moved on, and what goes into the record.
     """
-    rows = roster.row_of[osmolality.tank]
-    due = _due(rows, osmolality, state.cohorts.updated_at_us)
+    due, rows = _due(roster, osmolality, state.cohorts.updated_at_us)
     if not due.size:
         return state, (), []
     state = AnimalState(_copied(state.cohorts), _copied(state.latest), state.recorded_us.copy())
     record: list[StressStep] = []
     # Step by step even where a block holds hours of one tank: a series taken at once is the same to rounding only,
     # and the state must be that of the readings to the last bit, whatever blocks they came in.
-    for wave in _waves(rows[due], due):
-        _step_wave(roster, state, rows[wave], wave, osmolality, temperature, record)
-    return state, tuple(np.unique(osmolality.tank[due]).tolist()), record
+    for wave in _waves(rows):
+        _step_wave(roster, state, rows[wave], due[wave], osmolality, temperature, record)
+    return state, tuple(np.unique(rows).tolist()), record
 
 
-def _due(rows: IntArray, osmolality: JudgedRows, updated_at_us: IntArray) -> IntArray:
-    """Return the readings that move their animals on: the first of each slice of measured time."""
-    has_animals = np.flatnonzero((rows >= 0) & osmolality.is_usable)
-    if not has_animals.size:
-        return has_animals
-    slices = osmolality.at_us[has_animals] // EVERY_US
-    row = rows[has_animals]
-    fresh = slices > updated_at_us[row] // EVERY_US
-    candidates = has_animals[fresh]
+def _due(roster: AnimalRoster, osmolality: JudgedRows, updated_at_us: IntArray) -> tuple[IntArray, IntArray]:
+    """Return which readings move which rows on: of each cohort the first of each slice of measured time."""
+    usable = np.flatnonzero(osmolality.is_usable)
+    index, row = _with_rows(roster, usable, osmolality.tank[usable])
+    if not index.size:
+        return index, row
+    slices = osmolality.at_us[index] // EVERY_US
+    fresh = np.flatnonzero(slices > updated_at_us[row] // EVERY_US)
     _, first = np.unique(np.stack([row[fresh], slices[fresh]]), axis=1, return_index=True)
-    return np.sort(candidates[first])
+    pairs = fresh[np.sort(first)]
+    return index[pairs], row[pairs]
 
 
-def _waves(rows: IntArray, due: IntArray) -> list[IntArray]:
-    """Return the due readings in waves: the first of each tank, then the second of each, and so on."""
+def _with_rows(roster: AnimalRoster, index: IntArray, tank: IntArray) -> tuple[IntArray, IntArray]:
+    """Return each of *index* once for every cohort in its *tank*, and the cohort's row."""
+    count = roster.row_count[tank]
+    repeated = np.repeat(index, count)
+    behind_first = np.arange(repeated.size) - np.repeat(np.cumsum(count) - count, count)
+    return repeated, np.repeat(roster.first_row[tank], count) + behind_first
+
+
+def _waves(rows: IntArray) -> list[IntArray]:
+    """Return places in *rows* in waves: the first of each row, then the second of each, and so on."""
     seen: dict[int, int] = {}
     waves: list[list[int]] = []
-    for row, index in zip(rows.tolist(), due.tolist(), strict=True):
+    for place, row in enumerate(rows.tolist()):
         depth = seen.get(row, 0)
         seen[row] = depth + 1
         if depth == len(waves):
             waves.append([])
-        waves[depth].append(index)
+        waves[depth].append(place)
     return [np.array(wave, dtype=np.int64) for wave in waves]
 
 
@@ -279,27 +186,23 @@ def stress_values(stress: Stress, index: int) -> dict[str, Any]:
     }
 
 
-def animal_body(roster: AnimalRoster, state: AnimalState, tank: int) -> dict[str, Any] | None:
-    """Return what the chain remembers of the animals of one tank as plain JSON data; None where there are none."""
-    row = int(roster.row_of[tank])
-    if row == NO_ANIMALS:
-        return None
-    cohort = state.cohorts.take(np.array([row])).to_dicts()[0]
+def animal_body(roster: AnimalRoster, state: AnimalState, row: int) -> dict[str, Any]:
+    """Return what the chain remembers of the animals of one row as plain JSON data."""
     latest = {member.name: _number(getattr(state.latest, member.name)[row]) for member in fields(Stress)}
     return {
         "cohort": roster.cohorts[row],
-        "state": cohort,
+        "state": state.cohorts.take(np.array([row])).to_dicts()[0],
         "latest": latest,
         "recorded_us": int(state.recorded_us[row]),
     }
 
 
-def restored_animals(roster: AnimalRoster, bodies: Mapping[int, Mapping[str, Any]]) -> AnimalState:
-    """Return the state kept with `animal_body`, by the tank's index; a cohort that came since starts fresh."""
+def restored_animals(roster: AnimalRoster, bodies: Mapping[str, Mapping[str, Any]]) -> AnimalState:
+    """Return the state kept with `animal_body`, by the cohorts' ids; a cohort that came since starts fresh."""
     state = fresh_animals(roster)
-    for tank, body in bodies.items():
-        row = int(roster.row_of[tank])
-        if row == NO_ANIMALS or body.get("cohort") != roster.cohorts[row]:
+    for row, cohort_id in enumerate(roster.cohorts):
+        body = bodies.get(cohort_id)
+        if body is None:
             continue
         cohort = CohortState.from_dicts([body["state"]])
         for member in fields(CohortState):
@@ -311,21 +214,34 @@ def restored_animals(roster: AnimalRoster, bodies: Mapping[int, Mapping[str, Any
     return state
 
 
+def carried_animals(
+    before: AnimalRoster, state: AnimalState, roster: AnimalRoster, changed: Mapping[str, CohortState]
+) -> AnimalState:
+    """Return the state of the animals after the roster has changed: each cohort keeps its own, wherever it is now.
+
+    Parameters
+    ----------
+    before : AnimalRoster
+    state : AnimalState
+        Of the rows of *before*; not changed.
+    roster : AnimalRoster
+        The new one.
+    changed : mapping of str to CohortState
+        Cohorts whose state is another than before, or that are new: of one element each.
+    """
+    bodies = {cohort: animal_body(before, state, row) for row, cohort in enumerate(before.cohorts)}
+    after = restored_animals(roster, bodies)
+    for cohort_id, own in changed.items():
+        row = roster.row_of.get(cohort_id)
+        if row is not None:
+            for member in fields(CohortState):
+                getattr(after.cohorts, member.name)[row] = getattr(own, member.name)[0]
+    return after
+
+
 def _farthest(rows: JudgedRows, index: IntArray, acclimated: FloatArray) -> FloatArray:
     low, high = rows.low_value[index], rows.high_value[index]
     return np.where(np.abs(low - acclimated) > np.abs(high - acclimated), low, high)
-
-
-def _tolerable(stage: Stage | None, kind: WaterKind) -> tuple[float, float]:
-    if stage is None:
-        return np.nan, np.nan
-    figures = resolved(stage).figures
-    found = []
-    for key in ("tolerable_low", "tolerable_high"):
-        figure = figures.get(key)
-        is_measured = figure is not None and figure.certainty is not Certainty.ASSUMED
-        found.append(float(kind.salinity_from_osmolality(figure.value)) if is_measured and figure else np.nan)
-    return found[0], found[1]
 
 
 def _unknown_stress(count: int) -> Stress:

@@ -35,7 +35,8 @@ if TYPE_CHECKING:
     from analysis.arrays import BoolArray, FlagArray, FloatArray, IntArray, QualityArray
     from analysis.sensor.quality.result import Amendments
     from analysis.sensor.quality.thresholds import Thresholds
-    from ingest.chain.animals import AnimalRoster, AnimalState, StressStep
+    from ingest.chain.animal_roster import AnimalRoster
+    from ingest.chain.animals import AnimalState, StressStep
     from ingest.chain.block import RawBlock
     from ingest.chain.roster import Roster
     from ingest.chain.tanks import TankRoster
@@ -109,7 +110,7 @@ class ChainOutput:
     tanks : tuple of int
         Tanks whose state changed.
     moved : tuple of int
-        Tanks whose animals were moved on.
+        Rows of the animals (`ingest.chain.animal_roster`) that were moved on.
     felt : tuple of StressStep
         What the animals felt, for the record.
     """
@@ -324,16 +325,15 @@ def restored_state(
     lives: Mapping[str, Mapping[str, Any]],
     alarms: Mapping[tuple[ConditionKind, int], AlarmState],
 ) -> ChainState:
-    """Return the state that was kept with `tank_bodies` and `animal_body`, by the tanks' ids, and the alarms; restoring fires nothing.
+    """Return the state that was kept with `tank_bodies`, by the tanks' ids, and `animal_body`, by the cohorts', and the alarms.
 
-    Sensors, tanks and cohorts that are gone are left out; new ones start fresh.
+    Restoring fires nothing. Sensors, tanks and cohorts that are gone are left out; new ones start fresh.
     """
     state = fresh_state(tanks, animals, alarms)
     for tank, tank_id in enumerate(tanks.tanks):
         if tank_id in bodies:
             _restore_tank(tanks, state, tank, bodies[tank_id])
-    creatures = {tank: lives[tank_id] for tank, tank_id in enumerate(tanks.tanks) if tank_id in lives}
-    return replace(state, animals=restored_animals(animals, creatures))
+    return replace(state, animals=restored_animals(animals, lives))
 
 
 def _restore_tank(tanks: TankRoster, state: ChainState, tank: int, body: Mapping[str, Any]) -> None:

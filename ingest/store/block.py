@@ -11,6 +11,7 @@ from ingest.store import (
     alarms,
     amendments,
     calibrations,
+    cohorts,
     corrected,
     forwarding,
     ledger,
@@ -18,6 +19,7 @@ from ingest.store import (
     refused,
     registry,
     rollups,
+    samples,
 )
 
 if TYPE_CHECKING:
@@ -69,7 +71,7 @@ class ChannelRow(NamedTuple):
 
 
 class StressRow(NamedTuple):
-    """What the animals of one tank feel at one moment; None is "not known"."""
+    """What one cohort in a tank feels at one moment; None is "not known"."""
 
     measured_at: int
     tank: int
@@ -87,8 +89,17 @@ class StressRow(NamedTuple):
 
 
 class TankState(NamedTuple):
-    """What the chain remembers of the readings, or of the animals, of one tank."""
+    """What the chain remembers of the readings of one tank."""
 
+    tank: int
+    measured_at: int | None
+    body: dict[str, Any]
+
+
+class AnimalRow(NamedTuple):
+    """What the chain remembers of one cohort, and in which tank it is."""
+
+    cohort: str
     tank: int
     measured_at: int | None
     body: dict[str, Any]
@@ -135,7 +146,7 @@ class BlockCommit:
     counts: dict[str, int] = field(default_factory=dict)
     stress: list[StressRow] = field(default_factory=list)
     tank_states: list[TankState] = field(default_factory=list)
-    animal_states: list[TankState] = field(default_factory=list)
+    animal_states: list[AnimalRow] = field(default_factory=list)
     pending_alarms: list[AlarmRow] = field(default_factory=list)
     occurrences: list[Occurrence] = field(default_factory=list)
     outcomes: list[OutcomeRow] = field(default_factory=list)
@@ -168,11 +179,14 @@ def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: i
     refused.insert(connection, block.refusals)
     refused.count(connection, block.counts)
     connection.executemany(f"INSERT OR REPLACE INTO stress VALUES ({', '.join('?' * 13)})", block.stress)
-    for table, states in (("tank_state", block.tank_states), ("animal_state", block.animal_states)):
-        connection.executemany(
-            f"INSERT OR REPLACE INTO {table} VALUES (?, ?, ?)",
-            [(state.tank, state.measured_at, msgspec.json.encode(state.body).decode()) for state in states],
-        )
+    connection.executemany(
+        "INSERT OR REPLACE INTO tank_state VALUES (?, ?, ?)",
+        [(state.tank, state.measured_at, msgspec.json.encode(state.body).decode()) for state in block.tank_states],
+    )
+    connection.executemany(
+        "INSERT OR REPLACE INTO animal_state VALUES (?, ?, ?, ?)",
+        [(*state[:-1], msgspec.json.encode(state.body).decode()) for state in block.animal_states],
+    )
     amendments.insert(connection, block.amendments)
     forwarding.put(connection, block.forward, queued_at=block.queued_at)
     for row in block.pending_alarms:
@@ -211,6 +225,8 @@ def _write_work(connection: sqlite3.Connection, work: SensorWork, *, event_id: i
 
 def _write_occurrence(connection: sqlite3.Connection, occurrence: Occurrence) -> int:
     event_id = ledger.append(connection, occurrence.event)
+    cohorts.project(connection, occurrence.event, event_id=event_id)
+    samples.project(connection, occurrence.event, event_id=event_id)
     if occurrence.alarm is not None:
         alarms.upsert(connection, occurrence.alarm, event_id=event_id)
     for message in occurrence.outbox:

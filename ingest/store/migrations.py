@@ -91,9 +91,11 @@ STORE: tuple[Migration, ...] = (
             f"CREATE TABLE d1 ({ROLLUP_COLUMNS}) WITHOUT ROWID",
             "CREATE TABLE stress (measured_at INTEGER NOT NULL, tank INTEGER NOT NULL, cohort TEXT NOT NULL, stress REAL,"
             " range_strain REAL, change_strain REAL, exposure_strain REAL, thermal_strain REAL, driver TEXT, band TEXT,"
-            " acclimated_mOsm_kg REAL, internal_mOsm_kg REAL, gap_mOsm_kg REAL, PRIMARY KEY (measured_at, tank)) WITHOUT ROWID",
+            " acclimated_mOsm_kg REAL, internal_mOsm_kg REAL, gap_mOsm_kg REAL,"
+            " PRIMARY KEY (measured_at, tank, cohort)) WITHOUT ROWID",
             "CREATE TABLE tank_state (tank INTEGER PRIMARY KEY REFERENCES tank(id), measured_at INTEGER, body TEXT NOT NULL)",
-            "CREATE TABLE animal_state (tank INTEGER PRIMARY KEY REFERENCES tank(id), measured_at INTEGER, body TEXT NOT NULL)",
+            "CREATE TABLE animal_state (cohort TEXT PRIMARY KEY, tank INTEGER NOT NULL REFERENCES tank(id), measured_at INTEGER,"
+            " body TEXT NOT NULL) WITHOUT ROWID",
             # The ledger: append-only, each row carries the hash of the one before.
             "CREATE TABLE event (id INTEGER PRIMARY KEY, kind TEXT NOT NULL, subject TEXT NOT NULL, measured_at INTEGER,"
             " recorded_at INTEGER NOT NULL, actor TEXT NOT NULL, cause_id INTEGER REFERENCES event(id), body TEXT NOT NULL,"
@@ -111,7 +113,10 @@ STORE: tuple[Migration, ...] = (
             " updated_at INTEGER NOT NULL, event_id INTEGER REFERENCES event(id), body TEXT NOT NULL,"
             " PRIMARY KEY (subject, condition)) WITHOUT ROWID",
             "CREATE TABLE cohort (id TEXT PRIMARY KEY, tank INTEGER REFERENCES tank(id), animal TEXT NOT NULL,"
-            " number INTEGER, since INTEGER NOT NULL, ended_at INTEGER, body TEXT NOT NULL) WITHOUT ROWID",
+            " number INTEGER, since INTEGER NOT NULL, ended_at INTEGER, event_id INTEGER NOT NULL REFERENCES event(id),"
+            " changed_at INTEGER NOT NULL, body TEXT NOT NULL) WITHOUT ROWID",
+            "CREATE TABLE animal_sample (cohort TEXT NOT NULL, taken_at INTEGER NOT NULL, event_id INTEGER NOT NULL REFERENCES event(id),"
+            " kind TEXT NOT NULL, actor TEXT NOT NULL, body TEXT NOT NULL, PRIMARY KEY (cohort, taken_at, event_id)) WITHOUT ROWID",
             # Work done on a sensor: a calibration or a cleaning. Of two rows of one moment the later event holds.
             "CREATE TABLE service (sensor INTEGER NOT NULL REFERENCES sensor(id), performed_at INTEGER NOT NULL,"
             " event_id INTEGER NOT NULL REFERENCES event(id), kind TEXT NOT NULL, actor TEXT NOT NULL, next_due INTEGER,"

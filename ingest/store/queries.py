@@ -9,7 +9,7 @@ import msgspec
 import numpy as np
 
 from analysis.animal.stress import BAND_WORDS, DRIVER_WORDS, Band, Driver
-from ingest.store import alarms, amendments, calibrations, corrected, ledger, registry, restoring, rollups
+from ingest.store import alarms, amendments, calibrations, corrected, ledger, registry, rollups
 from ingest.store.connection import reader
 from ingest.store.lock import is_held
 from ingest.store.store import store_path
@@ -90,7 +90,7 @@ class StressHistory:
 
 @dataclass(frozen=True, slots=True)
 class LatestStress:
-    """The newest stress row of one tank."""
+    """The newest stress of one cohort in a tank."""
 
     tank: str
     measured_at: int
@@ -243,45 +243,45 @@ class Queries:
             )
         return lines
 
-    def stress_history(self, tank: str, *, from_us: int, to_us: int, most: int = 3000) -> StressHistory:
-        """Return what the animals of *tank* felt over [from_us, to_us): the worst row of each of at most *most* steps."""
+    def stress_history(
+        self, tank: str, *, from_us: int, to_us: int, most: int = 3000, cohort: str | None = None
+    ) -> StressHistory:
+        """Return what the animals of *tank* felt over [from_us, to_us): the worst row of each of at most *most* steps.
+
+        With *cohort* only those of one cohort count; without one the worst of all that were in the tank.
+        """
         step = max(60_000_000, (to_us - from_us) // most)
         with reader(self._path) as connection:
             rows = connection.execute(
                 "SELECT measured_at, max(stress), range_strain, change_strain, exposure_strain, thermal_strain,"
                 " acclimated_mOsm_kg, internal_mOsm_kg, gap_mOsm_kg FROM stress"
                 " WHERE measured_at >= ? AND measured_at < ? AND tank = (SELECT id FROM tank WHERE slug = ?)"
-                " GROUP BY measured_at / ? ORDER BY measured_at",
-                (from_us, to_us, tank, step),
+                " AND (? IS NULL OR cohort = ?) GROUP BY measured_at / ? ORDER BY measured_at",
+                (from_us, to_us, tank, cohort, cohort, step),
             ).fetchall()
         times = np.array([row[0] for row in rows], dtype=np.int64)
         return StressHistory(times, *(_floats(rows, column) for column in range(1, 9)))
 
     def latest_stress(self, *, since_us: int) -> dict[str, LatestStress]:
-        """Return what the animals of each tank felt last, by the tank's id, where that was measured since *since_us*."""
-        found = {}
+        """Return what the animals of each tank felt last, by the tank's id, where that was measured since *since_us*.
+
+        Of several cohorts in a tank: the one that is worst off.
+        """
+        worst: dict[str, LatestStress] = {}
+        for felt in self.latest_stress_of_cohorts(since_us=since_us).values():
+            known = worst.get(felt.tank)
+            if known is None or _badness(felt) > _badness(known):
+                worst[felt.tank] = felt
+        return worst
+
+    def latest_stress_of_cohorts(self, *, since_us: int) -> dict[str, LatestStress]:
+        """Return what each cohort felt last, by the cohort's id, where that was measured since *since_us*."""
         with reader(self._path) as connection:
-            bodies = restoring.animal_bodies(connection)
-        for tank, animals in bodies.items():
-            if animals["state"]["updated_at_us"] < since_us:
-                continue
-            latest = animals["latest"]
-            found[tank] = LatestStress(
-                tank=tank,
-                measured_at=animals["state"]["updated_at_us"],
-                cohort=animals["cohort"],
-                stress=latest["stress"],
-                range_strain=latest["range_strain"],
-                change_strain=latest["change_strain"],
-                exposure_strain=latest["exposure_strain"],
-                thermal_strain=latest["thermal_strain"],
-                driver=DRIVER_WORDS[Driver(latest["driver"])],
-                band=BAND_WORDS[Band(latest["band"])],
-                acclimated_mOsm_kg=animals["state"]["acclimated"],
-                internal_mOsm_kg=latest["internal_mOsm_kg"],
-                gap_mOsm_kg=latest["gap_mOsm_kg"],
-            )
-        return found
+            rows = connection.execute(
+                "SELECT cohort, slug, body FROM animal_state JOIN tank ON tank.id = animal_state.tank ORDER BY cohort"
+            ).fetchall()
+        found = {row["cohort"]: _latest_stress(row["slug"], msgspec.json.decode(row["body"])) for row in rows}
+        return {cohort: felt for cohort, felt in found.items() if felt.measured_at >= since_us}
 
     def alarms(self) -> list[AlarmRow]:
         """Return where every alarm that ever was stands now."""
@@ -374,6 +374,31 @@ class Queries:
         """Return how many readings are stored."""
         with reader(self._path) as connection:
             return int(connection.execute("SELECT count(*) FROM reading").fetchone()[0])
+
+
+def _latest_stress(tank: str, body: dict[str, Any]) -> LatestStress:
+    """Return what the chain remembers of a cohort as the newest row of its stress."""
+    latest = body["latest"]
+    return LatestStress(
+        tank=tank,
+        measured_at=body["state"]["updated_at_us"],
+        cohort=body["cohort"],
+        stress=latest["stress"],
+        range_strain=latest["range_strain"],
+        change_strain=latest["change_strain"],
+        exposure_strain=latest["exposure_strain"],
+        thermal_strain=latest["thermal_strain"],
+        driver=DRIVER_WORDS[Driver(latest["driver"])],
+        band=BAND_WORDS[Band(latest["band"])],
+        acclimated_mOsm_kg=body["state"]["acclimated"],
+        internal_mOsm_kg=latest["internal_mOsm_kg"],
+        gap_mOsm_kg=latest["gap_mOsm_kg"],
+    )
+
+
+def _badness(felt: LatestStress) -> float:
+    """Return by what cohorts of one tank are compared: known stress before unknown."""
+    return -1.0 if felt.stress is None else felt.stress
 
 
 def _source(is_best: bool) -> str:

@@ -7,18 +7,20 @@ from typing import TYPE_CHECKING, Any
 import msgspec
 
 from analysis.alarm.state import state_from_dict
-from ingest.chain.animals import Stocked
+from ingest.chain.animal_roster import Stocked
 from ingest.chain.services import in_order, service
-from ingest.store import calibrations
+from ingest.store import calibrations, cohorts
 from ingest.store.alarms import read_all as alarm_rows
 from ingest.store.block import OutcomeRow
 
 if TYPE_CHECKING:
     import sqlite3
+    from collections.abc import Iterable
 
     from analysis.alarm.state import AlarmState
     from ingest.chain.services import Service
     from ingest.store.alarms import AlarmRow
+    from ingest.store.cohorts import CohortRow
     from ingest.store.inbox import Command
 
 __all__ = [
@@ -32,6 +34,7 @@ __all__ = [
     "outcome_row",
     "quality_memory",
     "services",
+    "stocked",
     "stocked_tanks",
     "tank_bodies",
 ]
@@ -57,17 +60,14 @@ def newest_times(connection: sqlite3.Connection) -> dict[str, int]:
 
 def tank_bodies(connection: sqlite3.Connection) -> dict[str, dict[str, Any]]:
     """Return what the chain remembered of the readings of each tank, by the tank's id."""
-    return _bodies(connection, "tank_state")
+    rows = connection.execute("SELECT slug, body FROM tank_state JOIN tank ON tank.id = tank_state.tank").fetchall()
+    return {row["slug"]: msgspec.json.decode(row["body"]) for row in rows}
 
 
 def animal_bodies(connection: sqlite3.Connection) -> dict[str, dict[str, Any]]:
-    """Return what the chain remembered of the animals of each tank, by the tank's id."""
-    return _bodies(connection, "animal_state")
-
-
-def _bodies(connection: sqlite3.Connection, table: str) -> dict[str, dict[str, Any]]:
-    rows = connection.execute(f"SELECT slug, body FROM {table} JOIN tank ON tank.id = {table}.tank").fetchall()
-    return {row["slug"]: msgspec.json.decode(row["body"]) for row in rows}
+    """Return what the chain remembered of the animals, by the cohort's id."""
+    rows = connection.execute("SELECT cohort, body FROM animal_state").fetchall()
+    return {row["cohort"]: msgspec.json.decode(row["body"]) for row in rows}
 
 
 def quality_memory(connection: sqlite3.Connection, sensor: str) -> tuple[bytes | None, bytes | None]:
@@ -80,16 +80,28 @@ def quality_memory(connection: sqlite3.Connection, sensor: str) -> tuple[bytes |
     return (None, None) if row is None else (row["state"], row["body"])
 
 
-def stocked_tanks(connection: sqlite3.Connection) -> dict[str, Stocked]:
-    """Return which animals are in each tank now, by the tank's id; of several cohorts the one that came last."""
-    rows = connection.execute(
-        "SELECT slug, cohort.id, animal, body FROM cohort JOIN tank ON tank.id = cohort.tank"
-        " WHERE ended_at IS NULL ORDER BY since, cohort.id"
-    ).fetchall()
-    return {
-        row["slug"]: Stocked(row["id"], row["animal"], float(msgspec.json.decode(row["body"])["used_to_salinity"]))
-        for row in rows
-    }
+def stocked_tanks(connection: sqlite3.Connection) -> dict[str, tuple[Stocked, ...]]:
+    """Return which cohorts are in each tank now, by the tank's id, in the order in which they came."""
+    return stocked(cohorts.read_all(connection))
+
+
+def stocked(rows: Iterable[CohortRow]) -> dict[str, tuple[Stocked, ...]]:
+    """Return which of *rows* are in each tank, by the tank's id, in the order given; those that have ended are left out."""
+    found: dict[str, tuple[Stocked, ...]] = {}
+    for row in rows:
+        if row.ended_at is None:
+            found[row.tank] = (*found.get(row.tank, ()), _stocked(row))
+    return found
+
+
+def _stocked(row: CohortRow) -> Stocked:
+    used_to, proposed = row.body.get("used_to_salinity"), row.body.get("proposed")
+    return Stocked(
+        row.id,
+        row.animal,
+        float("nan") if used_to is None else float(used_to),
+        None if proposed is None else str(proposed["stage"]),
+    )
 
 
 def services(connection: sqlite3.Connection) -> dict[str, tuple[Service, ...]]:

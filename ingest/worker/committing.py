@@ -13,7 +13,7 @@ from ingest.chain.animals import animal_body
 from ingest.chain.chain import tank_bodies
 from ingest.store.alarms import AlarmRow
 from ingest.store.amendments import AmendmentRow
-from ingest.store.block import ChannelRow, Conflict, Occurrence, OutboxRow, StressRow, TankState
+from ingest.store.block import AnimalRow, ChannelRow, Conflict, Occurrence, OutboxRow, StressRow, TankState
 from ingest.store.ledger import Event
 from ingest.store.readings import ReadingRows
 
@@ -136,14 +136,14 @@ def tank_states(plant: Plant, state: ChainState, tanks: Sequence[int]) -> list[T
     ]
 
 
-def animal_states(plant: Plant, state: ChainState, tanks: Sequence[int]) -> list[TankState]:
-    """Return what the chain remembers of the animals of *tanks* as rows of the store."""
-    rows = []
-    for tank in tanks:
-        body = animal_body(plant.animals, state.animals, tank)
-        if body is not None:
-            rows.append(TankState(int(plant.numbers.tank[tank]), body["state"]["updated_at_us"], body))
-    return rows
+def animal_states(plant: Plant, state: ChainState, rows: Sequence[int]) -> list[AnimalRow]:
+    """Return what the chain remembers of the animals of *rows* of the roster as rows of the store."""
+    found = []
+    for row in rows:
+        body = animal_body(plant.animals, state.animals, row)
+        number = int(plant.numbers.tank[plant.animals.tanks[row]])
+        found.append(AnimalRow(body["cohort"], number, body["state"]["updated_at_us"], body))
+    return found
 
 
 def stress_rows(plant: Plant, output: ChainOutput) -> list[StressRow]:

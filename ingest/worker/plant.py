@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any
 
-from ingest.chain.animals import animal_roster
+from ingest.chain.animal_roster import animal_roster, known_stages
 from ingest.chain.calibrated import in_force
 from ingest.chain.roster import roster
 from ingest.chain.services import Rules, periods
@@ -17,12 +17,13 @@ from ingest.site.identity import Horizon
 from ingest.water_kinds import kinds_of
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
     from pathlib import Path
 
+    from analysis.animal.stage import Stage
     from analysis.sensor.quality.thresholds import Thresholds
     from analysis.water.properties import WaterKind
-    from ingest.chain.animals import AnimalRoster, Stocked
+    from ingest.chain.animal_roster import AnimalRoster, Stocked
     from ingest.chain.roster import Roster
     from ingest.chain.services import Period, Service
     from ingest.chain.tanks import TankRoster
@@ -34,7 +35,8 @@ if TYPE_CHECKING:
 class Plant:
     """What is installed, in the forms in which the worker needs it.
 
-    `services` holds the work done on each sensor; `periods` what it says of their records, where these are corrected.
+    `stages` are the species tables with the site's own figures. `services` holds the work done on each sensor; `periods`
+    what it says of their records, where these are corrected.
     """
 
     site: Site
@@ -46,6 +48,7 @@ class Plant:
     animals: AnimalRoster
     decoder: Decoder
     kinds: Mapping[str, WaterKind]
+    stages: Mapping[str, Stage]
     services: Mapping[str, tuple[Service, ...]]
     periods: Mapping[str, tuple[Period, ...]]
 
@@ -67,6 +70,18 @@ class Plant:
             periods=_periods(self.site, services),
         )
 
+    def after_stock(self, stocked: Mapping[str, Sequence[Stocked]]) -> Plant:
+        """Return the same plant with other animals in its tanks, and the limits that follow from them.
+
+        Parameters
+        ----------
+        stocked : mapping of str to sequence of Stocked
+            The cohorts in each tank, by the tank's id.
+        """
+        animals = animal_roster(self.site, self.kinds, stocked, self.stages)
+        tanks = tank_roster(self.site, self.roster, is_larva=animals.is_larva, tolerable=animals.tolerable_salinity)
+        return replace(self, animals=animals, tanks=tanks)
+
     @property
     def topics(self) -> tuple[str, ...]:
         """Every topic that a sensor of the site sends to."""
@@ -84,7 +99,7 @@ def plant(
     *,
     text: str,
     numbers: Numbers,
-    stocked: Mapping[str, Stocked],
+    stocked: Mapping[str, Sequence[Stocked]],
     tables: Path,
     waiting_halves: Mapping[str, Any],
     services: Mapping[str, tuple[Service, ...]] | None = None,
@@ -100,8 +115,8 @@ def plant(
         The site file it was read from.
     numbers : Numbers
         The store's numbers.
-    stocked : mapping of str to Stocked
-        Which animals are in which tank, by the tank's id.
+    stocked : mapping of str to sequence of Stocked
+        Which cohorts are in which tank, by the tank's id.
     tables : Path
         Folder in which tables of laboratory analyses are kept.
     waiting_halves : mapping
@@ -122,7 +137,8 @@ def plant(
     kinds = kinds_of(site, tables=tables)
     services = services or {}
     sensors = roster(site, kinds, services)
-    animals = animal_roster(site, kinds, stocked)
+    stages = known_stages(site)
+    animals = animal_roster(site, kinds, stocked, stages)
     read_as = site
     if not has_horizon:
         identity = site.identity.model_copy(update={"horizon": Horizon(past_h=1_000_000)})
@@ -137,6 +153,7 @@ def plant(
         animals=animals,
         decoder=Decoder(read_as, pairing=Pairing.restored(site, dict(waiting_halves))),
         kinds=kinds,
+        stages=stages,
         services=services,
         periods=_periods(site, services),
     )

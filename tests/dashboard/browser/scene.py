@@ -16,7 +16,7 @@ from analysis.animal.stress import Band, Driver
 from analysis.water.properties import Seawater
 from ingest.store import registry
 from ingest.store.alarms import AlarmRow
-from ingest.store.block import BlockCommit, Occurrence, StressRow, TankState
+from ingest.store.block import AnimalRow, BlockCommit, Occurrence, StressRow
 from ingest.store.ledger import Event
 from ingest.store.readings import ReadingRows
 from ingest.store.refused import Refusal
@@ -310,13 +310,13 @@ def _trouble(scene: Scene) -> None:
     )
 
 
-def _animal_state(row: StressRow) -> TankState:
+def _animal_state(row: StressRow) -> AnimalRow:
     """Return the newest row of the record as the chain's own state of the tank."""
     latest = {name: getattr(row, name) for name in ("stress", "range_strain", "change_strain", "exposure_strain")}
     latest |= {name: getattr(row, name) for name in ("thermal_strain", "internal_mOsm_kg", "gap_mOsm_kg")}
     latest |= {"driver": int(Driver.CHANGE), "band": int(Band.STRAINED)}
     state = {"updated_at_us": row.measured_at, "acclimated": row.acclimated_mOsm_kg}
-    return TankState(row.tank, row.measured_at, {"cohort": row.cohort, "state": state, "latest": latest})
+    return AnimalRow(row.cohort, row.tank, row.measured_at, {"cohort": row.cohort, "state": state, "latest": latest})
 
 
 def _felt(scene: Scene) -> None:

@@ -13,7 +13,7 @@ import numpy as np
 from analysis.alarm.events import Event
 from analysis.alarm.kinds import ConditionKind
 from ingest.chain.admission import admit
-from ingest.chain.animals import Stocked
+from ingest.chain.animal_roster import Stocked
 from ingest.chain.block import RawBlock
 from ingest.chain.chain import Happened, act, fresh_state, run, tick
 from ingest.reading import RawReading
@@ -29,7 +29,7 @@ def plant_of(text: str) -> Plant:
     """Return the plant of a site file, with the animals that it names and made-up numbers of a store."""
     site = load_text(text)
     stocked = {
-        tank.id: Stocked(tank.first_stock.id, tank.first_stock.animal, tank.first_stock.used_to_salinity)
+        tank.id: (Stocked(tank.first_stock.id, tank.first_stock.animal, tank.first_stock.used_to_salinity),)
         for tank in site.tanks
         if tank.first_stock is not None
     }

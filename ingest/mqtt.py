@@ -2,7 +2,8 @@
 
 What the broker and the client do behind one's back, and what is done about it here:
 
-- An exception in a callback kills paho's network thread: the callback only puts the message into a queue.
+- An exception in a callback kills paho's network thread: the callback only puts the message into a queue,
+  and lets nothing through.
 - `connect` raises when the broker is down, `connect_async` keeps trying; subscriptions are made anew at each connect.
 - A message is redelivered only after a reconnect; an acknowledgement that belongs to an earlier connection is
   dropped, since its packet id may mean another message by now.
@@ -13,9 +14,10 @@ What the broker and the client do behind one's back, and what is done about it h
 from __future__ import annotations
 
 import ssl
+import sys
 import threading
 from collections import deque
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Any, NamedTuple
 
 import msgspec
@@ -64,7 +66,7 @@ class Access:
     client_id: str
     is_version_5: bool = False
     user: str | None = None
-    password: str | None = None
+    password: str | None = field(default=None, repr=False)
     is_tls: bool = False
     ca_file: Path | None = None
     status_topic: str | None = None
@@ -111,6 +113,7 @@ class Intake:
         self._connection = 0
         self._client = make_client(access, has_manual_ack=True)
         self._client.on_connect = self._on_connect
+        self._client.on_connect_fail = self._on_connect_fail
         self._client.on_disconnect = self._on_disconnect
         self._client.on_message = self._on_message
         self._client.on_subscribe = self._on_subscribe
@@ -224,13 +227,31 @@ class Intake:
             self.last_problem = f"the broker refused {refused} subscriptions"
             log.error("subscriptions refused by the broker", count=refused)
 
+    def _on_connect_fail(self, _client: paho.Client, _data: Any) -> None:
+        # paho calls this where it has caught what went wrong: no listener, no route, a certificate that is not believed.
+        error = sys.exc_info()[1]
+        problem = "the broker cannot be reached" + (f": {error}" if error else "")
+        if problem != self.last_problem:
+            log.warning("broker not reached", host=self._access.host, port=self._access.port, reason=str(error or ""))
+        self.last_problem = problem
+
     def _on_disconnect(self, _client: paho.Client, _data: Any, _flags: Any, reason: Any, _properties: Any) -> None:
-        self.is_connected = False
-        if reason.is_failure:
+        was_connected, self.is_connected = self.is_connected, False
+        # From here on, not only from the next connection on, acknowledgements of what came before are stale.
+        self._connection += 1
+        if reason.is_failure and was_connected:  # After a refusal, which is said already, there was nothing to lose.
             self.last_problem = f"connection lost: {reason}"
             log.warning("connection to the broker lost", reason=str(reason))
 
     def _on_message(self, _client: paho.Client, _data: Any, message: paho.MQTTMessage) -> None:
+        try:
+            self._take_in(message)
+        except Exception:
+            # Raised further, it would end paho's thread for good. Not acknowledged, the message comes again after a reconnect.
+            self.last_problem = "a message could not be taken in"
+            log.exception("message not taken in")
+
+    def _take_in(self, message: paho.MQTTMessage) -> None:
         received = Received(
             message.topic, bytes(message.payload), self._clock.now_us(), message.retain, message.mid, self._connection
         )

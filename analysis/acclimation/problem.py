@@ -43,6 +43,8 @@ class Problem:
     windows: Windows
     blends: FloatArray
     has_target_temperature: bool
+    ways: tuple[tuple[RollingLimit, float, float, float], ...]
+    """Of each limit that measures the way: itself, the target's level, and its efforts down and up."""
     work: Work = field(default_factory=Work)
 
     @property
@@ -78,23 +80,16 @@ class Problem:
         tank : ScenarioTank
             Any shape whose last axis is the scenario.
         """
-        total = np.zeros(tank.salinity.shape[:-1])
-        if not any(limit.quantity == "salinity" for limit in self.rolling):
-            total = np.abs(
-                tank.salinity[..., NOMINAL] - self.target.salinity
-            )  # no rate: any measure of distance will do
-        for limit in self.rolling:
-            if not np.isfinite(limit.cap) or limit.quantity == "ph":
-                continue
-            if limit.quantity == "temperature_degC" and not self.has_target_temperature:
-                continue
-            level = tank.level(limit.quantity)[..., NOMINAL]
-            target = self.target.salinity if limit.quantity == "salinity" else self.target.temperature_degC
-            law = np.where(level > target, 1.0, 0.0)
-            down = limit.down.effort(level) - limit.down.effort(target)
-            up = limit.up.effort(target) - limit.up.effort(level)
-            effort = np.where(law > 0.0, down, up)
-            total = np.maximum(total, effort / limit.cap * limit.window_min / 60.0)
+        total = np.zeros(tank.water.mass_kg.shape[:-1])
+        known: dict[str, FloatArray] = {}
+        for limit, target, down, up in self.ways:
+            if limit.quantity not in known:
+                known[limit.quantity] = tank.level(limit.quantity)[..., NOMINAL]
+            level = known[limit.quantity]
+            effort = np.where(level > target, limit.down.effort(level) - down, up - limit.up.effort(level))
+            total = np.maximum(total, effort * (limit.window_min / 60.0 / limit.cap))
+        if "salinity" not in known:  # no rate: any measure of distance will do
+            total = np.maximum(total, np.abs(tank.salinity[..., NOMINAL] - self.target.salinity))
         return total
 
     def is_there(self, tank: ScenarioTank) -> BoolArray:
@@ -128,8 +123,23 @@ def problem_of(task: AcclimationTask, limits: Limits, *, slowness: float = 1.0, 
         windows=windows,
         blends=_blends(task, fine=wants_temperature),
         has_target_temperature=wants_temperature,
+        ways=_ways(task, rolling, wants_temperature=wants_temperature),
         work=work or Work(),
     )
+
+
+def _ways(
+    task: AcclimationTask, rolling: tuple[RollingLimit, ...], *, wants_temperature: bool
+) -> tuple[tuple[RollingLimit, float, float, float], ...]:
+    targets = {"salinity": task.target.salinity}
+    if wants_temperature:
+        targets["temperature_degC"] = task.target.temperature_degC
+    ways = []
+    for limit in rolling:
+        if limit.quantity in targets:
+            target = targets[limit.quantity]
+            ways.append((limit, target, float(limit.down.effort(target)), float(limit.up.effort(target))))
+    return tuple(ways)
 
 
 def _can_matter(limit: RollingLimit, task: AcclimationTask, slowness: float) -> bool:

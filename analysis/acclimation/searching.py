@@ -23,6 +23,8 @@ STRESS_SLACK: Final = 0.5
 """A score is shown without decimals; half a point is no difference."""
 WORTH_HOURS_SHARE: Final = 0.005
 """A schedule this much longer than the fastest is preferred when it has fewer steps or rounder litres."""
+SATURATED: Final = 99.0
+"""A score at its end does not show that slower was better. [0-100]"""
 LADDER: Final = (0.7, 0.5, 0.35, 0.25, 0.15, 0.1, 0.05)
 """Shares of the rates to try, one after the other, until the stress of the journey is below its cap."""
 HALVINGS: Final = 4
@@ -157,7 +159,7 @@ def _slowed(
         if not _is_too_much(attempt[1], limits):
             best = attempt
             break
-        if attempt[1].worst > before - STRESS_SLACK:
+        if SATURATED > attempt[1].worst > before - STRESS_SLACK:
             break  # slower does not help: it is not the journey's pace that makes the stress
         high, before = low, attempt[1].worst
     if best is None:

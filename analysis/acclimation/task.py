@@ -14,6 +14,10 @@ from analysis.acclimation.source import SEAWATER, Salt, SourceWater
 from analysis.errors import InvalidInputError
 
 NAN: Final = float("nan")
+NEAR: Final = 0.25
+NEAR_LOW: Final = 0.1
+LOW: Final = 2.5
+"""Below this salinity, but for fresh water itself, a plan comes nearer to its target."""
 
 
 class Method(StrEnum):
@@ -194,7 +198,7 @@ class AcclimationTask:
     rests : tuple of Rest
         Times of day without a step.
     tolerance_salinity, tolerance_K : float
-        How near is arrived.
+        How near is arrived. NaN: 0.25, and 0.1 for targets from 0.25 to 2.5, where every tenth counts.
     allowances : Allowances
         Errors that may happen without breaking a limit.
     grid : Grid
@@ -220,7 +224,7 @@ class AcclimationTask:
     used_to_salinity: float = NAN
     working_hours: tuple[time, time] | None = None
     rests: tuple[Rest, ...] = ()
-    tolerance_salinity: float = 0.25
+    tolerance_salinity: float = NAN
     tolerance_K: float = 0.5
     allowances: Allowances = field(default_factory=Allowances)
     grid: Grid = field(default_factory=Grid)
@@ -239,6 +243,9 @@ class AcclimationTask:
         names = [source.name for source in self.sources]
         if len(set(names)) != len(names):
             raise InvalidInputError("names of source waters", found=names, allowed="each name once")
+        if np.isnan(self.tolerance_salinity):
+            near = NEAR_LOW if NEAR <= self.target.salinity < LOW else NEAR
+            object.__setattr__(self, "tolerance_salinity", near)
         if not self.tolerance_salinity > 0.0 or not self.tolerance_K > 0.0:
             raise InvalidInputError(
                 "tolerance at the target", found=(self.tolerance_salinity, self.tolerance_K), allowed="more than 0"

@@ -19,8 +19,8 @@ if TYPE_CHECKING:
 
 FONT: Final = "Helvetica"
 COLUMNS: Final = (
-    ("", 7), ("start", 27), ("drain L", 16), ("add", 50), ("salinity", 17), ("between", 23), ("degC", 13),
-    ("mOsm/kg", 18), ("stress", 14), ("done by", 30), ("measured", 26),
+    ("", 7), ("start", 27), ("drain L", 16), ("add", 68), ("salinity", 17), ("between", 23), ("degC", 13),
+    ("mOsm/kg", 18), ("stress", 14), ("done by", 38), ("measured", 34),
 )  # fmt: skip
 """Heading and width in millimetres; the last two are for the pencil."""
 INK: Final = (20, 40, 60)

@@ -83,7 +83,7 @@ def _add_time_options(group: argparse._ArgumentGroup) -> None:
         "--clock-min", type=float, default=5.0, help="steps begin at multiples of this [min] (default: 5)"
     )
     group.add_argument(
-        "--tolerance", type=float, default=0.25, help="how near to the target is arrived (default: 0.25)"
+        "--tolerance", type=float, help="how near to the target is arrived (default: 0.25; 0.1 from 0.25 to 2.5)"
     )
 
 
@@ -169,7 +169,7 @@ def task_of(args: argparse.Namespace, stage: Stage) -> AcclimationTask:
         used_to_salinity=_or_nan(args.used_to_salinity),
         working_hours=None if args.work is None else _span(args.work, where="--work"),
         rests=tuple(Rest(*_span(text, where="--rest")) for text in args.rest),
-        tolerance_salinity=args.tolerance,
+        tolerance_salinity=_or_nan(args.tolerance),
         allowances=Allowances(args.allow_volume_percent / 100.0, args.allow_source, args.allow_late_min),
         grid=Grid(litres=_or_nan(args.litres), clock_min=args.clock_min, longest_step_min=max(30.0, args.clock_min)),
         packed=_packed(args),

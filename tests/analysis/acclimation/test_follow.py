@@ -253,7 +253,10 @@ def test_planning_anew_brings_a_disturbed_tank_home_inside_the_limits(
     assert abs(float(hatchery.water.practical_salinity) - 10.0) <= 0.7
     track = np.array(hatchery.salinity)
     share = _rate_share(track, rates(SHRIMP, direction="down", per="h"), 3600)
-    stepped = _largest_change(track, 600) / (0.2 * (20.0 - 2.0))
+    (allowed,) = [
+        limit.down.bands[0].allowed for limit in limits(of).rolling if limit.limit.name == "salinity per step"
+    ]
+    stepped = _largest_change(track, 600) / allowed
     anew = sum(done.what == "planned anew" for done in state.record)
     say(
         f"volume x{volume_factor}, source {source_salinity}: home in {track.size / 3600:.1f} h, planned anew {anew} times,"

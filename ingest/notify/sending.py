@@ -108,7 +108,8 @@ class Sender:
     def reports(self) -> list[Report]:
         """Return the attempts since the last call. A thread that died is told, and its parcels count as failed attempts."""
         found: list[Report] = []
-        dead = [address for address, lane in self._lanes.items() if not lane.thread.is_alive()]
+        has_to_live = not self._stop.is_set()
+        dead = [address for address, lane in self._lanes.items() if has_to_live and not lane.thread.is_alive()]
         while not self._reports.empty():
             report = self._reports.get_nowait()
             self._lanes[report.parcel.address].handed.pop(report.parcel.delivery, None)

@@ -325,7 +325,7 @@ def _trends(period: Period) -> list[Reason]:
     rows = period.since(period.cleaned_at_us if period.cleaned_at_us is not None else -(1 << 62))
     own, times = _believable(period)[rows], period.measured_at_us[rows]
     neighbour = None if period.neighbour_salinity is None else period.neighbour_salinity[rows]
-    has_neighbour = neighbour is not None and bool(np.isfinite(neighbour).mean() > 0.5)
+    has_neighbour = neighbour is not None and bool(np.isfinite(neighbour).sum() > 0.5 * neighbour.shape[0])
     with np.errstate(invalid="ignore", divide="ignore"):
         judged = own / neighbour if has_neighbour and neighbour is not None else own
     causes = [] if has_neighbour else [period.temperature_degC[rows]]

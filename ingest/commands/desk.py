@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from ingest.commands import alarms, calibration
+from ingest.commands import alarms, bench_sample, calibration
 from ingest.commands.roles import is_at_least, weaker
 from ingest.commands.ruling import Ruling
 
@@ -16,7 +16,12 @@ if TYPE_CHECKING:
 
 RELOAD = "site.reload"
 
-NEEDED_ROLE: dict[str, str] = {**alarms.NEEDED_ROLE, **calibration.NEEDED_ROLE, RELOAD: "manager"}
+NEEDED_ROLE: dict[str, str] = {
+    **alarms.NEEDED_ROLE,
+    **calibration.NEEDED_ROLE,
+    **bench_sample.NEEDED_ROLE,
+    RELOAD: "manager",
+}
 """Which role each kind of command needs; what is not here is not known."""
 
 
@@ -27,6 +32,7 @@ def _reload(_command: Command, _context: Context) -> Ruling:
 _ROOMS: dict[str, Callable[[Command, Context], Ruling]] = {
     **dict.fromkeys(alarms.NEEDED_ROLE, alarms.rule),
     **dict.fromkeys(calibration.NEEDED_ROLE, calibration.rule),
+    bench_sample.BY_HAND: bench_sample.rule,
     RELOAD: _reload,
 }
 

@@ -159,6 +159,12 @@ def health(connection: sqlite3.Connection) -> dict[str, HealthRow]:
     return {row["sensor"]: HealthRow(**{**dict(row), "body": msgspec.json.decode(row["body"])}) for row in rows}
 
 
+def belief(connection: sqlite3.Connection, *, sensor: int) -> tuple[int, int] | None:
+    """Return how far a sensor (the store's number) was believed at its newest assessment, and since when; None before the first."""
+    row = connection.execute("SELECT belief, since FROM sensor_health WHERE sensor = ?", (sensor,)).fetchone()
+    return None if row is None else (int(row["belief"]), int(row["since"]))
+
+
 def upsert_health(
     connection: sqlite3.Connection, *, sensor: int, assessed_at: int, belief: int, since: int, body: dict[str, Any]
 ) -> None:

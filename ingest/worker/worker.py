@@ -28,6 +28,7 @@ from ingest.store.inbox import Inbox, InboxTaker
 from ingest.store.readings import as_sent
 from ingest.store.store import Store
 from ingest.topics import worker_status_topic
+from ingest.worker.assessing import Assessor
 from ingest.worker.bench import Bench
 from ingest.worker.calling import Calling
 from ingest.worker.committing import (
@@ -62,7 +63,7 @@ if TYPE_CHECKING:
     from ingest.mqtt import Received
     from ingest.reading import RawReading
     from ingest.site.models import Site
-    from ingest.store.block import Occurrence
+    from ingest.store.block import Occurrence, SensorWork
     from ingest.worker.registering import Numbers
 
 log = structlog.get_logger(__name__)
@@ -80,7 +81,8 @@ ROLLUP_LAG_US = 5 * 60 * MICROSECONDS_PER_SECOND
 CHECKPOINT_EVERY_S = 60.0
 FORWARDING_EVERY_S = 2.0
 REDERIVE_EVERY_S = 0.1
-"""A slice of what is derived again is done this often at most: live blocks have the greater part of the time."""
+"""A slice of what is derived again, or assessed, is done this often at most: live blocks have the greater part of the time."""
+ASSESS_EVERY_S = 3600.0
 RETRY_S = (0.1, 0.5, 1.0, 2.0, 5.0)
 """Waits between attempts to commit; the last one repeats. Nothing is acknowledged meanwhile."""
 NEVER_SPOKEN = -(2**63)
@@ -124,6 +126,7 @@ class Worker:
                 connection, site, text=text, actor=site.identity.default_actor.name, now_us=clock.now_us()
             )
         self._rederiver = Rederiver(self.store)
+        self._assessor = Assessor(self.store)
         self._committed_halves = "{}"
         self.plant = self._plant(site, text, numbers)
         self._newest_us: list[int] = []
@@ -290,6 +293,10 @@ class Worker:
             self._schedule.make_due("rollup")
         if self._rederiver.has_work and self._schedule.is_due("rederive", REDERIVE_EVERY_S):
             self.rederive()
+        if self._schedule.is_due("assess", ASSESS_EVERY_S):
+            self._assessor.begin(now_us=self._clock.now_us())
+        if self._assessor.is_running and self._schedule.is_due("assess step", REDERIVE_EVERY_S):
+            self._assessor.step(self.plant)
         if self._schedule.is_due("checkpoint", CHECKPOINT_EVERY_S):
             self.store.checkpoint()
 
@@ -356,8 +363,8 @@ class Worker:
             self._inbox_seq = seq
             if ruling.outcome == "applied":
                 self.state = context.state
-            if ruling.work is not None and ruling.work.services:
-                self._take_up_services()
+            if ruling.work is not None and ruling.outcome == "applied":
+                self._take_up(ruling.work)
             self._rederiver.has_work |= bool(ruling.jobs)
             if ruling.has_to_reload:
                 self._wants_reload.set()
@@ -365,8 +372,11 @@ class Worker:
                 "command", kind=command.kind, subject=command.subject, outcome=ruling.outcome, reason=ruling.reason
             )
 
-    def _take_up_services(self) -> None:
-        """Let what has been done to sensors hold from the next block on."""
+    def _take_up(self, work: SensorWork) -> None:
+        """Let what has been done to sensors hold from the next block on, and look at them again."""
+        self._schedule.make_due("assess")
+        if not work.services:
+            return
         connection = self.store.connection
         derivation = registry.known_derivation(
             connection,
@@ -375,6 +385,12 @@ class Worker:
             calibration_set=calibrations.calibration_set(connection),
         )
         self.plant = self.plant.after_services(restoring.services(connection), derivation=derivation)
+
+    def assess(self) -> None:
+        """Find out at once how far each sensor can be believed."""
+        self._assessor.begin(now_us=self._clock.now_us())
+        while self._assessor.step(self.plant):
+            pass
 
     def rederive(self) -> bool:
         """Do one slice of what has to be derived again; return whether there may be more to do."""

@@ -3,14 +3,11 @@
 from __future__ import annotations
 
 import sys
-from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TYPE_CHECKING, Any, TextIO
-from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
-from tqdm import tqdm
 
 from analysis.arrays import MICROSECONDS_PER_SECOND
 from analysis.errors import EuryhaleError, InvalidInputError
@@ -21,21 +18,23 @@ from analysis.sensor.quality.limits import DEFAULT_SUSPECT_SPAN, Surroundings, d
 from analysis.sensor.quality.state import QualityState
 from analysis.sensor.quality.thresholds import Thresholds
 from analysis.sensor.quality.words import QualityTest
-from analysis.water.compensation import (
-    DEFAULT_COEFFICIENT_PERCENT_PER_K,
-    DEFAULT_REFERENCE_TEMPERATURE_DEGC,
-    Compensation,
-    CompensationMethod,
-    conductivity_from_specific_conductance,
-)
+from analysis.water.compensation import Compensation, conductivity_from_specific_conductance
 from analysis.water.properties import Seawater, WaterKind
-from analysis.water.units import CONDUCTIVITY_UNITS, conductivity_mS_cm_from
+from analysis.water.units import conductivity_mS_cm_from
 from dashboard.terminal.flag_table import write_flags
-from ingest.tables import Table, TableError, whole
+from dashboard.terminal.sensor_options import (
+    UsageError,
+    add_sensor_options,
+    add_water_option,
+    compensation_of,
+    destination,
+    water_kind_of,
+)
+from dashboard.terminal.table_options import columns_of, progress_bar, table_of, tell_remarks
+from ingest.tables import whole
 
 if TYPE_CHECKING:
     import argparse
-    from collections.abc import Iterator
 
     from analysis.arrays import FlagArray, FloatArray, IntArray
     from analysis.sensor.quality.result import QualityResult
@@ -53,10 +52,6 @@ OTHER_ERROR = 1
 
 QUANTITIES = ("conductivity", "temperature", "pressure")
 ROLES = ("time", *QUANTITIES)
-
-
-class UsageError(EuryhaleError):
-    """Options that do not go together."""
 
 
 def add_parser(subparsers: Any) -> None:
@@ -81,7 +76,9 @@ def add_parser(subparsers: Any) -> None:
         help="flags as they were given when each reading came, without what later readings revealed",
     )
     _add_place_options(parser.add_argument_group("where the sensor hangs"))
-    _add_sensor_options(parser.add_argument_group("the sensor and the water"))
+    group = parser.add_argument_group("the sensor and the water")
+    add_sensor_options(group)
+    add_water_option(group)
 
 
 def _add_place_options(group: argparse._ArgumentGroup) -> None:
@@ -103,26 +100,6 @@ def _add_place_options(group: argparse._ArgumentGroup) -> None:
             metavar=("LOW", "HIGH"),
             help=f"what the site expects: outside is suspect [{unit}]",
         )
-
-
-def _add_sensor_options(group: argparse._ArgumentGroup) -> None:
-    group.add_argument("--unit", choices=tuple(CONDUCTIVITY_UNITS), default="mS/cm", help="default: mS/cm")
-    group.add_argument(
-        "--compensated", action="store_true", help="the meter brought its reading to a reference temperature"
-    )
-    group.add_argument(
-        "--compensation",
-        choices=tuple(method.value for method in CompensationMethod),
-        help="how: linear (default) or natural-water (ISO 7888); implies --compensated",
-    )
-    group.add_argument("--coefficient", type=float, help="of linear compensation [%%/K] (default: 1.91)")
-    group.add_argument("--reference-temperature", type=float, help="of the meter [degC] (default: 25)")
-    group.add_argument(
-        "--water",
-        default="seawater",
-        metavar="seawater|sodium-chloride|FILE.yaml",
-        help="kind of water; a file holds a laboratory analysis of major ions (default: seawater)",
-    )
 
 
 @dataclass(frozen=True, slots=True)
@@ -154,16 +131,17 @@ def run(args: argparse.Namespace) -> int:
 
 def _run(args: argparse.Namespace) -> int:
     columns, times = _columns(args.column)
-    compensation, kind = _compensation(args), _water_kind(args.water)
+    compensation, kind = compensation_of(args), water_kind_of(args.water)
     if args.output is not None and args.output.resolve() == args.input.resolve():
         raise UsageError("--output must be another file than --input")
-    table = _table(args, columns, times)
-    with _progress("reading", " B") as progress:
+    units = {"conductivity": args.unit, "temperature": "degC", "pressure": "dbar"}
+    table = table_of(args, columns, times, units=units)
+    with progress_bar("reading", " B") as progress:
         chunk = whole(table, progress=progress)
     readings = _readings(chunk, args.unit, compensation, kind)
     result = _judged(args, readings)
     is_comma = table.layout.has_decimal_comma
-    with _destination(args.output) as target, _progress("writing", " rows") as progress:
+    with destination(args.output) as target, progress_bar("writing", " rows") as progress:
         write_flags(
             target,
             result,
@@ -181,75 +159,11 @@ def _run(args: argparse.Namespace) -> int:
 
 
 def _columns(pairs: list[str]) -> tuple[dict[str, str], list[str]]:
-    columns: dict[str, str] = {}
-    times: list[str] = []
-    for pair in pairs:
-        role, found, name = pair.partition("=")
-        if not found or not name or role not in ROLES:
-            raise UsageError(f"--column: found {pair!r}; allowed: QUANTITY=NAME with {', '.join(ROLES)}")
-        if role == "time":
-            times.append(name)
-        elif role in columns:
-            raise UsageError(f"--column: {role} is given twice")
-        else:
-            columns[role] = name
+    columns, times = columns_of(pairs, roles=ROLES)
     missing = [role for role in ("conductivity", "temperature") if role not in columns]
-    if not times:
-        missing.insert(0, "time")
-    if missing or len(times) > 2:
-        wanted = " and ".join(f"--column {role}=NAME" for role in missing) or "--column time=NAME once or twice"
-        raise UsageError(f"needs {wanted}")
+    if missing:
+        raise UsageError("needs " + " and ".join(f"--column {role}=NAME" for role in missing))
     return columns, times
-
-
-def _compensation(args: argparse.Namespace) -> Compensation | None:
-    settings = (args.coefficient, args.reference_temperature)
-    if not args.compensated and args.compensation is None:
-        if settings != (None, None):
-            raise UsageError("--coefficient and --reference-temperature need --compensated")
-        return None
-    try:
-        return Compensation(
-            method=CompensationMethod(args.compensation or CompensationMethod.LINEAR),
-            coefficient_percent_per_K=DEFAULT_COEFFICIENT_PERCENT_PER_K if settings[0] is None else settings[0],
-            reference_temperature_degC=DEFAULT_REFERENCE_TEMPERATURE_DEGC if settings[1] is None else settings[1],
-        )
-    except InvalidInputError as error:
-        raise UsageError(str(error)) from error
-
-
-def _water_kind(word: str) -> WaterKind:
-    if word == "seawater":
-        return Seawater()
-    if word == "sodium-chloride":
-        from analysis.water.sodium_chloride_water import SodiumChlorideWater
-
-        return SodiumChlorideWater()
-    if word.lower().endswith((".yaml", ".yml")):
-        from dashboard.terminal.analysis_file import water_of_analysis_file
-
-        return water_of_analysis_file(Path(word))
-    raise UsageError(f"--water: found {word!r}; allowed: seawater, sodium-chloride, or a file that ends in .yaml")
-
-
-def _table(args: argparse.Namespace, columns: dict[str, str], times: list[str]) -> Table:
-    try:
-        zone = ZoneInfo(args.zone) if args.zone else None
-    except (ZoneInfoNotFoundError, ValueError) as error:
-        raise UsageError(f"--zone: found {args.zone!r}; allowed: an IANA zone such as Europe/Lisbon") from error
-    try:
-        return Table(
-            args.input,
-            columns=columns,
-            time=times,
-            time_format=args.time_format,
-            zone=zone,
-            units={"conductivity": args.unit, "temperature": "degC", "pressure": "dbar"},
-        )
-    except TableError as error:
-        if error.column in {*columns.values(), *times} and error.found == "no such column":
-            raise UsageError(str(error)) from error
-        raise
 
 
 def _readings(chunk: Chunk, unit: str, compensation: Compensation | None, kind: WaterKind) -> Readings:
@@ -322,10 +236,7 @@ def _tell(chunk: Chunk, readings: Readings, result: QualityResult, compensation:
         spoken = int(((flags == Quality.SUSPECT) | (flags == Quality.FAIL)).any(axis=0).sum())
         if spoken:
             print(f"  {test.name.lower().replace('_', ' ')}: {spoken}", file=sys.stderr)
-    for remark in chunk.remarks[:3]:
-        print(f"line {remark.line}, {remark.column}: found {remark.found}; allowed: {remark.allowed}", file=sys.stderr)
-    if len(chunk.remarks) > 3:
-        print(f"and {len(chunk.remarks) - 3} more such cells", file=sys.stderr)
+    tell_remarks(chunk)
     evidence = check_compensation(
         readings.reported,
         temperature_degC=readings.temperature,
@@ -334,31 +245,3 @@ def _tell(chunk: Chunk, readings: Readings, result: QualityResult, compensation:
         compensation=compensation,
     )
     print(f"compensation: {evidence.sentence}", file=sys.stderr)
-
-
-@contextmanager
-def _progress(what: str, unit: str) -> Iterator[Any]:
-    """Yield a function of (done, in all) that moves a bar on the error channel, where that is a terminal."""
-    bar = tqdm(desc=what, unit=unit, unit_scale=True, file=sys.stderr, disable=not sys.stderr.isatty(), leave=False)
-    with bar:
-
-        def moved(done: int, total: int) -> None:
-            bar.total = total
-            bar.update(done - bar.n)
-
-        yield moved
-
-
-@contextmanager
-def _destination(path: Path | None) -> Iterator[TextIO]:
-    """Yield where to write: a file that appears under its name only when it is whole, or standard output."""
-    if path is None:
-        yield sys.stdout
-        return
-    part = path.with_name(path.name + ".part")
-    try:
-        with part.open("w", encoding="utf-8", newline="") as target:
-            yield target
-        part.replace(path)
-    finally:
-        part.unlink(missing_ok=True)

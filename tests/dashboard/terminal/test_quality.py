@@ -168,7 +168,7 @@ def test_standard_output(tmp_path, capsys):
     [
         (("--column", "time=when", "--column", "conductivity=cond"), "needs --column temperature=NAME"),
         (("--column", "conductivity=cond", "--column", "temperature=temp"), "needs --column time=NAME"),
-        ((*COLUMNS, "--column", "time=a", "--column", "time=b"), "once or (for a date),
+        ((*COLUMNS, "--column", "time=a", "--column", "time=b"), "once or (for a date"),
         ((*COLUMNS, "--column", "depth=d"), "found 'depth=d'"),
         ((*COLUMNS, "--column", "temperature=t"), "temperature is given twice"),
         ((*COLUMNS[:-1], "temperature=tmp"), "nearest: temp"),

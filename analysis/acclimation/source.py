@@ -15,6 +15,9 @@ NAN: Final = float("nan")
 SEAWATER: Final = "seawater"
 SODIUM_CHLORIDE: Final = "sodium-chloride"
 CHLORINE_FREE_MG_L: Final = 0.0
+RELEASED_WITHIN_K: Final = 2.0
+RELEASED_WITHIN_PH: Final = 0.5
+"""A source that has changed more than this since its release is closed again. Common practice."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -109,7 +112,15 @@ class SourceWater:
         """Return why the source may not be used at *now*; empty where it may."""
         if self.release is None:
             return "nobody has released it"
-        return self.release.obstacle(now)
+        return self.release.obstacle(now) or self._changed_since(self.release)
+
+    def _changed_since(self, release: Release) -> str:
+        """Return what is no longer as it was when the source was released; empty where nothing is."""
+        if abs(self.temperature_degC - release.temperature_degC) > RELEASED_WITHIN_K:
+            return f"it was released at {release.temperature_degC:g} degC and has {self.temperature_degC:g} degC"
+        if abs(self.ph - release.ph) > RELEASED_WITHIN_PH:
+            return f"it was released at pH {release.ph:g} and has {self.ph:g}"
+        return ""
 
 
 @dataclass(frozen=True, slots=True)

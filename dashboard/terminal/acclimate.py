@@ -4,14 +4,17 @@ from __future__ import annotations
 
 import csv
 import json
+import math
 import sys
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
+from analysis.acclimation.arrival import DispatchSheet
 from analysis.acclimation.plan import planned
 from analysis.acclimation.summary import plan_summary
+from analysis.acclimation.task import Water
 from analysis.errors import InvalidInputError, MissingPackageError
-from dashboard.terminal.transfer_options import add_options, limits_of, stage_of, task_of
+from dashboard.terminal.transfer_options import add_options, limits_of, moment_of, stage_of, task_of, zone_of
 
 if TYPE_CHECKING:
     import argparse
@@ -41,6 +44,13 @@ def add_parser(subparsers: Any) -> None:
     add_options(parser)
     parser.add_argument("--pdf", type=Path, metavar="FILE", help="write the sheet for the wall")
     parser.add_argument("--csv", type=Path, metavar="FILE", help="write the table of steps")
+    sheet = parser.add_argument_group("arrival and dispatch sheet")
+    sheet.add_argument("--arrival-pdf", type=Path, metavar="FILE", help="write it; needs --since and --hours-packed")
+    sheet.add_argument("--since", metavar="TIME", help="since when they are used to the water they come from")
+    sheet.add_argument("--number", type=int, default=0, help="of animals")
+    sheet.add_argument("--bags", type=int, default=1, help="in which they travel")
+    sheet.add_argument("--sender", default="", help="name")
+    sheet.add_argument("--receiver", default="", help="name")
     parser.add_argument("--released-only", action="store_true", help="leave out sources that nobody has released")
 
 
@@ -49,6 +59,7 @@ def run(args: argparse.Namespace) -> int:
     try:
         stage = stage_of(args)
         plan = planned(task_of(args, stage), stage, limits_of(args, stage), needs_release=args.released_only)
+        sheet = None if args.arrival_pdf is None else _arrival_sheet(args, plan)
     except InvalidInputError as error:
         print(f"euryhale acclimate: {error}", file=sys.stderr)
         return USAGE_ERROR
@@ -61,10 +72,42 @@ def run(args: argparse.Namespace) -> int:
             write_csv(plan, args.csv)
         if args.pdf is not None:
             write_pdf(plan, args.pdf)
+        if sheet is not None:
+            _write_arrival_pdf(sheet, args.arrival_pdf)
     except (OSError, MissingPackageError) as error:
         print(f"euryhale acclimate: {error}", file=sys.stderr)
         return OTHER_ERROR
     return 0
+
+
+def _arrival_sheet(args: argparse.Namespace, plan: Plan) -> DispatchSheet:
+    """Return the sheet that goes with the animals, from the options and the task."""
+    task = plan.task
+    if args.since is None or task.packed is None:
+        raise InvalidInputError("--arrival-pdf", found="no --since or no --hours-packed", allowed="both")
+    source = task.sources[0] if task.sources else None
+    warmth, ph = (math.nan, math.nan) if source is None else (source.temperature_degC, source.ph)
+    return DispatchSheet(
+        animal=task.animal,
+        number=args.number,
+        acclimated_to=Water(task.home_salinity, task.start.temperature_degC, task.start.ph),
+        since=moment_of(args.since, zone_of(args.zone), where="--since"),
+        packed_at=task.clock(-60.0 * task.packed.hours_packed),
+        packed=task.packed,
+        bags=args.bags,
+        litres_per_bag=task.vessel.volume_L / max(args.bags, 1),
+        receiving=Water(task.target.salinity, warmth, ph),
+        sender=args.sender,
+        receiver=args.receiver,
+    )
+
+
+def _write_arrival_pdf(sheet: DispatchSheet, path: Path) -> None:
+    try:
+        from dashboard.reports.acclimation_sheet import dispatch_sheet_pdf
+    except ModuleNotFoundError as error:
+        raise MissingPackageError("fpdf2", extra="all", need="--arrival-pdf") from error
+    path.write_bytes(dispatch_sheet_pdf(sheet))
 
 
 def plan_lines(plan: Plan, *, title: str = "Plan") -> list[str]:

@@ -150,7 +150,7 @@ def task_of(args: argparse.Namespace, stage: Stage) -> AcclimationTask:
     InvalidInputError
         With the option that cannot be used.
     """
-    zone = _zone(args.zone)
+    zone = zone_of(args.zone)
     sources = _sources(args, zone)
     warmth = args.from_temperature
     if warmth is None:
@@ -250,7 +250,7 @@ def _release(text: str, zone: tzinfo) -> tuple[str, Release]:
     ions = {"chloride": _number(parts[3], where="--released")} if len(parts) == 4 else {}
     return name.strip(), Release(
         by=parts[0],
-        valid_until=_moment(parts[1], zone, where="--released"),
+        valid_until=moment_of(parts[1], zone, where="--released"),
         chlorine_mg_L=_number(parts[2], where="--released"),
         ions_mg_L=ions,
     )
@@ -278,7 +278,8 @@ def _packed(args: argparse.Namespace) -> PackedWater | None:
     )
 
 
-def _zone(name: str | None) -> tzinfo:
+def zone_of(name: str | None) -> tzinfo:
+    """Return the zone of an IANA name; of this machine where none is given."""
     if name is None:
         local = to_datetime(SystemClock().now_us()).astimezone().tzinfo
         assert local is not None  # noqa: S101 - astimezone() always sets one
@@ -296,10 +297,11 @@ def _begin(text: str | None, zone: tzinfo) -> datetime:
     if len(text) <= 5:
         clock = _clock(text, where="--start")
         return now.replace(hour=clock.hour, minute=clock.minute, second=0, microsecond=0)
-    return _moment(text, zone, where="--start")
+    return moment_of(text, zone, where="--start")
 
 
-def _moment(text: str, zone: tzinfo, *, where: str) -> datetime:
+def moment_of(text: str, zone: tzinfo, *, where: str) -> datetime:
+    """Return the moment that *text* names, in *zone* where it has no offset."""
     try:
         moment = datetime.fromisoformat(text)
     except ValueError as error:

@@ -159,6 +159,7 @@ def release(**changes: object) -> Release:
         (release(chlorine_mg_L=0.1), "chlorine 0.1 mg/L"),
         (release(chlorine_mg_L=math.nan), "chlorine was not measured"),
         (release(valid_until=EIGHT - timedelta(hours=1)), "ended"),
+        (release(temperature_degC=22.0), "released at 22 degC and has 28"),
     ],
 )
 def test_a_source_whose_release_does_not_hold_is_not_used(given: Release, words: str) -> None:
@@ -173,6 +174,12 @@ def test_a_source_whose_release_does_not_hold_is_not_used(given: Release, words:
     assert any(words in caution for caution in other.cautions)
 
 
+def test_a_source_whose_ph_has_moved_is_closed_again() -> None:
+    water = SourceWater("well", 0.0, 28.0, ph=6.9, release=release(ph=7.9, temperature_degC=27.0))
+    assert "released at pH 7.9" in water.obstacle(EIGHT)
+    assert replace(water, ph=7.6).obstacle(EIGHT) == ""
+
+
 def test_an_unreleased_source_is_planned_with_but_said_or_left_out() -> None:
     assert any("releases each source" in caution for caution in plan(SHORT).cautions)
     strict = planned(SHORT, tables.find(SHRIMP), limits(SHORT), needs_release=True)
@@ -183,7 +190,7 @@ def test_an_unreleased_source_is_planned_with_but_said_or_left_out() -> None:
 def test_an_ion_gate_opens_by_the_release_of_the_fresh_water() -> None:
     def needs(chloride: float) -> tuple[str, ...]:
         water = replace(TAP, release=release(ions_mg_L={"chloride": chloride}))
-        return plan(task("sciaenops-ocellatus/juvenile", 6.0, 1.5, (water,), degC=25.0)).needs_yes
+        return plan(task("sciaenops-ocellatus/juvenile", 2.5, 1.5, (water,), degC=25.0)).needs_yes
 
     assert any("chloride" in need for need in needs(60.0))
     assert not any("chloride" in need for need in needs(200.0))
@@ -218,7 +225,7 @@ def test_a_schedule_that_outlasts_the_bag_says_where_to_go_first() -> None:
 
 
 def test_ph_is_kept_where_it_is_known_and_said_where_it_is_not() -> None:
-    acid, hard = SourceWater("bog", 0.0, 28.0, ph=6.5), task(SHRIMP, 20.0, 10.0, ph=8.2)
+    acid, hard = SourceWater("bog", 0.0, 28.0, ph=6.5), task(SHRIMP, 16.0, 10.0, ph=8.2)
     with_ph = plan(replace(hard, sources=(acid,)))
     without = plan(hard)
     assert with_ph.total_hours > without.total_hours

@@ -109,6 +109,27 @@ def test_a_bag_with_ammonia_is_told_to_move_first(capsys: pytest.CaptureFixture[
     assert "move to an aerated acclimation tank first" in answer["reason"]
 
 
+def test_the_arrival_sheet_is_written_with_what_was_told(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    sheet = tmp_path / "arrival.pdf"
+    options = (
+        *SHORT,
+        "--hours-packed",
+        "6",
+        "--density",
+        "400",
+        "--number",
+        "80000",
+        "--sender",
+        "Marta",
+        "--arrival-pdf",
+        str(sheet),
+    )
+    assert run(*options) == 2
+    assert "--since" in capsys.readouterr().err
+    assert run(*options, "--since", "2026-11-28T08:00") == 0
+    assert sheet.read_bytes().startswith(b"%PDF-")
+
+
 def test_dosing_salt_by_name(capsys: pytest.CaptureFixture[str]) -> None:
     options = (
         "--animal", "oreochromis-niloticus/juvenile", "--from-salinity", "0", "--to-salinity", "3", "--from-temperature", "27",

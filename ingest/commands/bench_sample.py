@@ -41,6 +41,9 @@ FREE_OF_TEMPERATURE = frozenset(
 )
 """Scales that mean the same at every temperature; a reading on any other needs the temperature of the sample."""
 
+REASONS = ("no_such_place", "unusable_details", "in_the_future", "temperature_missing", "unusable_reading")
+"""Why a sample may be refused."""
+
 
 class SampleEntry(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
     """The body of the command.

@@ -290,6 +290,13 @@ CALLS: Final = {
     "answer_board": "{person}, if you are going: acknowledge on the board, so that nobody else is called.",
     "answer_code": "{person}, if you are going: send this code to {topic} at {host}.",
     "stamp": "{site}, {time}",
+    "problems": {
+        "unsent": "messages to people do not go out since {since}",
+        "nobody": "nobody is on duty: nobody could be called",
+        "unheard": "the broker on which people answer cannot be reached",
+        "no_sign": "the sign of life does not get through: {reason}",
+        "unwritten": "calls cannot be written down: {reason}",
+    },
     "test_title": "Test: {site}",
     "test": "{person}, this is the daily test of the calls. Nothing is wrong. If it stays away, tell the others.",
 }
@@ -344,6 +351,31 @@ FLAGS: Final = {
 QUALITIES: Final = {1: "believe", 2: "not checked", 3: "doubt", 4: "do not believe", 9: "no value"}
 
 SENSOR_STATES: Final = {"silent": "silent", "never": "nothing heard yet", "live": "live"}
+
+SENSOR_BELIEFS: Final = {0: "believe", 1: "doubt", 2: "do not use"}
+
+SENSOR_FINDINGS: Final[dict[str, tuple[str, ...]]] = {
+    "silent": ("silent for {silent_h:.1f} h", "never heard"),
+    "values-missing": ("{missing_percent:.0f} % of its values are missing",),
+    "in-air": ("in air: {in_air_percent:.0f} % of the last hour next to nothing conducts",),
+    "out-of-range": ("{out_of_range_percent:.0f} % of the last hour beyond what it can measure",),
+    "stuck": ("stuck: the value does not move",),
+    "attenuated": ("moves less than this water does",),
+    "noisy": ("jumps about more than its water does",),
+    "fouling": ("creeps away from its neighbour: {change_percent:+.1f} % in {days:.1f} days",),
+    "slow-fall": ("falls slowly: {change_percent:+.1f} % in {days:.1f} days",),
+    "neighbour-falls": ("its neighbour creeps down: clean that one",),
+    "neighbour-disagrees": ("differs from its neighbour by {difference:+.2f} ({difference_percent:+.1f} %)",),
+    "sample-disagrees": ("differs from the bench sample by {difference:+.2f}, allowed {allowed_difference:.2f}",),
+    "sample-agrees": ("agrees with the bench sample within {allowed_difference:.2f}",),
+    "compensation-doubted": (
+        "the declared temperature compensation does not fit: {share_followed:.2f} of the change with temperature, expected"
+        " {expected_share:.0f}",
+    ),
+    "calibration-overdue": ("calibration due since {overdue_days:.0f} days",),
+    "unknown": ("something is wrong with it",),
+}
+"""Templates of each finding, the fullest first."""
 
 REFUSALS: Final = {
     "unknown_topic": "No probe is declared for this topic.",
@@ -401,6 +433,16 @@ COMMAND_REASONS: Final = {
     "not_out_of_service": "it is not out of service",
     "nothing_hidden": "nothing is put aside",
     "without_reason": "a reason is needed",
+    "no_such_sensor": "there is no such probe",
+    "no_such_place": "there is no such tank or probe",
+    "in_the_future": "its time lies in the future",
+    "expired_standard": "the standard has expired: take a fresh one",
+    "unusable_standard": "there is no standard of that value",
+    "standard_temperature_unknown": "the standard is known from 0 to 55 °C only",
+    "unusable_reading": "the reading can not be right",
+    "factor_out_of_range": "reading and standard are too far apart: wrong bottle, or a broken cell",
+    "not_linear": "the standards do not lie on one line: the cell needs service",
+    "temperature_missing": "the temperature of the sample is needed",
     "unknown": "the worker refused it",
 }
 

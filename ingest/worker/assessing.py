@@ -84,6 +84,10 @@ class Assessor:
                 self._assessment = None
         except sqlite3.OperationalError as error:
             log.warning("the assessment of the sensors waits", reason=str(error))
+        except Exception:
+            # What cannot be judged this hour may be in the next; alarms must go on meanwhile.
+            log.exception("the assessment of the sensors is given up for now")
+            self._assessment = None
         return self.is_running
 
 

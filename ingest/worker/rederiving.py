@@ -81,9 +81,9 @@ class Rederiver:
             self._rosters.clear()
             return False
         end_us = corrected.slice_end(self._store.connection, job, most=MOST_ROWS)
-        rows = self._superseding(plant, job, end_us)
         is_done = end_us >= job.to_us
         try:
+            rows = self._superseding(plant, job, end_us)
             with self._store.transaction() as connection:
                 corrected.insert(connection, rows, reason=job.reason, now_us=now_us)
                 corrected.advance(
@@ -94,9 +94,29 @@ class Rederiver:
         except sqlite3.OperationalError as error:
             log.warning("re-derivation waits", reason=str(error))
             return False
+        except Exception as error:
+            # A record that cannot be worked out must not end the worker, again and again at each start.
+            log.exception("re-derivation given up", sensor=job.slug, reason=job.reason)
+            self._give_up(job, str(error), now_us)
+            return True
         if is_done:
             log.info("derived again", sensor=job.slug, reason=job.reason, rows=job.row_count + len(rows))
         return True
+
+    def _give_up(self, job: Job, problem: str, now_us: int) -> None:
+        """End a job that cannot be done, and say so in the ledger."""
+        body = {"from_us": job.next_us, "to_us": job.to_us, "reason": job.reason, "problem": problem}
+        event = Event(
+            kind="sensor.rederivation_failed",
+            subject=f"sensor/{job.slug}",
+            measured_at=job.to_us,
+            recorded_at=now_us,
+            cause_id=job.event_id,
+            body=body,
+        )
+        with self._store.transaction() as connection:
+            corrected.advance(connection, job, next_us=job.next_us, rows=0, finished_at=now_us)
+            append(connection, event)
 
     def _superseding(self, plant: Plant, job: Job, end_us: int) -> ReadingRows:
         """Return the corrected rows of a slice: those that differ from what was seen, or from what was corrected before."""

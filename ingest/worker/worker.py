@@ -23,11 +23,12 @@ from ingest.mqtt import Access, Intake
 from ingest.secrets import read_secret
 from ingest.site.differences import differences
 from ingest.store import calibrations, registry, restoring
-from ingest.store.block import BlockCommit
+from ingest.store.block import BlockCommit, Occurrence
 from ingest.store.inbox import Inbox, InboxTaker
 from ingest.store.readings import as_sent
 from ingest.store.store import Store
 from ingest.topics import worker_status_topic
+from ingest.worker.ageing import proposals
 from ingest.worker.assessing import Assessor
 from ingest.worker.bench import Bench
 from ingest.worker.calling import Calling
@@ -51,6 +52,7 @@ from ingest.worker.plant import Plant, plant
 from ingest.worker.rederiving import Rederiver, late_jobs
 from ingest.worker.registering import code_version, read_site, register
 from ingest.worker.schedule import Schedule
+from ingest.worker.stock_book import StockBook
 from ingest.worker.stopwatch import Stopwatch
 
 if TYPE_CHECKING:
@@ -63,7 +65,7 @@ if TYPE_CHECKING:
     from ingest.mqtt import Received
     from ingest.reading import RawReading
     from ingest.site.models import Site
-    from ingest.store.block import Occurrence, SensorWork
+    from ingest.store.block import SensorWork
     from ingest.worker.registering import Numbers
 
 log = structlog.get_logger(__name__)
@@ -83,6 +85,7 @@ FORWARDING_EVERY_S = 2.0
 REDERIVE_EVERY_S = 0.1
 """A slice of what is derived again, or assessed, is done this often at most: live blocks have the greater part of the time."""
 ASSESS_EVERY_S = 3600.0
+AGES_EVERY_S = 600.0
 RETRY_S = (0.1, 0.5, 1.0, 2.0, 5.0)
 """Waits between attempts to commit; the last one repeats. Nothing is acknowledged meanwhile."""
 NEVER_SPOKEN = -(2**63)
@@ -293,6 +296,8 @@ class Worker:
             self._schedule.make_due("rollup")
         if self._rederiver.has_work and self._schedule.is_due("rederive", REDERIVE_EVERY_S):
             self.rederive()
+        if self._schedule.is_due("ages of animals", AGES_EVERY_S):
+            self.age_animals(stop)
         if self._schedule.is_due("assess", ASSESS_EVERY_S):
             self._assessor.begin(now_us=self._clock.now_us())
         if self._assessor.is_running and self._schedule.is_due("assess step", REDERIVE_EVERY_S):
@@ -358,11 +363,13 @@ class Worker:
                 now_us=context.now_us,
             )
             commit.outcomes.append(restoring.outcome_row(command, ruling.outcome, ruling.reason, context.now_us))
+            plant, state = self.plant, self.state
+            if ruling.outcome == "applied":
+                plant, state, commit.animal_states = context.taken_up()
             if not self._commit(commit, stop):
                 return
             self._inbox_seq = seq
-            if ruling.outcome == "applied":
-                self.state = context.state
+            self.plant, self.state = plant, state
             if ruling.work is not None and ruling.outcome == "applied":
                 self._take_up(ruling.work)
             self._rederiver.has_work |= bool(ruling.jobs)
@@ -385,6 +392,15 @@ class Worker:
             calibration_set=calibrations.calibration_set(connection),
         )
         self.plant = self.plant.after_services(restoring.services(connection), derivation=derivation)
+
+    def age_animals(self, stop: threading.Event) -> None:
+        """Propose the stages to which the animals' ages point; until a person confirms one, the stricter figures govern."""
+        book = StockBook(self.plant, self.state, connection=self.store.connection, now_us=self._clock.now_us())
+        events = proposals(book, self.store.connection, now_us=self._clock.now_us())
+        for event in events:
+            book.enter(event, {})
+        if events and self._commit(BlockCommit(occurrences=[Occurrence(event) for event in events]), stop):
+            self.plant, self.state = book.plant, book.state_of_chain
 
     def assess(self) -> None:
         """Find out at once how far each sensor can be believed."""
@@ -427,7 +443,7 @@ class Worker:
         self.intake.resubscribe(self.plant.topics)
         if self._outgoing is not None:
             self._outgoing.take(self.plant)
-        self.last_problem = ""
+        self.site_problem = ""
         log.info("site file accepted", revision=self.plant.numbers.revision)
         return True
 

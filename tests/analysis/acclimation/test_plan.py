@@ -225,7 +225,7 @@ def test_a_schedule_that_outlasts_the_bag_says_where_to_go_first() -> None:
 
 
 def test_ph_is_kept_where_it_is_known_and_said_where_it_is_not() -> None:
-    acid, hard = SourceWater("bog", 0.0, 28.0, ph=6.5), task(SHRIMP, 16.0, 10.0, ph=8.2)
+    acid, hard = SourceWater("bog", 0.0, 28.0, ph=5.5), task(SHRIMP, 16.0, 10.0, ph=8.2)
     with_ph = plan(replace(hard, sources=(acid,)))
     without = plan(hard)
     assert with_ph.total_hours > without.total_hours

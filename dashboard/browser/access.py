@@ -26,7 +26,7 @@ from dashboard.browser.sights import (
 from dashboard.browser.trend import LOOK_BACK_US, STANDING, Trend, limits_of, trend_of
 from ingest.clock import MICROSECONDS_PER_SECOND, to_microseconds
 from ingest.site.loading import load, load_text
-from ingest.store.errors import MissingStoreError
+from ingest.store.errors import MissingStoreError, StoreBusyError
 from ingest.store.inbox import DEFAULT_LIFE_US, Command, Inbox
 from ingest.store.queries import DAY_US, HOUR_US, Queries
 from ingest.words.alarms import QUANTITY_OF_CODE, AlarmFacts
@@ -46,6 +46,8 @@ SNAPSHOT_S = 0.9
 """One look at the store serves all screens for this long."""
 SLOW_S = 20.0
 """Day lines and the list of animals change slowly: so long one look serves for them."""
+MOST_HISTORIES = 24
+"""So many stretches of so many probes are kept for the next refresh; each is at most a megabyte."""
 STALE_INTERVALS = 3.0
 TREND_S = 5.0
 
@@ -74,6 +76,7 @@ class Access:
         self._inbox = Inbox(folder)
         self._lock = threading.Lock()
         self._kept: dict[str, tuple[float, Any]] = {}
+        self._histories: dict[tuple[str, int, int], History] = {}
         self._revision: tuple[int, Site] = (0, self._file_site)
 
     @property
@@ -90,8 +93,17 @@ class Access:
         return snapshot
 
     def history(self, sensor: str, *, from_us: int, to_us: int) -> History:
-        """Return one sensor over time."""
-        return self._queries.history(sensor, from_us=from_us, to_us=to_us)
+        """Return one sensor over time; a chart that has not moved on is not read again."""
+        key = (sensor, from_us, to_us)
+        with self._lock:
+            kept = self._histories.get(key)
+        if kept is None:
+            kept = self._queries.history(sensor, from_us=from_us, to_us=to_us)
+            with self._lock:
+                self._histories[key] = kept
+                while len(self._histories) > MOST_HISTORIES:
+                    del self._histories[next(iter(self._histories))]
+        return kept
 
     def stress_history(self, tank: str, *, from_us: int, to_us: int) -> StressHistory:
         """Return what the animals of a tank felt over time."""
@@ -159,6 +171,10 @@ class Access:
             return self._look_at_store()
         except MissingStoreError:
             return self._without_store()
+        except StoreBusyError:
+            # The last look stays; its ages go on ticking and turn to warnings by themselves.
+            kept = self._kept.get("snapshot")
+            return self._without_store() if kept is None else kept[1]
 
     def _without_store(self) -> Snapshot:
         what = self._keep("without store", SLOW_S, lambda: self._installed(self._file_site, ()))

@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 from analysis.animal.fallbacks import resolved
 from analysis.animal.tables import load
 from analysis.errors import EuryhaleError
 from dashboard.browser.sights import Animals, Band, SpeciesLimit
-from ingest.chain.animals import Stocked, animal_roster
+from ingest.chain.animal_roster import Stocked, animal_roster
 from ingest.chain.roster import roster
 from ingest.chain.tanks import tank_roster
 from ingest.water_kinds import kinds_of
@@ -56,23 +56,27 @@ def installed(site: Site, cohorts: tuple[Cohort, ...], *, tables: Path) -> Insta
         salinity[tank.id] = _band(target, low, high, is_tidal=tide)
         warm = math.nan if point is None or point.temperature_degC is None else point.temperature_degC
         temperature[tank.id] = _band(warm, float(tanks.temperature.low[i]), float(tanks.temperature.high[i]))
-        if tank.id in stocked:
-            stock = stocked[tank.id]
-            animals[tank.id] = _animals(stock, numbers.get(stock.cohort), stages.stages[i], kinds[tank.water])
+        here = stocked.get(tank.id, [])
+        if here:
+            # Of several cohorts the one that came last names the tank; the bands are made of all of them.
+            stock = here[-1]
+            found = _animals(stock, numbers.get(stock.cohort), stages.stages[i], kinds[tank.water])
+            animals[tank.id] = replace(found, further=len(here) - 1)
     stale = {sensors.sensors[w]: float(us) / 1e6 for w, us in zip(tanks.watchers, tanks.stale_after_us, strict=True)}
     return Installed(site, kinds, salinity, temperature, animals, stale)
 
 
-def stocked_tanks(site: Site, cohorts: tuple[Cohort, ...]) -> dict[str, Stocked]:
-    """Return what is in which tank by the ledger; before the worker's first run the site file says it."""
+def stocked_tanks(site: Site, cohorts: tuple[Cohort, ...]) -> dict[str, list[Stocked]]:
+    """Return what is in which tank by the ledger, in the order of coming; before the worker's first run the site file says it."""
     if not cohorts:
         firsts = ((tank.id, tank.first_stock) for tank in site.tanks)
-        return {tank: Stocked(first.id, first.animal, first.used_to_salinity) for tank, first in firsts if first}
-    return {
-        cohort.tank: Stocked(cohort.id, cohort.animal, float(cohort.body.get("used_to_salinity", math.nan)))
-        for cohort in cohorts
-        if cohort.tank is not None and cohort.ended_at is None
-    }
+        return {tank: [Stocked(first.id, first.animal, first.used_to_salinity)] for tank, first in firsts if first}
+    found: dict[str, list[Stocked]] = {}
+    for cohort in sorted(cohorts, key=lambda c: (c.since, c.id)):
+        if cohort.tank is not None and cohort.ended_at is None:
+            used_to = float(cohort.body.get("used_to_salinity", math.nan))
+            found.setdefault(cohort.tank, []).append(Stocked(cohort.id, cohort.animal, used_to))
+    return found
 
 
 def _band(target: float, low: float, high: float, *, is_tidal: bool = False) -> Band:

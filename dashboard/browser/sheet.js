@@ -3,6 +3,7 @@
 // Ages tick here, and here it is noticed when no more pages arrive.
 
 const SHEETS = new WeakMap();
+const LOST_SOON = 5;
 
 export default function (component) {
   const { data, parentElement, setTriggerValue, setStateValue } = component;
@@ -73,7 +74,7 @@ class Sheet {
     if (!this.data) return;
     const silence = (performance.now() - this.arrived) / 1000;
     const now = this.data.now + silence;
-    this.root.classList.toggle("lost", silence > this.data.lost_after);
+    this.root.classList.toggle("lost", silence > this.data.lost_after || (silence > LOST_SOON && !isConnected()));
     for (const node of this.root.querySelectorAll("[data-at]")) {
       const age = now - Number(node.dataset.at);
       setText(node, words(age, this.data.ages));
@@ -98,7 +99,7 @@ class Sheet {
     event.preventDefault();
     if (target.hasAttribute("disabled")) return;
     if (target.dataset.do === "picture") {
-      takePicture(this.root, target.dataset.name);
+      takePicture(this.root, target.dataset.name, target.dataset.title);
       return;
     }
     if (target.dataset.once !== undefined) {
@@ -163,6 +164,12 @@ function morph(from, to) {
   morphChildren(from, to);
 }
 
+// Whether the frame around us still speaks with the board; a board that hangs is noticed by its silence alone.
+function isConnected() {
+  const app = document.querySelector("[data-test-connection-state]");
+  return !app || app.getAttribute("data-test-connection-state") === "CONNECTED";
+}
+
 // --- words and colours -----------------------------------------------------------------
 
 function setText(node, text) {
@@ -210,7 +217,7 @@ function uuid() {
 }
 
 // Save the chart as a PNG of twice its size. Colours are custom properties of the sheet: an image of its own does not know them.
-function takePicture(root, name) {
+function takePicture(root, name, title) {
   const svg = root.querySelector("svg.plot");
   if (!svg) return;
   const style = getComputedStyle(root);
@@ -219,16 +226,21 @@ function takePicture(root, name) {
   const copy = svg.cloneNode(true);
   for (const own of copy.querySelectorAll(".hair,.brush")) own.remove();
   copy.setAttribute("xmlns", "http://www.w3.org/2000/svg");
+  const head = 34;
+  copy.setAttribute("viewBox", `0 ${-head} ${width} ${height + head}`);
   copy.setAttribute("width", width * 2);
-  copy.setAttribute("height", height * 2);
+  copy.setAttribute("height", (height + head) * 2);
   const rules = `text{font-family:${style.getPropertyValue("--sans")};font-size:11px;fill:var(--ink2)}`;
-  copy.insertAdjacentHTML("afterbegin", `<style>${rules}</style><rect width="100%" height="100%" fill="var(--sheet)"/>`);
+  const ground = `<rect y="${-head}" width="${width}" height="${height + head}" fill="var(--sheet)"/>`;
+  const face = `font:600 16px ${style.getPropertyValue("--serif").replaceAll('"', "'")};fill:var(--ink)`;
+  copy.insertAdjacentHTML("afterbegin", `<style>${rules}</style>${ground}<text class="title" x="12" y="${24 - head}" style="${face}"></text>`);
+  copy.querySelector(".title").textContent = title;
   const text = new XMLSerializer().serializeToString(copy).replace(/var\((--[a-z0-9]+)\)/g, colour);
   const image = new Image();
   image.onload = () => {
     const canvas = document.createElement("canvas");
     canvas.width = width * 2;
-    canvas.height = height * 2;
+    canvas.height = (height + head) * 2;
     canvas.getContext("2d").drawImage(image, 0, 0);
     const link = document.createElement("a");
     link.href = canvas.toDataURL("image/png");

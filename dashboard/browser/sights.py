@@ -49,7 +49,7 @@ class SpeciesLimit:
 
 @dataclass(frozen=True, slots=True)
 class Animals:
-    """The animals in a tank. Osmolalities are on the freezing-point basis, None where not known."""
+    """The animals in a tank. Osmolalities are on the freezing-point basis, None where not known; `further` counts other cohorts."""
 
     cohort: str
     id: str
@@ -61,6 +61,7 @@ class Animals:
     is_blood_sampled: bool = False
     limits: tuple[SpeciesLimit, ...] = ()
     temperature_limits: tuple[SpeciesLimit, ...] = ()
+    further: int = 0
 
 
 @dataclass(frozen=True, slots=True)

@@ -125,8 +125,10 @@ FRAME_CSS = """
 [data-testid=stMain] [data-testid=stVerticalBlock]{gap:0}
 [data-testid=stElementContainer]{opacity:1!important;transition:none!important}
 [data-testid=stElementContainer]:has(style){display:none}
+body:has([data-testid=stApp]:not([data-test-connection-state=CONNECTED]))>:not(#root):has([role=dialog]){display:none!important}
+body:has([data-testid=stApp]:not([data-test-connection-state=CONNECTED])) [data-testid=stDialog]{display:none!important}
 """
-"""For the document around our sheet: Streamlit's own bar, padding and fading away."""
+"""For the document around our sheet: Streamlit's own bar, padding and fading away; that the connection is lost the sheet says itself."""
 
 
 def frame_css(*, is_night: bool) -> str:

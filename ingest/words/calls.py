@@ -112,6 +112,11 @@ def daily_message(*, site: str, person: str, now_us: int, zone: tzinfo, language
     return Message(words["test_title"].format(site=site), f"{body}\n{stamp}")
 
 
+def problem_words(problem: str, *, language: Language = ENGLISH, **values: str) -> str:
+    """Return what keeps calls from going out, a key of the table CALLS, problems."""
+    return str(language.CALLS["problems"][problem].format(**values))
+
+
 def _numbers(alarm: CalledAlarm, what: str, language: Language) -> list[str]:
     """Return value and trend where the sentence does not say them."""
     facts, words = alarm.facts, language.CALLS

@@ -75,9 +75,17 @@ def _age(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
 
 
 def _top(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
-    who = visit.text("no_animals") if tank.animals is None else escape(tank.animals.name)
+    who = escape(animals_text(tank, visit))
     name = link("tank", f'<span class="name">{escape(tank.name)}</span>', tank=tank.id)
     return f'<div class="top">{name}<span class="who" title="{who}">{who}</span>{_age(tank, snapshot, visit)}</div>'
+
+
+def animals_text(tank: TankSight, visit: Visit) -> str:
+    """Return who lives in the tank."""
+    if tank.animals is None:
+        return visit.language.text("no_animals")
+    further = f" {visit.language.text('and_more', n=tank.animals.further)}" if tank.animals.further else ""
+    return tank.animals.name + further
 
 
 def _set_words(tank: TankSight, visit: Visit) -> str:

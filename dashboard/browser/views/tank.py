@@ -10,7 +10,7 @@ from dashboard.browser import glyphs
 from dashboard.browser.charts import Chart, multi_panel_chart
 from dashboard.browser.sights import Snapshot, TankSight
 from dashboard.browser.tank_chart import SPANS_S, Stretch
-from dashboard.browser.views.card import balance_words
+from dashboard.browser.views.card import animals_text, balance_words
 from dashboard.browser.views.frame import framed, teach
 from dashboard.browser.views.say import going, say, say_outside, say_unwatched, who_has_it
 from dashboard.browser.views.sensors import trust_words
@@ -43,7 +43,7 @@ def _place(tank: TankSight, visit: Visit) -> str:
     )
     parts = [tank.hall_name, litres]
     if tank.animals is not None:
-        parts.insert(1, tank.animals.name)
+        parts.insert(1, animals_text(tank, visit))
         if tank.animals.number:
             parts.insert(2, f"{tank.animals.number:,}".replace(",", "\u202f"))
     return " · ".join(parts)
@@ -97,17 +97,25 @@ def _history(tank: TankSight, visit: Visit, chart: Chart | None, stretch: Stretc
     hint = visit.text("chart_hint")
     return (
         f'{bar}<div class="chart" data-measure tabindex="0" aria-label="{hint}">{drawn}</div>'
-        f'<p class="source">{hint} <span class="take">{_take(tank, visit, stretch)}</span></p>'
+        f'<p class="source">{hint} <span class="take">{_take(tank, snapshot, visit, stretch)}</span></p>'
     )
 
 
-def _take(tank: TankSight, visit: Visit, stretch: Stretch) -> str:
+def _take(tank: TankSight, snapshot: Snapshot, visit: Visit, stretch: Stretch) -> str:
     """Return the ways to take the picture and the data along."""
     name = escape(f"{tank.id}-{round(stretch.from_s)}-{round(stretch.to_s)}")
+    named = [
+        times.moment(round(s * 1e6), snapshot.zone, now_us=snapshot.now_us, language=visit.language)
+        for s in (stretch.from_s, stretch.to_s)
+    ]
+    period = visit.language.text("from_to", start=named[0], end=named[1])
+    title = escape(
+        f"{snapshot.site_name} · {tank.name} · {times.day(snapshot.now_us, snapshot.zone, has_year=True)} · {period}"
+    )
     query = f"id={escape(tank.id)}&amp;from={stretch.from_s:.0f}&amp;to={stretch.to_s:.0f}"
     return (
         f'<a class="word" href="./export/tank.csv?{query}" download="{name}.csv">{visit.text("take_data")}</a>'
-        f'<a class="word" href="#" data-do="picture" data-name="{name}.png">{visit.text("take_picture")}</a>'
+        f'<a class="word" href="#" data-do="picture" data-name="{name}.png" data-title="{title}">{visit.text("take_picture")}</a>'
     )
 
 

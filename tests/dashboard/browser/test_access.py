@@ -70,6 +70,17 @@ def test_one_look_serves_all_screens_for_a_moment(access: Access, clock: FakeClo
     assert access.snapshot() is not first
 
 
+def test_while_the_store_is_busy_the_last_look_stays(access: Access, clock: FakeClock, monkeypatch: pytest.MonkeyPatch):
+    first = access.snapshot()
+
+    def busy() -> None:
+        raise StoreBusyError("store.db", reason="locked")
+
+    monkeypatch.setattr(access, "_look_at_store", busy)
+    clock.advance(5)
+    assert access.snapshot() is first
+
+
 def test_without_a_store_the_site_file_is_shown_and_nobody_watches(bare_access: Access):
     snapshot = bare_access.snapshot()
     assert not snapshot.has_store

@@ -244,6 +244,10 @@ def test_a_lost_connection_is_obvious(live: Live, tmp_path: Path):
         page.goto(url)
         page.wait_for_selector(".sheet .live")
     page.wait_for_selector('.sheet.lost .lost-line:visible:has-text("connection to the board is lost")')
+    page.wait_for_selector("[role=dialog]", state="attached")
+    assert page.locator("[role=dialog]").is_hidden()
+    ARTEFACTS.mkdir(exist_ok=True)
+    page.screenshot(path=ARTEFACTS / "lost.png")
     page.close()
     scene.stop_worker()
 

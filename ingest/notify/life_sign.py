@@ -20,7 +20,6 @@ if TYPE_CHECKING:
     from pathlib import Path
 
 TIMEOUT_S = 5.0
-IDLE_S = 0.5
 LEAVE_S = 1.0
 
 
@@ -42,7 +41,7 @@ class LifeSign:
     def __init__(self, secret: str, *, site_file: Path) -> None:
         self._secret = secret
         self._site_file = site_file
-        self._asked: queue.Queue[dict[str, Any]] = queue.Queue(maxsize=1)
+        self._asked: queue.Queue[dict[str, Any] | None] = queue.Queue(maxsize=1)
         self._stop = threading.Event()
         self._opener = build_opener(_NoRedirect)
         self.given = 0
@@ -60,6 +59,8 @@ class LifeSign:
     def stop(self) -> None:
         """Give no more signs."""
         self._stop.set()
+        if not self._asked.full():
+            self._asked.put_nowait(None)
         self._thread.join(LEAVE_S)
 
     def _started(self) -> threading.Thread:
@@ -68,11 +69,7 @@ class LifeSign:
         return thread
 
     def _give_all(self) -> None:
-        while not self._stop.is_set():
-            try:
-                body = self._asked.get(timeout=IDLE_S)
-            except queue.Empty:
-                continue
+        while (body := self._asked.get()) is not None and not self._stop.is_set():
             self.problem = self._give(body)
             if self.problem:
                 self.failed += 1
@@ -83,7 +80,7 @@ class LifeSign:
         """Try once and return what went wrong, empty if nothing did."""
         try:
             url = read_secret(self._secret, site_file=self._site_file).strip()
-        except MissingSecretError as error:
+        except (MissingSecretError, OSError, ValueError) as error:
             return str(error)
         if not url.startswith(("http://", "https://")):
             return f"the address in secret {self._secret!r} begins with neither http:// nor https://"

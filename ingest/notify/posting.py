@@ -43,8 +43,10 @@ class ApprisePost:
             url = read_secret(parcel.address, site_file=self._site_file).strip()
         except MissingSecretError as error:
             return Posted(is_delivered=False, detail=str(error))
-        except OSError as error:
-            return Posted(is_delivered=False, detail=f"secret {parcel.address!r} cannot be read: {error.strerror}")
+        except (OSError, ValueError) as error:
+            return Posted(
+                is_delivered=False, detail=f"secret {parcel.address!r} cannot be read: {type(error).__name__}"
+            )
         service = self._service(url)
         if service is None:
             return Posted(

@@ -24,8 +24,8 @@ SPACING_S = {"mail": 1.0, "sms": 1.0, "push": 0.5, "voice": 2.0, "webhook": 0.2}
 """Least time between two messages to one address. Common practice; gateways refuse more."""
 BACK_OFF_S = (5.0, 10.0, 20.0, 40.0, 60.0, 120.0, 300.0)
 """Waits before the next attempt; the last one repeats."""
-IDLE_S = 0.5
 LEAVE_S = 2.0
+"""How long the threads together may take to report what they are at, when told to stop."""
 
 
 class Parcel(NamedTuple):
@@ -67,7 +67,7 @@ class Post(Protocol):
 class _Lane:
     """The parcels of one address and the thread that sends them."""
 
-    waiting: queue.SimpleQueue[Parcel]
+    waiting: queue.SimpleQueue[Parcel | None]
     thread: threading.Thread
     handed: dict[int, Parcel] = field(default_factory=dict)
     """What was handed over and is not reported yet; touched by the main loop alone."""
@@ -126,21 +126,20 @@ class Sender:
         """Take no more; what is on its way has a moment to be reported, the rest is sent again after the next start."""
         self._stop.set()
         for lane in self._lanes.values():
-            lane.thread.join(LEAVE_S)
+            lane.waiting.put(None)
+        until_s = self._clock.monotonic_s() + LEAVE_S
+        for lane in self._lanes.values():
+            lane.thread.join(max(0.0, until_s - self._clock.monotonic_s()))
 
     def _open(self, address: str) -> _Lane:
-        waiting: queue.SimpleQueue[Parcel] = queue.SimpleQueue()
+        waiting: queue.SimpleQueue[Parcel | None] = queue.SimpleQueue()
         thread = threading.Thread(target=self._send_all, args=(waiting,), name=f"notify-{address}", daemon=True)
         lane = self._lanes[address] = _Lane(waiting, thread)
         thread.start()
         return lane
 
-    def _send_all(self, waiting: queue.SimpleQueue[Parcel]) -> None:
-        while not self._stop.is_set():
-            try:
-                parcel = waiting.get(timeout=IDLE_S)
-            except queue.Empty:
-                continue
+    def _send_all(self, waiting: queue.SimpleQueue[Parcel | None]) -> None:
+        while (parcel := waiting.get()) is not None and not self._stop.is_set():
             begun_us = self._clock.now_us()
             posted = self._post(parcel)
             self._reports.put(Report(parcel, begun_us, self._clock.now_us(), posted))

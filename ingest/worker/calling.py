@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sqlite3
+from secrets import token_bytes
 from typing import TYPE_CHECKING, Any
 
 import structlog
@@ -19,8 +20,10 @@ from ingest.notify.trail import Trail
 from ingest.notify.writing import Writer
 from ingest.secrets import read_secret
 from ingest.store import calls as rows
+from ingest.store.errors import StoreBusyError
 from ingest.store.inbox import Inbox
 from ingest.words import times
+from ingest.words.calls import problem_words
 from ingest.worker.schedule import Schedule
 
 if TYPE_CHECKING:
@@ -28,7 +31,9 @@ if TYPE_CHECKING:
 
     from ingest.chain.chain import ChainState
     from ingest.clock import Clock
+    from ingest.mqtt import Received
     from ingest.notify.sending import Post, Report
+    from ingest.site.calls import Answers
     from ingest.store.store import Store
     from ingest.worker.plant import Plant
 
@@ -83,7 +88,9 @@ class Calling:
         self._answers: Intake | None = None
         self._life_sign: LifeSign | None = None
         self._unwritten: list[Report] = []
+        self._unheard: list[Received] = []
         self._told: dict[str, str | int] = {}
+        self._on_their_way = 0
         self.problem = ""
 
     def step(self, plant: Plant, state: ChainState, intake: Intake) -> None:
@@ -97,9 +104,9 @@ class Calling:
             self._trail.keep()
         try:
             self._call(plant, state)
-        except sqlite3.OperationalError as error:
+        except (sqlite3.OperationalError, StoreBusyError) as error:
             # The store is busy or full; what was not written is done again at the next look.
-            self.problem = f"calls cannot be written down: {error}"
+            self.problem = problem_words("unwritten", reason=str(error))
             log.error("calls cannot be written down", reason=str(error))
         if not self._is_replay and self._schedule.is_due("publish", PUBLISH_EVERY_S):
             self._publisher.publish(plant, state, intake)
@@ -126,7 +133,7 @@ class Calling:
         sign = self._life_sign
         return {
             "delivery_problem": self.problem,
-            "deliveries_on_their_way": 0 if self._sender is None else len(self._sender.in_flight),
+            "deliveries_on_their_way": self._on_their_way,
             "signs_given": 0 if sign is None else sign.given,
             "signs_failed": 0 if sign is None else sign.failed,
         }
@@ -139,7 +146,7 @@ class Calling:
         if before is not None:
             self._desk.take_site(site)
         if self._desk.plan is not None and self._sender is None:
-            self._desk.key = codes.key_of(self._site_file)
+            self._desk.key = self._key()
             self._sender = Sender(self._post or self._apprise(), self._clock)
         if self._is_replay:
             return
@@ -150,6 +157,14 @@ class Calling:
                 self._life_sign.stop()
             sign = site.heartbeat
             self._life_sign = None if sign is None else LifeSign(sign.url_secret, site_file=self._site_file)
+
+    def _key(self) -> bytes:
+        try:
+            return codes.key_of(self._site_file)
+        except OSError as error:
+            # Calls matter more than a key that lasts: codes then hold until the next start.
+            log.error("the key of the answers cannot be kept", reason=str(error))
+            return token_bytes(32)
 
     def _apprise(self) -> Post:
         # Only a site that declares people pays for loading it.
@@ -169,8 +184,15 @@ class Calling:
             password = None if way.secret is None else read_secret(way.secret, site_file=self._site_file)
         except EuryhaleError as error:
             log.error("answers cannot be heard", reason=str(error))
-            self.problem = str(error)
             return
+        try:
+            self._answers = self._listening(plant, way, password)
+        except (OSError, ValueError) as error:
+            log.error("answers cannot be heard", reason=str(error))
+            return
+        self._answers.start()
+
+    def _listening(self, plant: Plant, way: Answers, password: str | None) -> Intake:
         access = Access(
             host=way.host,
             port=way.port,
@@ -180,8 +202,7 @@ class Calling:
             is_tls=way.tls,
             ca_file=None if way.ca_file is None else (self._site_file.parent / way.ca_file).resolve(),
         )
-        self._answers = Intake(access, (way.topic,), clock=self._clock)
-        self._answers.start()
+        return Intake(access, (way.topic,), clock=self._clock)
 
     def _call(self, plant: Plant, state: ChainState) -> None:
         desk, now_us = self._desk, self._clock.now_us()
@@ -196,6 +217,7 @@ class Calling:
                 lambda: self._writer(plant, state, now_us), without=self._sender.in_flight, now_us=now_us
             ):
                 self._sender.hand_over(parcel)
+            self._on_their_way = len(self._sender.in_flight)
         if self._schedule.is_due("look", LOOK_EVERY_S):
             self._tell_problem(plant, desk, now_us)
 
@@ -212,12 +234,14 @@ class Calling:
         self._unwritten.clear()
 
     def _hear_answers(self, desk: CallDesk, now_us: int) -> None:
-        if self._answers is None or not self._answers.waiting:
+        if self._answers is None:
             return
-        messages = self._answers.take(MOST_ANSWERS)
-        for message in messages:
+        self._unheard += self._answers.take(MOST_ANSWERS)
+        while self._unheard:
+            message = self._unheard[0]
             desk.answer(message.payload[:2000].decode("utf-8", "replace"), self._inbox, now_us=now_us)
-        self._answers.acknowledge(messages)
+            self._answers.acknowledge([message])
+            self._unheard.pop(0)
 
     def _sign(self, plant: Plant, intake: Intake) -> dict[str, Any]:
         return {
@@ -232,15 +256,14 @@ class Calling:
         since_us = desk.failing_since_us(now_us=now_us)
         found = []
         if since_us is not None:
-            found.append(
-                f"messages to people do not go out since {times.moment(since_us, plant.site.zone, now_us=now_us)}"
-            )
+            since = times.moment(since_us, plant.site.zone, now_us=now_us)
+            found.append(problem_words("unsent", since=since))
         if desk.nobody_since_us is not None:
-            found.append("nobody is on duty: nobody could be called")
-        if self._answers is not None and not self._answers.is_connected:
-            found.append("the broker on which people answer cannot be reached")
+            found.append(problem_words("nobody"))
+        if plant.site.acknowledgements is not None and not (self._answers and self._answers.is_connected):
+            found.append(problem_words("unheard"))
         if self._life_sign is not None and self._life_sign.problem:
-            found.append(f"the sign of life does not get through: {self._life_sign.problem}")
+            found.append(problem_words("no_sign", reason=self._life_sign.problem))
         self.problem = "; ".join(found)
         told: dict[str, str | int] = {"delivery_problem": self.problem, "delivery_failing_since": since_us or 0}
         if told != self._told:

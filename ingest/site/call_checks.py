@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
+import re
 from typing import TYPE_CHECKING, Any
 
-from ingest.site.calls import RINGING_KINDS
+from ingest.site.calls import LESSER_PRIORITIES, RINGING_KINDS, TIME_PATTERN, minutes_of
 from ingest.site.problems import listed, nearest_word
 
 if TYPE_CHECKING:
@@ -13,6 +14,7 @@ if TYPE_CHECKING:
     from ingest.site.document import Document, Path
     from ingest.site.problems import Problem
 
+DAY_MIN = 24 * 60
 DUTY_WORDS = ("duty", "second duty")
 RING_WORDS = (
     "at least one channel that rings (sms, push, voice, or a webhook with rings: true): "
@@ -29,6 +31,7 @@ def problems_of_calls(document: Document) -> list[Problem]:
         *_silent_people(document, people),
         *_silent_lines(document, people),
         *_nobody(document, people),
+        *_endless_quiet(document),
     ]
 
 
@@ -113,3 +116,24 @@ def _nobody(document: Document, people: dict[str, tuple[Path, dict[str, Any]]]) 
     for path, line in _groups(document, "call_out"):
         if people and line.get("who") in DUTY_WORDS and not has_shifts:
             yield document.problem((*path, "who"), line["who"], "the id of a person: duty: has no shifts")
+
+
+def _endless_quiet(document: Document) -> Iterator[Problem]:
+    """Yield quiet hours that leave an alarm no minute of the day to call in."""
+    for priority in LESSER_PRIORITIES:
+        quiet: set[int] = set()
+        for _, entry in _groups(document, "duty", "quiet_hours"):
+            begin, end = entry.get("begin"), entry.get("end")
+            priorities = entry.get("priorities", LESSER_PRIORITIES)
+            if not (_is_time(begin) and _is_time(end)) or priority not in priorities:
+                continue
+            first, last = minutes_of(str(begin)), minutes_of(str(end))
+            quiet |= {minute % DAY_MIN for minute in range(first, last if last > first else last + DAY_MIN)}
+        if len(quiet) == DAY_MIN:
+            found = f"the whole day for {priority}"
+            yield document.problem(("duty", "quiet_hours"), found, "hours that leave some of the day to call in")
+            return
+
+
+def _is_time(value: object) -> bool:
+    return isinstance(value, str) and re.match(TIME_PATTERN, value) is not None

@@ -21,7 +21,8 @@ TIME_WORDS = "a time of day in quotes, such as '18:00'"
 MOMENT_WORDS = "date and time of the site's clock, such as 2026-12-24T18:00"
 BY_WORDS = f"a list of channels: {', '.join(CHANNEL_KINDS)} (every channel of the person where not given)"
 
-TimeOfDay = Annotated[str, StringConstraints(pattern=r"^(([01][0-9]|2[0-3]):[0-5][0-9]|24:00)$")]
+TIME_PATTERN = r"^(([01][0-9]|2[0-3]):[0-5][0-9]|24:00)$"
+TimeOfDay = Annotated[str, StringConstraints(pattern=TIME_PATTERN)]
 
 
 def minutes_of(text: str) -> int:

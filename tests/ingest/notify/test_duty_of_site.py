@@ -103,6 +103,7 @@ def test_the_list_is_taken_as_written_and_made_where_there_is_none():
         ("absent: ana", "absent: eva", 9, "duty.stand_ins[1].absent", "the id of a person"),
         ("begin: '18:00'", "begin: '18:60'", 6, "duty.shifts[1].begin", "a time of day"),
         ("end: '06:00'}]", "end: '06:00', priorities: [urgent]}]", 10, "duty.quiet_hours[1].priorities[1]", "never kept waiting"),
+        ("begin: '22:00', end: '06:00'}]", "begin: '22:00', end: '22:00'}]", 10, "duty.quiet_hours", "some of the day"),
         ("role: biologist", "role: viewer", 3, "people[2] (rui).role", "operator"),
         ("id: rui, name", "id: ana, name", 3, "people[2] (ana).id", "an id used once"),
         ("every_s: 30", "every_s: 0", 14, "heartbeat.every_s", "a number from 1"),

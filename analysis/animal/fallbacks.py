@@ -30,6 +30,7 @@ RULES: Mapping[str, str] = MappingProxyType(
         "level from tolerable high": "no lethal level: 1.25 times the tolerable salinity, below the median ratio (1.4) where both exist",
         "no lower limit": "tolerates 1 ppt or less and has no lethal level: fresh water sets no lower limit",
         "tolerable midway": "no tolerable limit: midway between the optimal edge and the lethal level",
+        "tolerable at a quarter": "no tolerable limit, and a lethal test of hours: a quarter of the way from the optimum to the level",
         "tolerable from level low": "no tolerable limit, no optimum: 1.5 times the lethal salinity (two thirds read backwards)",
         "tolerable from level high": "no tolerable limit and no optimum: the lethal salinity divided by 1.25",
         "optimal inside tolerable": "no optimum: as far inside the tolerable limit as the lethal level is outside, at most the middle",
@@ -53,6 +54,7 @@ RULES: Mapping[str, str] = MappingProxyType(
 
 DEFAULT_TEST_H = 48.0
 SHORT_TEST_H = 120.0
+HOURS_TEST_H = 24.0
 SLOW_GAIN = 0.12
 """Part of the direct lethal jump by which slow change moves the lethal level out: the lower quartile of the published pairs."""
 MIN_GAP_PPT = 0.5
@@ -126,33 +128,43 @@ class _Side:
 
 def _level(side: _Side) -> None:
     """Find the median lethal level for animals that came slowly."""
-    if side.keep("level", side.own("gradual")):
-        return
     tolerable, direct, lethal = side.own("tolerable"), side.own("direct"), side.own("lethal")
-    if direct is not None and (lethal is None or lethal.value == direct.value) and _is_short_test(side):
-        start = side.stage.figures.get(f"direct_{side.side}_from_ppt")
-        if start is not None:
-            wider = direct.value + side.out * SLOW_GAIN * abs(direct.value - start.value)
-            side.assume("level", max(0.0, wider), "level beyond direct test", because=(direct,))
-            return
+    if side.keep("level", side.own("gradual")) or _beyond_direct_test(side, tolerable, direct, lethal):
+        return
     if side.keep("level", lethal):
         return
     if tolerable is not None:
-        if side.side == "low" and tolerable.value <= 1.0:
-            side.assume("level", -INF, "no lower limit", because=(tolerable,))
-        elif side.side == "low":
-            side.assume("level", tolerable.value * 2.0 / 3.0, "level from tolerable low", because=(tolerable,))
-        else:
-            side.assume("level", tolerable.value * 1.25, "level from tolerable high", because=(tolerable,))
+        _level_from_tolerable(side, tolerable)
     elif direct is not None:
         side.assume("level", direct.value, "level from direct test", because=(direct,))
     elif side.side == "low" and side.stage.value("optimal_low_ppt") <= 1.0:
         side.assume("level", -INF, "no lower limit", because=(side.own("optimal"),))
 
 
-def _is_short_test(side: _Side) -> bool:
-    """A test of days, in which animals from other water had no time to settle."""
-    return not side.stage.value(f"direct_{side.side}_h") > SHORT_TEST_H
+def _beyond_direct_test(side: _Side, tolerable: Figure | None, direct: Figure | None, lethal: Figure | None) -> bool:
+    """Widen the level of a direct test of days; not where a tolerable limit shows that slow change does far more."""
+    start = side.stage.figures.get(f"direct_{side.side}_from_ppt")
+    is_only_figure = direct is not None and (lethal is None or lethal.value == direct.value)
+    if (
+        direct is None
+        or start is None
+        or not is_only_figure
+        or side.stage.value(f"direct_{side.side}_h") > SHORT_TEST_H
+    ):
+        return False
+    wider = max(0.0, direct.value + side.out * SLOW_GAIN * abs(direct.value - start.value))
+    if tolerable is not None and (tolerable.value - direct.value) * side.out >= 0.0:
+        return False
+    return side.assume("level", wider, "level beyond direct test", because=(direct,))
+
+
+def _level_from_tolerable(side: _Side, tolerable: Figure) -> None:
+    if side.side == "low" and tolerable.value <= 1.0:
+        side.assume("level", -INF, "no lower limit", because=(tolerable,))
+    elif side.side == "low":
+        side.assume("level", tolerable.value * 2.0 / 3.0, "level from tolerable low", because=(tolerable,))
+    else:
+        side.assume("level", tolerable.value * 1.25, "level from tolerable high", because=(tolerable,))
 
 
 def _tolerable(side: _Side) -> None:
@@ -161,8 +173,13 @@ def _tolerable(side: _Side) -> None:
     level, optimal = side.found.get("level"), side.own("optimal")
     if level is None:
         return
+    hours = [side.stage.value(f"{test}_{side.side}_h") for test in ("direct", "lethal")]
+    is_of_hours = side.own("gradual") is None and any(length < HOURS_TEST_H for length in hours)
     if math.isinf(level.value):
         side.assume("tolerable", 0.0, "no lower limit", because=(level,))
+    elif optimal is not None and is_of_hours:
+        quarter = optimal.value + 0.25 * (level.value - optimal.value)
+        side.assume("tolerable", quarter, "tolerable at a quarter", because=(level, optimal))
     elif optimal is not None:
         side.assume("tolerable", (level.value + optimal.value) / 2.0, "tolerable midway", because=(level, optimal))
     elif side.side == "low":

@@ -81,6 +81,24 @@ class Remark:
 
 
 @dataclass(frozen=True, slots=True)
+class Gate:
+    """A published condition that has to be met before a change of water; a person checks it.
+
+    Parameters
+    ----------
+    kind : str
+        ``age``, ``size``, ``smolt window``, ``moult``, ``temperature`` or ``chloride``.
+    text : str
+        The condition in words.
+    """
+
+    kind: str
+    text: str
+    sources: tuple[str, ...]
+    certainty: Certainty
+
+
+@dataclass(frozen=True, slots=True)
 class AgeGate:
     """The days of life that a stage covers.
 
@@ -124,6 +142,7 @@ class Stage:
     aliases: tuple[str, ...] = ()
     age: AgeGate | None = None
     remarks: tuple[Remark, ...] = ()
+    gates: tuple[Gate, ...] = ()
     notes: str = ""
     younger: tuple[Stage, ...] = field(default=(), repr=False)
 

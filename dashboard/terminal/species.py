@@ -110,6 +110,10 @@ def _whole(stage: Stage) -> dict[str, Any]:
             {"text": remark.text, "certainty": remark.certainty.value, "sources": list(remark.sources)}
             for remark in stage.remarks
         ],
+        "gates": [
+            {"kind": gate.kind, "text": gate.text, "certainty": gate.certainty.value, "sources": list(gate.sources)}
+            for gate in stage.gates
+        ],
         "used": {key: _figure(figure) for key, figure in ready.figures.items()},
         "not_known": [key for key, _ in SHOWN_LIMITS if math.isnan(ready.value(key))],
         "sources": _citations(stage.figures.values()),
@@ -157,6 +161,11 @@ def _page(stage: Stage) -> str:
     lines += ["", "What the stress uses:"]
     for key, words in SHOWN_LIMITS:
         lines.append(_used_line(words, ready.figures.get(key)))
+    if stage.gates:
+        lines += ["", "Before any change of water:"]
+        lines += [
+            f"  {gate.kind}: {gate.text} ({gate.certainty.value}: {', '.join(gate.sources)})" for gate in stage.gates
+        ]
     if stage.notes:
         lines += ["", f"Notes: {stage.notes}"]
     cited = _citations(stage.figures.values())

@@ -10,7 +10,7 @@ from importlib import resources
 from types import MappingProxyType
 from typing import Any
 
-from analysis.animal.stage import AgeGate, Certainty, Figure, Remark, Stage
+from analysis.animal.stage import AgeGate, Certainty, Figure, Gate, Remark, Stage
 from analysis.errors import InvalidInputError
 
 UNITS_BY_SUFFIX = {
@@ -124,6 +124,22 @@ def _checked_text(raw: Mapping[str, Any], key: str, *, where: str) -> str:
     return value
 
 
+GATE_KINDS = ("age", "size", "smolt window", "moult", "temperature", "chloride")
+
+
+def _checked_gates(
+    rows: Iterable[Mapping[str, Any]], *, where: str, source_keys: frozenset[str] | None
+) -> tuple[Gate, ...]:
+    gates = []
+    for row in rows:
+        if row.get("kind") not in GATE_KINDS:
+            raise InvalidInputError("kind of gate", found=row.get("kind"), allowed=", ".join(GATE_KINDS), where=where)
+        text = _checked_text(row, "text", where=f"{where}, gates")
+        sources = _checked_sources(row.get("sources"), where=f"{where}, gates", source_keys=source_keys)
+        gates.append(Gate(str(row["kind"]), text, sources, Certainty(row["certainty"])))
+    return tuple(gates)
+
+
 def _checked_age(raw: object, *, where: str) -> AgeGate | None:
     if raw is None:
         return None
@@ -172,6 +188,7 @@ def species_from_mapping(raw: Mapping[str, Any], *, file: str, source_keys: froz
             aliases=tuple(f"{species_id}/{alias}" for alias in row.get("also") or ()),
             age=_checked_age(row.get("age"), where=where),
             remarks=remarks,
+            gates=_checked_gates(row.get("gates") or (), where=where, source_keys=source_keys),
             notes=str(row.get("notes", "")),
             younger=tuple(reversed(stages)),
         )

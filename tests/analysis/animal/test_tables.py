@@ -11,7 +11,7 @@ from importlib import resources
 import pytest
 
 from analysis.animal import tables
-from analysis.animal.fallbacks import RULES, resolved
+from analysis.animal.fallbacks import RULES, osmolality_from_ppt, resolved
 from analysis.animal.overrides import with_overrides, with_species
 from analysis.animal.stage import Certainty, Supports
 from analysis.errors import InvalidInputError
@@ -141,3 +141,49 @@ def test_an_override_can_say_not_known():
 def test_a_site_adds_a_species():
     raw = raw_species("perna-perna") | {"id": "perna-local"}
     assert "perna-local/adult" in with_species(STAGES, [raw])
+
+
+@pytest.mark.parametrize("name", sorted(STAGES))
+def test_the_limits_of_a_stage_lie_in_order(name):
+    ready = resolved(STAGES[name])
+    for keys in (
+        ("level_low", "tolerable_low", "optimal_low", "optimal_high", "tolerable_high", "level_high"),
+        (
+            "lethal_low_degC",
+            "tolerable_low_degC",
+            "optimal_low_degC",
+            "optimal_high_degC",
+            "tolerable_high_degC",
+            "lethal_high_degC",
+        ),
+    ):
+        known = [value for value in (ready.value(key) for key in keys) if not math.isnan(value)]
+        assert known == sorted(known)
+
+
+def test_a_lethal_test_of_hours_says_little_of_days():
+    # ALEVIN_SW: alevins live about 6 h in full sea water; that is no leave to keep them at half of it
+    ready = resolved(STAGES["salmo-salar/alevin"])
+    assert ready.value("tolerable_high") < osmolality_from_ppt(11.0)
+    assert ready.figures["tolerable_high"].note.startswith("tolerable at a quarter")
+
+
+def test_salinity_becomes_osmolality_through_the_seawater_relation_and_goes_on_beyond_it():
+    # SP 35: 1033.74 mOsm/kg, freezing-point basis (TEOS-10)
+    assert osmolality_from_ppt(35.0) == pytest.approx(1033.74, abs=0.01)
+    assert osmolality_from_ppt(126.0) > osmolality_from_ppt(100.0) > osmolality_from_ppt(80.0)
+    assert osmolality_from_ppt(-math.inf) == -math.inf
+    assert math.isnan(osmolality_from_ppt(math.nan))
+
+
+def test_the_gates_of_a_stage_are_kept_with_their_source():
+    gates = STAGES["salmo-salar/smolt"].gates
+    assert {gate.kind for gate in gates} == {"smolt window", "temperature"}
+    assert all(set(gate.sources) <= set(tables.sources()) for stage in STAGES.values() for gate in stage.gates)
+
+
+def test_an_unknown_gate_is_refused():
+    raw = copy.deepcopy(raw_species("salmo-salar"))
+    next(stage for stage in raw["stages"] if stage["id"] == "smolt")["gates"][0]["kind"] = "mood"
+    with pytest.raises(InvalidInputError, match="kind of gate"):
+        tables.species_from_mapping(raw, file="salmo-salar.json", source_keys=None)

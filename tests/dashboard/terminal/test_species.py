@@ -43,7 +43,7 @@ def test_an_assumed_number_says_why(capsys):
     assert main(["species", "penaeus-vannamei/pl5"]) == 0
     line = next(line for line in capsys.readouterr().out.splitlines() if line.startswith("  tolerable, fresh side"))
     assert "assumed" in line
-    assert "midway" in line
+    assert "a quarter of the way" in line
 
 
 def test_one_stage_as_json(capsys):

@@ -4,10 +4,11 @@ from __future__ import annotations
 
 import gc
 import signal
-import sys
 import threading
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
+
+import structlog
 
 from ingest import logs
 from ingest.clock import ReplayClock, SystemClock
@@ -16,6 +17,8 @@ from ingest.worker.worker import Worker
 
 if TYPE_CHECKING:
     import argparse
+
+log = structlog.get_logger(__name__)
 
 HELP = "run the worker: take readings in, judge, store and alarm"
 
@@ -53,5 +56,5 @@ def run(args: argparse.Namespace) -> int:
     finally:
         if server is not None:
             server.shutdown()
-    print("stopped; whatever was not yet stored waits at the broker", file=sys.stderr)
+    log.info("stopped; whatever was not yet stored waits at the broker")
     return 0

@@ -233,9 +233,16 @@ def carried_animals(
     after = restored_animals(roster, bodies)
     for cohort_id, own in changed.items():
         row = roster.row_of.get(cohort_id)
-        if row is not None:
-            for member in fields(CohortState):
-                getattr(after.cohorts, member.name)[row] = getattr(own, member.name)[0]
+        if row is None:
+            continue
+        figures = roster.figures.take(np.array([row]))
+        # No time passes: this only says what the water in which they are now is to them.
+        _, stress = advance(
+            figures, own, osmolality_mOsm_kg=own.osmolality, temperature_degC=own.temperature, elapsed_s=0.0
+        )
+        for record, values in ((after.cohorts, own), (after.latest, stress)):
+            for member in fields(record):
+                getattr(record, member.name)[row] = getattr(values, member.name)[0]
     return after
 
 

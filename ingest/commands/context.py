@@ -9,6 +9,7 @@ if TYPE_CHECKING:
     from analysis.alarm.transition import Transition
     from analysis.water.properties import WaterKind
     from ingest.chain.services import Service
+    from ingest.commands.stock_book import StockBook
     from ingest.site.models import Site
     from ingest.store.block import Occurrence
 
@@ -70,6 +71,11 @@ class Context(Protocol):
 
     def tank_number(self, tank: str) -> int:
         """Return the store's number of a tank."""
+        ...
+
+    @property
+    def stock_book(self) -> StockBook:
+        """The animals on the site."""
         ...
 
     @property

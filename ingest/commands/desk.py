@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from ingest.commands import alarms, bench_sample, calibration
+from ingest.commands import alarms, bench_sample, calibration, samples, stock
 from ingest.commands.roles import is_at_least, weaker
 from ingest.commands.ruling import Ruling
 
@@ -20,6 +20,8 @@ NEEDED_ROLE: dict[str, str] = {
     **alarms.NEEDED_ROLE,
     **calibration.NEEDED_ROLE,
     **bench_sample.NEEDED_ROLE,
+    **stock.NEEDED_ROLE,
+    **samples.NEEDED_ROLE,
     RELOAD: "manager",
 }
 """Which role each kind of command needs; what is not here is not known."""
@@ -33,6 +35,8 @@ _ROOMS: dict[str, Callable[[Command, Context], Ruling]] = {
     **dict.fromkeys(alarms.NEEDED_ROLE, alarms.rule),
     **dict.fromkeys(calibration.NEEDED_ROLE, calibration.rule),
     bench_sample.BY_HAND: bench_sample.rule,
+    **dict.fromkeys(stock.NEEDED_ROLE, stock.rule),
+    **dict.fromkeys(samples.NEEDED_ROLE, samples.rule),
     RELOAD: _reload,
 }
 

@@ -40,6 +40,10 @@ class FirstStock:
     name: str | None = None
 
 
+_COLUMNS = frozenset({"cohort", "tank", "animal", "number", "since", "states"})
+"""What a cohort's body does not repeat: its own columns, and what the animals were used to at the moment of the event."""
+
+
 class CohortRow(NamedTuple):
     """A cohort as the ledger tells it.
 
@@ -98,9 +102,7 @@ def projected(known: Mapping[str, CohortRow], event: Event, *, event_id: int) ->
     body = event.body
     at_us = event.recorded_at if event.measured_at is None else event.measured_at
     if event.kind == RECEIVED:
-        kept = {
-            name: value for name, value in body.items() if name not in ("cohort", "tank", "animal", "number", "since")
-        }
+        kept = {name: value for name, value in body.items() if name not in _COLUMNS}
         row = CohortRow(
             body["cohort"],
             body["tank"],
@@ -135,7 +137,8 @@ def projected(known: Mapping[str, CohortRow], event: Event, *, event_id: int) ->
         )
         return row, gone
     if event.kind == STAGE_PROPOSED:
-        return (row._replace(changed_at=before.changed_at, body=row.body | {"proposed": body["proposed"]}),)
+        # A proposal changes nothing that a person may have seen and acts on.
+        return (before._replace(body=row.body | {"proposed": body["proposed"]}),)
     if event.kind == STAGE_CONFIRMED:
         dates = {name: body[name] for name in ("hatched_at", "metamorphosed_at") if body.get(name) is not None}
         notes = row.body | dates | {"proposed": None, "declined": body.get("declined")}

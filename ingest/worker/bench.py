@@ -14,6 +14,7 @@ from ingest.commands.context import Seen
 from ingest.store import corrected, restoring
 from ingest.worker.committing import occurrence
 from ingest.worker.registering import code_version
+from ingest.worker.stock_book import StockBook
 
 if TYPE_CHECKING:
     import sqlite3
@@ -24,7 +25,7 @@ if TYPE_CHECKING:
     from ingest.chain.chain import ChainState
     from ingest.chain.services import Service
     from ingest.site.models import Site
-    from ingest.store.block import Occurrence
+    from ingest.store.block import AnimalRow, Occurrence
     from ingest.worker.plant import Plant
 
 
@@ -41,6 +42,7 @@ class Bench:
         self._connection = connection
         self.state = state
         self._now_us = now_us
+        self._stock_book: StockBook | None = None
 
     @property
     def now_us(self) -> int:
@@ -65,6 +67,18 @@ class Bench:
             occurrence(self._plant, Happened(tank, kind, item), now_us=self._now_us, actor=item.who)
             for item in transitions
         )
+
+    @property
+    def stock_book(self) -> StockBook:
+        """The animals on the site; a command works on them or on alarms, never on both."""
+        if self._stock_book is None:
+            self._stock_book = StockBook(self._plant, self.state, connection=self._connection, now_us=self._now_us)
+        return self._stock_book
+
+    def taken_up(self) -> tuple[Plant, ChainState, list[AnimalRow]]:
+        """Return plant and chain after the command, and what it leaves of the animals as rows of the store."""
+        book = self._stock_book
+        return (self._plant, self.state, []) if book is None else (book.plant, book.state_of_chain, book.animal_rows())
 
     @property
     def site(self) -> Site:

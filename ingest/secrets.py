@@ -60,6 +60,7 @@ def write_secret(name: str, value: str, *, site_file: Path) -> Path:
     path.parent.mkdir(mode=0o700, parents=True, exist_ok=True)
     fresh = path.with_suffix(".new")
     descriptor = os.open(fresh, os.O_WRONLY | os.O_CREAT | os.O_TRUNC, OWNER_ONLY)
+    os.fchmod(descriptor, OWNER_ONLY)  # Where a file was left over, opening it does not change its mode.
     with os.fdopen(descriptor, "w", encoding="utf-8") as file:
         file.write(value)
     fresh.replace(path)

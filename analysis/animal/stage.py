@@ -22,7 +22,7 @@ class Certainty(StrEnum):
     MEMORY = "memory"
     """Recalled, not checked against the source."""
     ASSUMED = "assumed"
-    """No figure: a fallback with its reasoning, see `analysis.animal.fallbacks`."""
+    """No figure: a fallback with its reasoning, see `analysis.animal.fallback_rules`."""
     SITE = "site"
     """Set by the site, with author and reason."""
 
@@ -124,7 +124,7 @@ class Stage:
     id : str
         ``genus-species/stage``.
     group : str
-        The kind of animal, for the fallbacks: see `analysis.animal.fallbacks`.
+        The kind of animal, for the fallbacks: see `analysis.animal.fallback_rules`.
     figures : Mapping of str to Figure
         Published figures by key; a key that is absent is not known.
     younger : tuple of str

@@ -67,7 +67,7 @@ class StageArrays:
 
     @classmethod
     def from_stages(cls, stages: Sequence[Stage], *, model: Constants | None = None) -> StageArrays:
-        """Return the figures of *stages*, gaps filled by `analysis.animal.fallbacks.RULES`.
+        """Return the figures of *stages*, gaps filled by `analysis.animal.fallback_rules.RULES`.
 
         Parameters
         ----------

@@ -8,7 +8,8 @@ import numpy as np
 
 from analysis.animal.constants import Constants, constants
 from analysis.animal.exposure import exposure_steps, settling_factor
-from analysis.animal.fallbacks import osmolality_from_ppt, resolved
+from analysis.animal.fallback_rules import osmolality_from_ppt
+from analysis.animal.fallbacks import resolved
 from analysis.animal.stage import Certainty, Figure, Stage, Supports
 from analysis.animal.stage_arrays import StageArrays
 from analysis.arrays import FloatArray

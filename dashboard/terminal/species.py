@@ -8,7 +8,8 @@ import sys
 from typing import TYPE_CHECKING, Any
 
 from analysis.animal import tables
-from analysis.animal.fallbacks import RULES, resolved
+from analysis.animal.fallback_rules import RULES
+from analysis.animal.fallbacks import resolved
 from analysis.animal.stage import Certainty, Figure, Supports
 from analysis.errors import InvalidInputError
 

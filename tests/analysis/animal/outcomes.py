@@ -17,7 +17,8 @@ import numpy as np
 
 from analysis.animal import tables
 from analysis.animal.constants import Constants, constants
-from analysis.animal.fallbacks import osmolality_from_ppt, resolved
+from analysis.animal.fallback_rules import osmolality_from_ppt
+from analysis.animal.fallbacks import resolved
 from analysis.animal.osmoregulation import CohortState
 from analysis.animal.stage import Stage
 from analysis.animal.stage_arrays import StageArrays

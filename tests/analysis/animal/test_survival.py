@@ -7,7 +7,7 @@ import pytest
 
 from analysis.animal import tables
 from analysis.animal.constants import constants
-from analysis.animal.fallbacks import osmolality_from_ppt
+from analysis.animal.fallback_rules import osmolality_from_ppt
 from analysis.animal.stage import Certainty
 from analysis.animal.survival import EXPOSURE_FACTOR, alive_from_exposure, survival_of_schedule
 from analysis.errors import InvalidInputError

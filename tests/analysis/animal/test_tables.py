@@ -11,7 +11,8 @@ from importlib import resources
 import pytest
 
 from analysis.animal import tables
-from analysis.animal.fallbacks import RULES, osmolality_from_ppt, resolved
+from analysis.animal.fallback_rules import RULES, osmolality_from_ppt
+from analysis.animal.fallbacks import resolved
 from analysis.animal.overrides import with_overrides, with_species
 from analysis.animal.stage import Certainty, Supports
 from analysis.errors import InvalidInputError

@@ -14,7 +14,8 @@ import numpy as np
 
 from analysis.animal import tables
 from analysis.animal.constants import constants
-from analysis.animal.fallbacks import RULES, resolved
+from analysis.animal.fallback_rules import RULES
+from analysis.animal.fallbacks import resolved
 from analysis.animal.stage import Certainty, Supports
 from analysis.animal.survival import EXPOSURE_FACTOR
 from tests.analysis.animal.outcomes import (

@@ -15,7 +15,7 @@ from typing import IO, TYPE_CHECKING, Any, NamedTuple
 
 from tqdm import tqdm
 
-from analysis.errors import EuryhaleError
+from analysis.errors import EuryhaleError, InvalidInputError
 from ingest import logs, tether
 from ingest.broker import Broker, free_port, is_listening
 from ingest.clock import SystemClock
@@ -23,6 +23,7 @@ from ingest.simulator import scenario as scenarios
 from ingest.simulator.history import write_history
 from ingest.simulator.live import run_live
 from ingest.site.loading import load
+from ingest.store.lock import is_held
 
 if TYPE_CHECKING:
     import argparse
@@ -32,6 +33,7 @@ HELP = "show an invented hatchery, live in the browser"
 SEED = 7
 HISTORY_DAYS = 14.0
 BOARD_PORT = 8501
+MARK = "made-by-euryhale-demo"
 LOOPBACK = "127.0.0.1"
 READY_LIMIT_S = 120.0
 LOOK_EVERY_S = 0.2
@@ -97,8 +99,12 @@ def _run_all(args: argparse.Namespace) -> int:
 
 def _prepare(folder: Path, *, board_port: int) -> None:
     """Lay the demo's files anew: last time's history would have a hole up to now."""
+    _check_ours(folder)
     shutil.rmtree(folder, ignore_errors=True)
     folder.mkdir(parents=True)
+    (folder / MARK).write_text(
+        "Made by euryhale demo, which empties this folder each time it starts.\n", encoding="utf-8"
+    )
     source = _demo_data()
     text = (source / "site.yaml").read_text(encoding="utf-8")
     # The animals came when the history begins.
@@ -107,6 +113,17 @@ def _prepare(folder: Path, *, board_port: int) -> None:
     text = text.replace("port: 1883", f"port: {free_port()}").replace("port: 8501", f"port: {board_port}")
     (folder / "site.yaml").write_text(text, encoding="utf-8")
     shutil.copy(source / "scenario.yaml", folder / "scenario.yaml")
+
+
+def _check_ours(folder: Path) -> None:
+    """Refuse a folder that holds anything but a demo that has ended: it is going to be emptied."""
+    if not folder.exists():
+        return
+    if not folder.is_dir() or (any(folder.iterdir()) and not (folder / MARK).is_file()):
+        allowed = "a folder that is not there yet, is empty, or was made by the demo: it is emptied at each start"
+        raise InvalidInputError("--folder", found=str(folder), allowed=allowed)
+    if any(is_held(lock.parent) for lock in folder.rglob("worker.lock")):
+        raise InvalidInputError("--folder", found=str(folder), allowed="a folder in which no demo is running")
 
 
 def _demo_data() -> Path:

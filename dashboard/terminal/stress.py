@@ -6,14 +6,11 @@ import csv
 import json
 import math
 import sys
-from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, TextIO
-from zoneinfo import ZoneInfo, ZoneInfoNotFoundError
 
 import numpy as np
-from tqdm import tqdm
 
 from analysis.animal import tables
 from analysis.animal.constants import constants
@@ -28,12 +25,14 @@ from analysis.animal.stress import Stress, advance_series, exposure_of_series
 from analysis.animal.survival import estimate, survival_basis
 from analysis.arrays import MICROSECONDS_PER_SECOND
 from analysis.errors import EuryhaleError, InvalidInputError
-from analysis.water.properties import Seawater, WaterKind
-from ingest.tables import Table, TableError, whole
+from analysis.water.properties import WaterKind
+from dashboard.terminal.sensor_options import UsageError, destination, water_kind_of
+from dashboard.terminal.table_options import columns_of, progress_bar, table_of, tell_remarks
+from ingest.tables import whole
 
 if TYPE_CHECKING:
     import argparse
-    from collections.abc import Callable, Iterator
+    from collections.abc import Callable
 
     from analysis.animal.stage import Stage
     from analysis.arrays import FloatArray, IntArray
@@ -54,10 +53,6 @@ COLUMNS = (
 ROWS_AT_ONCE = 8192
 DEFAULT_RESOLUTION_MOSM_KG = 0.3
 """Step of the readings for the time left: about 0.01 in salinity, as most meters print."""
-
-
-class UsageError(EuryhaleError):
-    """Options that do not go together."""
 
 
 def add_parser(subparsers: Any) -> None:
@@ -121,18 +116,18 @@ class Judged:
 
 
 def _run(args: argparse.Namespace) -> int:
-    stage, kind = _stage(args.animal), _water_kind(args.water)
+    stage, kind = _stage(args.animal), water_kind_of(args.water)
     columns, times = _columns(args.column)
     if args.output is not None and args.output.resolve() == args.input.resolve():
         raise UsageError("--output must be another file than --input")
     state = _start(args, kind)
-    table = _table(args, columns, times)
-    with _progress("reading", " B") as progress:
+    table = table_of(args, columns, times, units={"temperature": "degC"})
+    with progress_bar("reading", " B") as progress:
         chunk = whole(table, progress=progress)
     record = _record(chunk, kind)
     judged = _judged(stage, state, record)
     if args.output is not None or not args.json:
-        with _destination(args.output) as target, _progress("writing", " rows") as progress:
+        with destination(args.output) as target, progress_bar("writing", " rows") as progress:
             _write(target, judged, record, has_decimal_comma=table.layout.has_decimal_comma, progress=progress)
     summary = _summary(stage, state, record, judged, kind)
     if args.json:
@@ -149,35 +144,8 @@ def _stage(animal: str) -> Stage:
         raise UsageError(f"--animal: {error}") from error
 
 
-def _water_kind(word: str) -> WaterKind:
-    if word == "seawater":
-        return Seawater()
-    if word == "sodium-chloride":
-        from analysis.water.sodium_chloride_water import SodiumChlorideWater
-
-        return SodiumChlorideWater()
-    if word.lower().endswith((".yaml", ".yml")):
-        from dashboard.terminal.analysis_file import water_of_analysis_file
-
-        return water_of_analysis_file(Path(word))
-    raise UsageError(f"--water: found {word!r}; allowed: seawater, sodium-chloride, or a file that ends in .yaml")
-
-
 def _columns(pairs: list[str]) -> tuple[dict[str, str], list[str]]:
-    columns: dict[str, str] = {}
-    times: list[str] = []
-    for pair in pairs:
-        role, found, name = pair.partition("=")
-        if not found or not name or role not in ROLES:
-            raise UsageError(f"--column: found {pair!r}; allowed: QUANTITY=NAME with {', '.join(ROLES)}")
-        if role == "time":
-            times.append(name)
-        elif role in columns:
-            raise UsageError(f"--column: {role} is given twice")
-        else:
-            columns[role] = name
-    if not times or len(times) > 2:
-        raise UsageError("needs --column time=NAME, once or (for a date and a time of day) twice")
+    columns, times = columns_of(pairs, roles=ROLES)
     if ("salinity" in columns) == ("osmolality" in columns):
         raise UsageError("needs either --column salinity=NAME or --column osmolality=NAME")
     return columns, times
@@ -193,26 +161,6 @@ def _start(args: argparse.Namespace, kind: WaterKind) -> CohortState:
         raise UsageError(f"--acclimated-to: found {args.acclimated_to:g}; allowed: 0 to 120")
     osmolality = np.array([float(kind.osmolality_from_salinity(args.acclimated_to))])
     return CohortState.used_to(osmolality, temperature_degC=np.array([warmth]))
-
-
-def _table(args: argparse.Namespace, columns: dict[str, str], times: list[str]) -> Table:
-    try:
-        zone = ZoneInfo(args.zone) if args.zone else None
-    except (ZoneInfoNotFoundError, ValueError) as error:
-        raise UsageError(f"--zone: found {args.zone!r}; allowed: an IANA zone such as Europe/Lisbon") from error
-    try:
-        return Table(
-            args.input,
-            columns=columns,
-            time=times,
-            time_format=args.time_format,
-            zone=zone,
-            units={"temperature": "degC"},
-        )
-    except TableError as error:
-        if error.column in {*columns.values(), *times} and error.found == "no such column":
-            raise UsageError(str(error)) from error
-        raise
 
 
 def _record(chunk: Chunk, kind: WaterKind) -> Record:
@@ -359,35 +307,5 @@ def _tell(summary: dict[str, Any], chunk: Chunk) -> None:
         )
     if summary["osmotic_part_only"]:
         print("osmotic part only: this water is not shown to be seawater-like in K, Mg and Ca", file=sys.stderr)
-    for remark in chunk.remarks[:3]:
-        print(f"line {remark.line}, {remark.column}: found {remark.found}; allowed: {remark.allowed}", file=sys.stderr)
-    if len(chunk.remarks) > 3:
-        print(f"and {len(chunk.remarks) - 3} more such cells", file=sys.stderr)
+    tell_remarks(chunk)
     print(CAUTION, file=sys.stderr)
-
-
-@contextmanager
-def _destination(path: Path | None) -> Iterator[TextIO]:
-    """Yield where to write: a file that appears under its name only when it is whole, or standard output."""
-    if path is None:
-        yield sys.stdout
-        return
-    part = path.with_name(path.name + ".part")
-    try:
-        with part.open("w", encoding="utf-8", newline="") as target:
-            yield target
-        part.replace(path)
-    finally:
-        part.unlink(missing_ok=True)
-
-
-@contextmanager
-def _progress(what: str, unit: str) -> Iterator[Callable[[int, int], None]]:
-    """Yield a progress callback that draws a bar on a terminal and nothing elsewhere."""
-    with tqdm(desc=what, unit=unit, unit_scale=True, leave=False, disable=not sys.stderr.isatty()) as bar:
-
-        def progress(done: int, total: int) -> None:
-            bar.total = total
-            bar.update(done - bar.n)
-
-        yield progress

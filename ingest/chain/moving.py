@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 from typing import TYPE_CHECKING, NamedTuple
 
 import numpy as np
 
+from analysis.animal.strains import DANGER_LOSS, DANGER_STRAIN
 from analysis.animal.stress import advance, advance_series
 from analysis.arrays import MICROSECONDS_PER_SECOND
 from ingest.chain.animals import EVERY_US
@@ -78,6 +80,15 @@ def put_into(
         temperature_degC=record.temperature_degC,
     )
     return after
+
+
+def exposure_from_strain(strain: float, *, steepness: float) -> float:
+    """Return the exposure behind a recorded exposure strain, the inverse of `analysis.animal.strains.exposure_strain`; NaN from 1 on."""
+    at_danger = math.pow(DANGER_LOSS / (1.0 - DANGER_LOSS), 1.0 / steepness)
+    if strain <= DANGER_STRAIN:
+        return at_danger * strain / DANGER_STRAIN
+    share = (strain - DANGER_STRAIN) / (1.0 - DANGER_STRAIN)
+    return at_danger + (1.0 - at_danger) * share if strain < 1.0 else math.nan
 
 
 def farthest_record(

@@ -124,6 +124,7 @@ def _blood(row: CohortRow, entry: BloodEntry, command: Command, context: Context
         states = {} if after is None else {row.id: after}
     body = {
         **msgspec.to_builtins(entry),
+        "by": entry.by or command.actor,
         "value_mOsm_kg": value.osmolality_mOsm_kg,
         "variation": value.variation,
         "is_usable": value.is_usable,
@@ -186,7 +187,7 @@ def _postlarvae(row: CohortRow, entry: PostlarvaeEntry, command: Command, contex
         entry.pass_mark,
         entry.by or command.actor,
     )
-    body = {**msgspec.to_builtins(entry), "age_d": age_d, "verdict": asdict(verdict(test))}
+    body = {**msgspec.to_builtins(entry), "by": test.by, "age_d": age_d, "verdict": asdict(verdict(test))}
     return _entered(samples.POSTLARVAE, row, at_us, body, {}, command, context)
 
 

@@ -20,7 +20,7 @@ class FeltNear(NamedTuple):
     acclimated_mOsm_kg: float
     internal_mOsm_kg: float
     gap_mOsm_kg: float
-    exposure: float
+    exposure_strain: float
 
 
 class StockBook(Protocol):

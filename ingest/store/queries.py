@@ -9,19 +9,24 @@ import msgspec
 import numpy as np
 
 from analysis.animal.stress import BAND_WORDS, DRIVER_WORDS, Band, Driver
-from ingest.store import alarms, amendments, calibrations, corrected, ledger, registry, rollups
+from ingest.store import alarms, amendments, animals, calibrations, corrected, ledger, registry, rollups, samples
 from ingest.store.connection import reader
 from ingest.store.lock import is_held
 from ingest.store.store import store_path
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
     from pathlib import Path
 
+    from analysis.animal.foresight import Foresight
+    from analysis.animal.stage import Stage
     from analysis.arrays import FloatArray, IntArray
     from ingest.store.alarms import AlarmRow
+    from ingest.store.animals import AnimalSight
     from ingest.store.calibrations import HealthRow, KeptService, PeriodOfRecord
     from ingest.store.corrected import JobState
     from ingest.store.ledger import Event
+    from ingest.store.samples import AnimalSample
 
 HOUR_US = 3_600_000_000
 DAY_US = 24 * HOUR_US
@@ -324,6 +329,21 @@ class Queries:
             )
             for row in rows
         ]
+
+    def animals(self, stages: Mapping[str, Stage]) -> list[AnimalSight]:
+        """Return how each cohort on the site is and why; *stages* as `ingest.chain.animal_roster.known_stages` makes them."""
+        with reader(self._path) as connection:
+            return animals.sights(connection, stages)
+
+    def animal_samples(self, cohort: str | None = None, *, since_us: int = 0) -> list[AnimalSample]:
+        """Return values of body fluid and stress tests of postlarvae, of one cohort or of all, oldest first."""
+        with reader(self._path) as connection:
+            return samples.read(connection, cohort=cohort, since_us=since_us)
+
+    def foresight(self, cohort: str) -> Foresight:
+        """Return how the losses of a cohort and its stress before them went together."""
+        with reader(self._path) as connection:
+            return animals.foreseen(connection, cohort)
 
     def sensor_health(self) -> dict[str, HealthRow]:
         """Return for each sensor that has been assessed whether it can be believed, and why."""

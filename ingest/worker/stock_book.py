@@ -10,7 +10,7 @@ import numpy as np
 from analysis.animal.osmoregulation import CohortState, StageArrays
 from analysis.arrays import MICROSECONDS_PER_SECOND
 from ingest.chain.animals import carried_animals
-from ingest.chain.moving import brought_to, farthest_record, put_into
+from ingest.chain.moving import brought_to, exposure_from_strain, farthest_record, put_into
 from ingest.commands.stock_book import FeltNear
 from ingest.store import cohorts, water_record
 from ingest.store.restoring import stocked
@@ -83,11 +83,13 @@ class StockBook:
         felt = self.felt_near(cohort_id, at_us)
         if felt is None:
             return live
+        exposure = exposure_from_strain(felt.exposure_strain, steepness=self.plant.animals.figures.steepness)
         return replace(
             live,
             acclimated=np.array([felt.acclimated_mOsm_kg]),
             internal=np.array([felt.internal_mOsm_kg]),
-            exposure=live.exposure if np.isnan(felt.exposure) else np.array([felt.exposure]),
+            # Beyond the published median the strain says no more how far.
+            exposure=live.exposure if np.isnan(exposure) else np.array([exposure]),
         )
 
     def after_coming(self, state: CohortState, stage: Stage, *, tank: str, at_us: int) -> CohortState:

@@ -80,6 +80,7 @@ HEARTBEAT_EVERY_S = 5.0
 ROLLUP_EVERY_S = 20.0
 ROLLUP_LAG_US = 5 * 60 * MICROSECONDS_PER_SECOND
 """The rollups stay this far behind the newest time, so that a sensor that is a little late is swept, not added singly."""
+ROLLUP_MOST_S = 0.05
 CHECKPOINT_EVERY_S = 60.0
 FORWARDING_EVERY_S = 2.0
 REDERIVE_EVERY_S = 0.1
@@ -292,7 +293,7 @@ class Worker:
             self._commit(BlockCommit(meta={"alive_at": self._clock.now_us(), **self._condition()}), stop)
         if self._outgoing is not None and self._schedule.is_due("forwarding", FORWARDING_EVERY_S):
             self._outgoing.keep_house()
-        if self._schedule.is_due("rollup", ROLLUP_EVERY_S) and self.roll_up():
+        if self._schedule.is_due("rollup", ROLLUP_EVERY_S) and self._roll_up_for_a_while():
             self._schedule.make_due("rollup")
         if self._rederiver.has_work and self._schedule.is_due("rederive", REDERIVE_EVERY_S):
             self.rederive()
@@ -327,6 +328,14 @@ class Worker:
             if not self._commit(self._with_output(BlockCommit(), output), stop):
                 return
             self.state = output.state
+
+    def _roll_up_for_a_while(self) -> bool:
+        """Take steps of the rollups that hold up no block for long; a step of thin records is short. Return whether more is to do."""
+        until_s = self._clock.monotonic_s() + ROLLUP_MOST_S
+        while self.roll_up():
+            if self._clock.monotonic_s() >= until_s:
+                return True
+        return False
 
     def roll_up(self) -> bool:
         """Take one step of the rollups; return whether more is to do."""

@@ -156,6 +156,7 @@ def test_the_replay_is_the_simulated_tank_stepped_second_by_second() -> None:
         second = begin + lasting
 
 
+@pytest.mark.slow
 def test_the_cap_on_stress_slows_a_journey_that_would_be_too_fast() -> None:
     fast = Override("salinity per hour", 6.0, "Ines", "test of the cap")
     of = task("oreochromis-niloticus/juvenile", 0.0, 30.0, (SEA,))

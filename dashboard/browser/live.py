@@ -80,7 +80,10 @@ def _do(access: Access, done: Mapping[str, str], snapshot: Snapshot, visit: Visi
         _turn_to({name: done[name] for name in ("page", "id") if done.get(name)})
         st.rerun(scope="app")
     if done["do"] == "going":
-        st.session_state[ORDERS] = (*visit.orders, orders.take(access, done))
+        order = orders.take(access, done)
+        if snapshot.is_watching:
+            order = orders.soon(access, order)
+        st.session_state[ORDERS] = (*visit.orders, order)
     elif room.act is not None:
         query = room.act(done, snapshot, visit)
         if query is not None:

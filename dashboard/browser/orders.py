@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import time
 from collections.abc import Mapping
 from dataclasses import replace
 from typing import TYPE_CHECKING
@@ -13,6 +14,8 @@ if TYPE_CHECKING:
     from dashboard.browser.access import Access
 
 MOST_KEPT = 30
+LOOK_EVERY_S = 0.1
+PATIENCE = 8
 
 
 def take(access: Access, act: Mapping[str, str]) -> Order:
@@ -39,6 +42,16 @@ def take(access: Access, act: Mapping[str, str]) -> Order:
         )
     except StoreBusyError:
         return replace(order, state="unsent")
+    return order
+
+
+def soon(access: Access, order: Order) -> Order:
+    """Return *order* with its outcome if the worker decides at once, as it mostly does: then nobody has to watch it wait."""
+    for _ in range(PATIENCE):
+        order = _followed(access, order)
+        if order.state != "waiting":
+            break
+        time.sleep(LOOK_EVERY_S)
     return order
 
 

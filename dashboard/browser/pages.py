@@ -18,7 +18,7 @@ if TYPE_CHECKING:
     from dashboard.browser.tank_chart import Stretch
     from dashboard.browser.visit import Visit
 
-SHOWN_EVENTS = 60
+SHOWN_EVENTS = 300
 
 
 def _draw_tanks(_access: Access, snapshot: Snapshot, visit: Visit) -> str:

@@ -189,6 +189,11 @@ class TankSight:
         return self.priority in ("urgent", "soon") or self.is_unwatched
 
     @property
+    def is_doubted(self) -> bool:
+        """Return whether the value that stands for the tank is suspect: it is judged, and it may be wrong."""
+        return self.shown is not None and not self.is_unwatched and self.shown.quality == MOST_BELIEVABLE_QUALITY
+
+    @property
     def is_outside(self) -> bool:
         """Return whether a believable value lies outside the band that alarms judge, alarm or not: an alarm waits for its delay."""
         if self.is_unwatched or self.shown is None:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from html import escape
 
+from dashboard.browser.occurrences import Occurrence, occurrences
 from dashboard.browser.sights import AlarmSight, Snapshot
 from dashboard.browser.views.frame import framed, teach
 from dashboard.browser.views.say import flag_of, going, who_has_it, words_of
@@ -11,9 +12,6 @@ from dashboard.browser.visit import Visit, link
 from ingest.store.ledger import Event
 from ingest.words import times
 from ingest.words.alarms import AlarmFacts, alarm_words
-
-MACHINES = ("worker", "monitor")
-"""What the program does by itself has no person beside it."""
 
 
 def page(snapshot: Snapshot, visit: Visit, *, events: list[Event]) -> str:
@@ -64,24 +62,46 @@ def _hidden(snapshot: Snapshot, visit: Visit) -> str:
 
 
 def _history(snapshot: Snapshot, visit: Visit, events: list[Event]) -> str:
-    if not events:
+    told = occurrences(events)
+    if not told:
         return ""
-    rows = "".join(_event(event, snapshot, visit) for event in reversed(events))
-    head = "".join(f"<th>{visit.text(key)}</th>" for key in ("when", "where", "what", "happened", "by"))
+    rows = "".join(_told(occurrence, snapshot, visit) for occurrence in told)
+    head = "".join(f"<th>{visit.text(key)}</th>" for key in ("when", "where", "what", "lasted", "taken", "again"))
     return (
-        f'<section data-k="history"><h2>{visit.text("earlier")}</h2><div class="scroll"><table class="stack"><thead><tr>{head}</tr></thead>'
-        f"<tbody>{rows}</tbody></table></div></section>"
+        f'<section data-k="history"><h2>{visit.text("history")}</h2><div class="scroll"><table class="stack">'
+        f"<thead><tr>{head}</tr></thead><tbody>{rows}</tbody></table></div></section>"
     )
 
 
-def _event(event: Event, snapshot: Snapshot, visit: Visit) -> str:
-    at = event.measured_at or event.recorded_at
-    moment = times.moment(at, snapshot.zone, now_us=snapshot.now_us, language=visit.language)
-    words = alarm_words(AlarmFacts(str(event.body.get("condition", "unknown"))), language=visit.language)
-    act = event.kind.partition(".")[2]
-    acts = visit.language.ALARM_ACTS
-    who = "" if event.actor in MACHINES else event.actor
+def _told(occurrence: Occurrence, snapshot: Snapshot, visit: Visit) -> str:
+    language = visit.language
+    moment = times.moment(occurrence.newest_us, snapshot.zone, now_us=snapshot.now_us, language=language)
+    words = alarm_words(AlarmFacts(occurrence.condition), language=language)
+    kind, _, tank = occurrence.subject.partition("/")
+    name = escape(snapshot.subject_name(occurrence.subject))
+    where = link("tank", name, tank=tank) if kind == "tank" else name
+    again = visit.text("times", n=occurrence.again) if occurrence.again else ""
     return (
-        f'<tr><td class="quiet">{escape(moment)}</td><th scope="row">{escape(snapshot.subject_name(event.subject))}</th>'
-        f"<td>{escape(words.title)}</td><td>{escape(acts.get(act, act.replace('_', ' ')))}</td><td>{escape(who)}</td></tr>"
+        f'<tr><td class="quiet">{escape(moment)}</td><th scope="row">{where}</th><td><span class="flagged">'
+        f"{flag_of(occurrence.priority, visit, size=13)}{escape(words.title)}</span></td><td>{_lasted(occurrence, visit)}</td>"
+        f"<td>{_taken(occurrence, visit)}</td><td>{again}</td></tr>"
     )
+
+
+def _lasted(occurrence: Occurrence, visit: Visit) -> str:
+    if occurrence.ended_at_us is None:
+        return visit.text("still_there")
+    if occurrence.raised_at_us is None:
+        return ""
+    seconds = (occurrence.ended_at_us - occurrence.raised_at_us) / 1e6
+    return escape(times.duration(seconds, language=visit.language))
+
+
+def _taken(occurrence: Occurrence, visit: Visit) -> str:
+    if not occurrence.taken_by:
+        return f'<span class="quiet">{visit.text("by_nobody")}</span>'
+    who = escape(occurrence.taken_by)
+    if occurrence.raised_at_us is None or occurrence.taken_at_us is None:
+        return who
+    waited = times.duration(max(0.0, (occurrence.taken_at_us - occurrence.raised_at_us) / 1e6), language=visit.language)
+    return f'{who} <span class="quiet">{visit.text("after", waited=waited)}</span>'

@@ -8,7 +8,7 @@ from html import escape
 
 from dashboard.browser import glyphs
 from dashboard.browser.sights import Band, DayLine, Snapshot, TankSight
-from dashboard.browser.views.say import say, say_outside, say_unwatched
+from dashboard.browser.views.say import say, say_doubted, say_outside, say_unwatched
 from dashboard.browser.visit import Visit, age, link
 from ingest.words import numbers
 from ingest.words.alarms import stress_band
@@ -163,4 +163,6 @@ def _say(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
         return say(tank.alarms[0], snapshot, visit, more=len(tank.alarms) - 1)
     if tank.is_unwatched:
         return say_unwatched(tank, snapshot, visit) if snapshot.has_store else ""
-    return say_outside(visit) if tank.is_outside else ""
+    if tank.is_outside:
+        return say_outside(visit)
+    return say_doubted(tank, visit, has_title=False) if tank.is_doubted else ""

@@ -9,7 +9,7 @@ from dashboard.browser.sights import AlarmSight, Snapshot, TankSight
 from dashboard.browser.visit import Order, Visit
 from ingest.words import times
 from ingest.words.alarms import AlarmWords, alarm_words, priority_letter, priority_word
-from ingest.words.trust import command_words
+from ingest.words.trust import command_words, flag_words, quality_word
 
 
 def words_of(alarm: AlarmSight, snapshot: Snapshot, visit: Visit) -> AlarmWords:
@@ -51,6 +51,17 @@ def say_unwatched(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
 def say_outside(visit: Visit) -> str:
     """Return the line of a tank that has left its band and has no alarm yet."""
     return f'<div class="say soon"><p><b>{visit.text("outside")}</b> {visit.text("outside_waits")}</p></div>'
+
+
+def say_doubted(tank: TankSight, visit: Visit, *, has_title: bool = True) -> str:
+    """Return the line of a tank whose number may be wrong, with the reason."""
+    if tank.shown is None:
+        return ""
+    word = quality_word(tank.shown.quality, language=visit.language)
+    reason = ", ".join(flag_words(tank.shown.flags, language=visit.language))
+    title = f"<b>{visit.text('doubt')}</b> " if has_title else ""
+    text = f"{word[:1].upper()}{word[1:]}: {reason}." if reason else f"{word[:1].upper()}{word[1:]}."
+    return f'<div class="say note"><p>{title}{escape(text)}</p></div>'
 
 
 def who_has_it(alarm: AlarmSight, snapshot: Snapshot, visit: Visit) -> str:

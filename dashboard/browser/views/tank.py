@@ -12,7 +12,7 @@ from dashboard.browser.sights import Snapshot, TankSight
 from dashboard.browser.tank_chart import SPANS_S, Stretch
 from dashboard.browser.views.card import animals_text, balance_words
 from dashboard.browser.views.frame import framed, teach
-from dashboard.browser.views.say import going, say, say_outside, say_unwatched, who_has_it
+from dashboard.browser.views.say import going, say, say_doubted, say_outside, say_unwatched, who_has_it
 from dashboard.browser.views.sensors import trust_words
 from dashboard.browser.visit import Visit, age, link
 from ingest.words import numbers, times
@@ -55,6 +55,8 @@ def _action(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
             return f'<div class="action" data-k="action">{say_unwatched(tank, snapshot, visit)}</div>'
         if tank.is_outside:
             return f'<div class="action" data-k="action">{say_outside(visit)}</div>'
+        if tank.is_doubted:
+            return f'<div class="action" data-k="action">{say_doubted(tank, visit)}</div>'
         return f'<p class="calm" data-k="calm">{visit.text("tank_calm")}</p>'
     lines = []
     for i, alarm in enumerate(tank.alarms):

@@ -202,3 +202,15 @@ def test_every_text_of_the_board_exists_and_none_is_left_over():
     assert set(ENGLISH.BOARD) <= quoted
     asked = set(re.findall(r"""\.text\(\s*["']([a-z0-9_]+)["']""", source))
     assert asked <= set(ENGLISH.BOARD)
+
+
+def test_a_number_that_may_be_wrong_is_not_called_fine(access: Access):
+    from dataclasses import replace
+
+    snapshot = access.snapshot()
+    n2 = snapshot.tank("n2")
+    doubted = replace(n2, shown=replace(n2.shown, quality=3, flags=1 << 18))
+    page = say.say_doubted(doubted, Visit("tank"))
+    assert doubted.is_doubted
+    assert "Doubt: disagrees with its neighbour." in text(page)
+    assert "as far as can be told" in text(page)

@@ -39,19 +39,9 @@ class ApprisePost:
 
     def __call__(self, parcel: Parcel) -> Posted:
         """Try once to deliver *parcel*."""
-        try:
-            url = read_secret(parcel.address, site_file=self._site_file).strip()
-        except MissingSecretError as error:
-            return Posted(is_delivered=False, detail=str(error))
-        except (OSError, ValueError) as error:
-            return Posted(
-                is_delivered=False, detail=f"secret {parcel.address!r} cannot be read: {type(error).__name__}"
-            )
-        service = self._service(url)
+        service, fault = self._service(parcel.address)
         if service is None:
-            return Posted(
-                is_delivered=False, detail=f"the address in secret {parcel.address!r} is none that apprise knows"
-            )
+            return Posted(is_delivered=False, detail=fault)
         sending = apprise.Apprise(asset=self._asset)
         sending.add(service)
         kind = apprise.NotifyType.WARNING if parcel.is_alarm else apprise.NotifyType.INFO
@@ -60,20 +50,31 @@ class ApprisePost:
         )
         if result.status == apprise.AppriseResultStatus.SUCCESS and result.success_count == 1:
             return Posted(is_delivered=True, detail="")
-        return Posted(is_delivered=False, detail=_detail(result, url))
+        return Posted(is_delivered=False, detail=_detail(result, service))
 
-    def _service(self, url: str) -> Any:
+    def fault_of(self, address: str) -> str:
+        """Return what is wrong with the address in a secret, empty if nothing is; nothing is sent."""
+        return self._service(address)[1]
+
+    def _service(self, address: str) -> tuple[Any, str]:
+        """Return the service behind an address, or None and why there is none."""
+        try:
+            url = read_secret(address, site_file=self._site_file).strip()
+        except MissingSecretError as error:
+            return None, str(error)
+        except (OSError, ValueError) as error:
+            return None, f"secret {address!r} cannot be read: {type(error).__name__}"
         service = apprise.Apprise.instantiate(url, asset=self._asset)
         if service is None:
-            return None
+            return None, f"the address in secret {address!r} is none that apprise knows"
         service.request_rate_per_sec = 0
         service.socket_connect_timeout = min(service.socket_connect_timeout, CONNECT_S)
         service.socket_read_timeout = min(service.socket_read_timeout, READ_S)
-        return service
+        return service, ""
 
 
-def _detail(result: Any, url: str) -> str:
+def _detail(result: Any, service: Any) -> str:
     """Return why an attempt failed; the address, which is a secret, never stands in it."""
     said = [str(getattr(entry, "message", entry)) for entry in result.logs()]
     text = f"{result.status.name.lower()}: {said[-1] if said else 'no word from the service'}"
-    return text.replace(url, "(address)")[:LONGEST_DETAIL]
+    return text.replace(service.url(), "(address)")[:LONGEST_DETAIL]

@@ -11,6 +11,7 @@ import structlog
 from analysis.errors import EuryhaleError
 from ingest.mqtt import Access, Intake
 from ingest.notify import codes
+from ingest.notify.addresses import AddressCheck
 from ingest.notify.desk import CallDesk
 from ingest.notify.life_sign import LifeSign
 from ingest.notify.publishing import Publisher
@@ -42,6 +43,7 @@ log = structlog.get_logger(__name__)
 CALLING_EVERY_S = 0.2
 PUBLISH_EVERY_S = 1.0
 LOOK_EVERY_S = 5.0
+ADDRESSES_EVERY_S = 300.0
 MOST_ANSWERS = 50
 
 
@@ -87,6 +89,7 @@ class Calling:
         self._sender: Sender | None = None
         self._answers: Intake | None = None
         self._life_sign: LifeSign | None = None
+        self._addresses: AddressCheck | None = None
         self._unwritten: list[Report] = []
         self._unheard: list[Received] = []
         self._told: dict[str, str | int] = {}
@@ -148,6 +151,7 @@ class Calling:
         if self._desk.plan is not None and self._sender is None:
             self._desk.key = self._key()
             self._sender = Sender(self._post or self._apprise(), self._clock)
+        self._schedule.make_due("addresses")
         if self._is_replay:
             return
         if before is None or before.acknowledgements != site.acknowledgements:
@@ -170,7 +174,9 @@ class Calling:
         # Only a site that declares people pays for loading it.
         from ingest.notify.posting import ApprisePost
 
-        return ApprisePost(self._site_file)
+        post = ApprisePost(self._site_file)
+        self._addresses = AddressCheck(post.fault_of)
+        return post
 
     def _dial(self, plant: Plant) -> None:
         """Connect to the broker outside on which people answer."""
@@ -218,6 +224,8 @@ class Calling:
             ):
                 self._sender.hand_over(parcel)
             self._on_their_way = len(self._sender.in_flight)
+        if self._addresses is not None and self._schedule.is_due("addresses", ADDRESSES_EVERY_S):
+            self._addresses.look([channel.url_secret for person in plant.site.people for channel in person.channels])
         if self._schedule.is_due("look", LOOK_EVERY_S):
             self._tell_problem(plant, desk, now_us)
 
@@ -262,6 +270,8 @@ class Calling:
             found.append(problem_words("nobody"))
         if plant.site.acknowledgements is not None and not (self._answers and self._answers.is_connected):
             found.append(problem_words("unheard"))
+        if self._addresses is not None and self._addresses.faults:
+            found.append(problem_words("addresses", reason=", ".join(self._addresses.faults)))
         if self._life_sign is not None and self._life_sign.problem:
             found.append(problem_words("no_sign", reason=self._life_sign.problem))
         self.problem = "; ".join(found)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sqlite3
+import sys
 import threading
 import time
 from contextlib import closing
@@ -91,8 +92,8 @@ def test_killed_while_a_message_is_on_its_way_it_is_delivered_after_the_next_sta
             assert first_broken_id(connection) is None
 
 
-def test_from_condition_to_the_mail_server(tmp_path, mosquitto, record_property):
-    """How long it takes is recorded; only that it arrives, once a call, is asserted."""
+def test_from_condition_to_the_mail_server(tmp_path, mosquitto):
+    """How long it takes is written out; only that it arrives, once a call, is asserted."""
     with MailServer() as mail, WebServer() as web:
         worker = make_site(tmp_path, mosquitto, mail, web)
         worker.start()
@@ -101,7 +102,7 @@ def test_from_condition_to_the_mail_server(tmp_path, mosquitto, record_property)
             wait_until(lambda: bool(mail.messages), what="the mail")
             arrived_us = time.time_ns() // 1000
             ((written_us,),) = rows(worker.store, "SELECT created_at FROM outbox ORDER BY id LIMIT 1")
-            record_property("from_outbox_to_mail_s", (arrived_us - written_us) / 1e6)
+            sys.stdout.write(f"from the outbox row to the mail server: {(arrived_us - written_us) / 1e6:.2f} s\n")
             done = "SELECT count(*) FROM delivery WHERE number = 1 AND outcome = 'delivered'"
             wait_until(lambda: rows(worker.store, done) == [(2,)], what="the reports")
             assert len(mail.messages) == len(web.bodies) == 1

@@ -117,11 +117,12 @@ def slice_end(connection: sqlite3.Connection, job: Job, *, most: int) -> int:
     return max(int(row[0]), job.next_us + 1)
 
 
-def readings(connection: sqlite3.Connection, *, sensor: int, from_us: int, to_us: int) -> ReadingRows:
-    """Return the readings of one sensor in [from_us, to_us) as they were seen."""
+def readings(connection: sqlite3.Connection, *, sensor: int, from_us: int, to_us: int, most: int) -> ReadingRows:
+    """Return the first *most* readings of one sensor in [from_us, to_us) as they were seen."""
     rows = connection.execute(
-        f"SELECT {', '.join(COLUMNS)} FROM reading WHERE measured_at >= ? AND measured_at < ? AND sensor = ? ORDER BY measured_at",
-        (from_us, to_us, sensor),
+        f"SELECT {', '.join(COLUMNS)} FROM reading WHERE measured_at >= ? AND measured_at < ? AND sensor = ?"
+        " ORDER BY measured_at LIMIT ?",
+        (from_us, to_us, sensor, most),
     ).fetchall()
     columns = list(zip(*(tuple(row) for row in rows), strict=True)) or [()] * len(COLUMNS)
     return ReadingRows(

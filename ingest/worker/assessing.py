@@ -45,7 +45,7 @@ if TYPE_CHECKING:
 
 log = structlog.get_logger(__name__)
 
-MOST_ROWS = 20_000
+MOST_ROWS = 10_000
 SENSORS_A_STEP = 5
 """So much is done between two blocks: some tens of milliseconds."""
 LOOK_BACK_US = 14 * 86_400_000_000

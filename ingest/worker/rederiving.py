@@ -43,7 +43,8 @@ if TYPE_CHECKING:
 log = structlog.get_logger(__name__)
 
 MOST_ROWS = 20_000
-"""So many rows of all sensors a slice looks at: some twenty milliseconds between two blocks."""
+MOST_OF_SENSOR = 3_000
+"""So many rows of all sensors a slice looks at, and so many of its own: some tens of milliseconds between two blocks."""
 SAME = 1e-9
 """Values that differ by less, relatively, are the same: nothing is superseded by its own repetition."""
 
@@ -80,10 +81,10 @@ class Rederiver:
         if job is None:
             self._rosters.clear()
             return False
-        end_us = corrected.slice_end(self._store.connection, job, most=MOST_ROWS)
-        is_done = end_us >= job.to_us
         try:
-            rows = self._superseding(plant, job, end_us)
+            seen, end_us = self._slice(job)
+            rows = self._superseding(plant, job, seen)
+            is_done = end_us >= job.to_us
             with self._store.transaction() as connection:
                 corrected.insert(connection, rows, reason=job.reason, now_us=now_us)
                 corrected.advance(
@@ -118,14 +119,22 @@ class Rederiver:
             corrected.advance(connection, job, next_us=job.next_us, rows=0, finished_at=now_us)
             append(connection, event)
 
-    def _superseding(self, plant: Plant, job: Job, end_us: int) -> ReadingRows:
-        """Return the corrected rows of a slice: those that differ from what was seen, or from what was corrected before."""
+    def _slice(self, job: Job) -> tuple[ReadingRows, int]:
+        """Return the readings of the next slice, and how far it reaches."""
         connection = self._store.connection
-        seen = corrected.readings(connection, sensor=job.sensor, from_us=job.next_us, to_us=end_us)
+        end_us = corrected.slice_end(connection, job, most=MOST_ROWS)
+        seen = corrected.readings(connection, sensor=job.sensor, from_us=job.next_us, to_us=end_us, most=MOST_OF_SENSOR)
+        return seen, end_us if len(seen) < MOST_OF_SENSOR else int(seen.measured_at[-1]) + 1
+
+    def _superseding(self, plant: Plant, job: Job, seen: ReadingRows) -> ReadingRows:
+        """Return the corrected rows of a slice: those that differ from what was seen, or from what was corrected before."""
         if not len(seen):
             return seen
         best = self._best(plant, job.slug, seen)
-        before = corrected.corrected_times(connection, sensor=job.sensor, from_us=job.next_us, to_us=end_us)
+        first_us, last_us = int(seen.measured_at[0]), int(seen.measured_at[-1])
+        before = corrected.corrected_times(
+            self._store.connection, sensor=job.sensor, from_us=first_us, to_us=last_us + 1
+        )
         is_superseded = np.isin(seen.measured_at, np.array(sorted(before), dtype=np.int64))
         differs = _differs(best.conductivity_mS_cm, seen.conductivity_mS_cm)
         differs |= _differs(best.temperature_degC, seen.temperature_degC)

@@ -236,6 +236,33 @@ def test_cut_off_between_slices_it_goes_on_and_makes_no_row_twice(bench, monkeyp
         assert first_broken_id(connection) is None
 
 
+@pytest.mark.parametrize("most_of_sensor", [1, 3, 10, 11])
+def test_however_it_is_sliced_the_rows_are_the_same(bench, monkeypatch, most_of_sensor):
+    monkeypatch.setattr("ingest.worker.rederiving.MOST_OF_SENSOR", most_of_sensor)
+    ten_hours(bench)
+    find_fouling_and_drift(bench)
+    assert rederive(bench) >= 10 // most_of_sensor
+    better = corrected(bench)
+    assert [row["measured_at"] for row in better] == [START_US + (2 * k + 1) * HOUR_US // 2 for k in range(10)]
+    assert better[-1]["conductivity_mS_cm"] == pytest.approx(45.0 * (1.0 + 0.01 * SUM_PERCENT * 0.95), rel=1e-9)
+
+
+def test_a_record_that_cannot_be_worked_out_does_not_end_the_worker(bench, monkeypatch):
+    ten_hours(bench)
+    find_fouling_and_drift(bench)
+
+    def broken(*_: object) -> None:
+        raise ZeroDivisionError
+
+    monkeypatch.setattr("ingest.worker.rederiving._derived", broken)
+    rederive(bench)
+    assert corrected(bench) == []
+    assert bench.queries.rederivations()[0].finished_at is not None
+    [(_, event)] = bench.queries.events(kind_prefix="sensor.rederiv")
+    assert event.kind == "sensor.rederivation_failed"
+    assert bench.worker.rederive() is False
+
+
 def test_live_readings_go_on_between_the_slices(bench, monkeypatch):
     monkeypatch.setattr("ingest.worker.rederiving.MOST_ROWS", 6)
     ten_hours(bench)

@@ -9,7 +9,6 @@ import structlog
 from ingest.clock import MICROSECONDS_PER_SECOND
 from ingest.forward.central import CentralAccess
 from ingest.forward.forwarder import Forwarder
-from ingest.forward.influx import InfluxCentral
 from ingest.forward.lines import alarm_lines, reading_lines, stress_lines, tag
 from ingest.secrets import read_secret
 from ingest.store import forwarding
@@ -105,6 +104,9 @@ def outgoing(site: Site, plant: Plant, *, site_file: Path, store: Store) -> Outg
     """Return the site's forwarding, started; None where the site has no central store."""
     if site.central is None:
         return None
+    # Opened only where it is needed: the client library takes its time to load, and most sites stand alone.
+    from ingest.forward.influx import InfluxCentral
+
     made = Outgoing(
         plant,
         InfluxCentral(_access(site.central, site_file)),

@@ -123,3 +123,20 @@ def test_a_filled_store_of_every_released_schema_opens_and_answers(tmp_path, num
     assert history.resolution_us == make.QUARTER_US
     assert history.salinity.size > 0
     assert queries.outcome(make.COMMAND_ID).outcome == "applied"
+
+
+def laid_out(path: Path) -> list[tuple[str, ...]]:
+    with closing(sqlite3.connect(path)) as connection:
+        return connection.execute("SELECT type, name, sql FROM sqlite_master ORDER BY 1, 2").fetchall()
+
+
+def test_the_steps_make_of_every_kept_store_what_they_make_anew(tmp_path):
+    """So an edited step is noticed: what is released stays, and a change is a new step."""
+    (tmp_path / "fresh").mkdir()
+    Store(tmp_path / "fresh").close()
+    for kept in sorted(SCHEMAS.glob("schema*.db")):
+        folder = tmp_path / kept.stem
+        folder.mkdir()
+        (folder / "store.db").write_bytes(kept.read_bytes())
+        Store(folder).close()
+        assert laid_out(folder / "store.db") == laid_out(tmp_path / "fresh" / "store.db")

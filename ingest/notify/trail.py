@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, NamedTuple
 import numpy as np
 
 from analysis.alarm.state import NEVER_US
-from analysis.animal.forecast import current_slope
+from analysis.animal.forecast import MIN_READINGS, current_slope
 from analysis.arrays import MICROSECONDS_PER_SECOND
 from analysis.flags import Quality
 
@@ -47,6 +47,8 @@ class Way(NamedTuple):
     likely_min: float = math.nan
     soonest_min: float = math.nan
     latest_min: float = math.nan
+    is_steady: bool = False
+    """There were readings enough to tell a trend, and there is none."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -107,7 +109,7 @@ class Trail:
         times, series = self._series(quantity, tank, slot)
         slope = current_slope(times, series, resolution=RESOLUTION[quantity])
         if slope is None:
-            return Way(value=value)
+            return Way(value=value, is_steady=int(np.isfinite(series).sum()) >= MIN_READINGS)
         way = Way(value=value, per_h=slope.per_min * 60)
         ahead = [limit for limit in limits if (limit - slope.now) * slope.per_min > 0]
         if not ahead:

@@ -109,6 +109,7 @@ class Writer:
             animals=animals,
             number=count,
             is_normal=(member.tank, member.kind) in entry.normal,
+            is_steady=way.is_steady,
         )
 
     def _facts(self, member: grouping.Member, place: int | None, way: Way) -> AlarmFacts:

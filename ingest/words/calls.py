@@ -27,6 +27,8 @@ class CalledAlarm:
     animals: str = ""
     number: int | None = None
     is_normal: bool = False
+    is_steady: bool = False
+    """Watched for long enough, and no trend."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -132,7 +134,7 @@ def _numbers(alarm: CalledAlarm, what: str, language: Language) -> list[str]:
         is_said = any(word in what for word in words["trend_words"])
         if not is_said and rate.strip("0. °C"):
             found.append(words["falling" if facts.rate_per_h < 0 else "rising"].format(rate=rate))
-    elif math.isfinite(facts.value):
+    elif alarm.is_steady:
         found.append(words["no_trend"])
     return [" ".join(found)] if found else []
 

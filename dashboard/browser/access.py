@@ -263,6 +263,7 @@ class Access:
         trend = self.trend(tank, kind)
         facts = replace(
             alarm.facts,
+            quantity=tank.salinity_kind if kind == "salinity" else kind,
             value=shown.salinity if kind == "salinity" else shown.temperature_degC,
             rate_per_h=trend.per_h,
             next_limit=trend.next_limit,

@@ -179,6 +179,11 @@ class TankSight:
     is_unwatched: bool
 
     @property
+    def salinity_kind(self) -> str:
+        """Return in which quantity its salinity is said: practical salinity, or salt in g/kg where the water is not of the sea."""
+        return "g_kg" if self.salinity_unit else "salinity"
+
+    @property
     def priority(self) -> str:
         """Return the most pressing priority of its present alarms; empty when there is none."""
         return self.alarms[0].priority if self.alarms else ""

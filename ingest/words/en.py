@@ -34,6 +34,7 @@ UNITS: Final = {
 
 QUANTITIES: Final = {
     "salinity": "salinity",
+    "g_kg": "salt",
     "temperature": "temperature",
     "osmolality": "osmolality",
     "conductivity": "conductivity",

@@ -83,8 +83,9 @@ def _told(occurrence: Occurrence, snapshot: Snapshot, visit: Visit) -> str:
     again = visit.text("times", n=occurrence.again) if occurrence.again else ""
     return (
         f'<tr><td class="quiet">{escape(moment)}</td><th scope="row">{where}</th><td><span class="flagged">'
-        f"{flag_of(occurrence.priority, visit, size=13)}{escape(words.title)}</span></td><td>{_lasted(occurrence, visit)}</td>"
-        f"<td>{_taken(occurrence, visit)}</td><td>{again}</td></tr>"
+        f"{flag_of(occurrence.priority, visit, size=13)}{escape(words.title)}</span></td>"
+        f'<td data-l="{visit.text("lasted")}">{_lasted(occurrence, visit)}</td>'
+        f'<td data-l="{visit.text("taken")}">{_taken(occurrence, visit)}</td><td>{again}</td></tr>'
     )
 
 

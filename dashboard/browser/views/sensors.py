@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from html import escape
+from typing import NamedTuple
 
 from dashboard.browser.sights import SensorSight, Snapshot
 from dashboard.browser.views.frame import framed, teach
@@ -14,10 +15,19 @@ from ingest.words.trust import flag_words, quality_word, refusal_words
 SHOWN_BYTES = 160
 
 
+class Placed(NamedTuple):
+    """A probe where it sits."""
+
+    place: str
+    tank: str
+    salinity_kind: str
+    sensor: SensorSight
+
+
 def page(snapshot: Snapshot, visit: Visit, *, refused: list[Refused], counters: dict[str, int]) -> str:
     """Return the page."""
-    sensors = [(tank.name, tank.id, sensor) for tank in snapshot.tanks for sensor in tank.sensors]
-    sensors += [(sensor.source_water or "", "", sensor) for sensor in snapshot.waters]
+    sensors = [Placed(tank.name, tank.id, tank.salinity_kind, s) for tank in snapshot.tanks for s in tank.sensors]
+    sensors += [Placed(sensor.source_water or "", "", "salinity", sensor) for sensor in snapshot.waters]
     if not sensors:
         body = teach(
             visit.text("no_sensors_title"),
@@ -40,7 +50,7 @@ def trust_words(sensor: SensorSight, snapshot: Snapshot, visit: Visit) -> tuple[
     return quality_word(sensor.quality, language=language), ", ".join(flag_words(sensor.flags, language=language))
 
 
-def _table(snapshot: Snapshot, visit: Visit, sensors: list[tuple[str, str, SensorSight]]) -> str:
+def _table(snapshot: Snapshot, visit: Visit, sensors: list[Placed]) -> str:
     heads = (
         ("probe", ""),
         ("where", ""),
@@ -51,7 +61,7 @@ def _table(snapshot: Snapshot, visit: Visit, sensors: list[tuple[str, str, Senso
         ("believe", ""),
     )
     head = "".join(f'<th class="{c}">{visit.text(key)}</th>' for key, c in heads)
-    rows = "".join(_row(place, tank, sensor, snapshot, visit) for place, tank, sensor in sensors)
+    rows = "".join(_row(placed, snapshot, visit) for placed in sensors)
     count = visit.language.counted("sensors", len(sensors))
     return (
         f'<section data-k="sensors"><h2>{visit.text("probes")} <small>{escape(count)}</small></h2><div class="scroll">'
@@ -59,14 +69,15 @@ def _table(snapshot: Snapshot, visit: Visit, sensors: list[tuple[str, str, Senso
     )
 
 
-def _row(place: str, tank: str, sensor: SensorSight, snapshot: Snapshot, visit: Visit) -> str:
+def _row(placed: Placed, snapshot: Snapshot, visit: Visit) -> str:
     language = visit.language
-    where = link("tank", escape(place), tank=tank, classes="word") if tank else escape(place)
+    sensor, place = placed.sensor, escape(placed.place)
+    where = link("tank", place, tank=placed.tank, classes="word") if placed.tank else place
     word, reason = trust_words(sensor, snapshot, visit)
     is_calm = sensor.is_fresh(snapshot.now_us) and sensor.quality <= 2
     style = "" if is_calm else ' style="color:var(--soon);font-weight:600"'
     cells = (
-        ("salinity", numbers.quantity(sensor.salinity, "salinity", language=language)),
+        ("salinity", numbers.quantity(sensor.salinity, placed.salinity_kind, language=language)),
         ("conductivity", numbers.quantity(sensor.conductivity_mS_cm, "conductivity", language=language)),
         ("temperature", numbers.quantity(sensor.temperature_degC, "temperature", language=language)),
     )

@@ -161,11 +161,11 @@ def _figures(tank: TankSight, visit: Visit) -> list[str]:
     if tank.animals is None:
         return []
     out = []
-    for limits, kind in ((tank.animals.limits, "salinity"), (tank.animals.temperature_limits, "temperature")):
+    for limits, kind in ((tank.animals.limits, tank.salinity_kind), (tank.animals.temperature_limits, "temperature")):
         for limit in limits:
             value = numbers.quantity(limit.value, kind, language=visit.language)
             text = visit.text("tolerated_from" if limit.is_lower else "tolerated_to", value=value, mark=limit.mark)
-            out.append(f"{visit.text(kind)} {text}")
+            out.append(f"{escape(visit.language.QUANTITIES[kind])} {text}")
     return out
 
 
@@ -193,7 +193,7 @@ def _believe(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
     rows = ""
     for sensor in tank.sensors:
         word, reason = trust_words(sensor, snapshot, visit)
-        value = numbers.quantity(sensor.salinity, "salinity", language=visit.language)
+        value = numbers.quantity(sensor.salinity, tank.salinity_kind, language=visit.language)
         heard = age(
             sensor.measured_at_us, now_us=snapshot.now_us, stale_after_s=sensor.stale_after_s, language=visit.language
         )

@@ -14,7 +14,7 @@ import numpy as np
 import structlog
 
 from analysis.flags import Quality
-from analysis.sensor.compensation_check import check_compensation
+from analysis.sensor.compensation_check import CompensationVerdict, check_compensation
 from analysis.sensor.health import (
     NOISE_WINDOW_US,
     SAMPLE_AGE_US,
@@ -136,6 +136,11 @@ class _Assessment:
                 believable, measured_at_us=other.measured_at, to_us=series.measured_at, within_us=QUARTER_US
             )
         evidence = self._compensation(connection, plant, sensor, series)
+        if evidence.verdict is CompensationVerdict.UNDECIDED and beside is not None:
+            # Salinity moves with temperature here: a second sensor in the same water settles it, if it can be believed.
+            known = calibrations.belief(connection, sensor=int(plant.numbers.sensor[neighbour]))
+            if known is not None and known[0] == Belief.BELIEVE:
+                evidence = self._compensation(connection, plant, sensor, series, beside=beside)
         services = plant.services.get(own.id, ())
         dues = [record.next_due_us for record in (one.record() for one in services) if record is not None]
         by_test = np.full((TESTS, VARIABLES, len(series.measured_at)), Quality.NOT_EVALUATED, dtype=np.uint8)
@@ -175,7 +180,13 @@ class _Assessment:
         )
 
     def _compensation(
-        self, connection: sqlite3.Connection, plant: Plant, sensor: int, series: _Series
+        self,
+        connection: sqlite3.Connection,
+        plant: Plant,
+        sensor: int,
+        series: _Series,
+        *,
+        beside: FloatArray | None = None,
     ) -> CompensationEvidence:
         """Hold the declared compensation against what the sensor must have sent, as the stored salinity says it."""
         own = plant.site.sensors[sensor]
@@ -194,6 +205,9 @@ class _Assessment:
             measured_at_us=series.measured_at[rows],
             is_declared_compensated=is_compensated,
             compensation=method,
+            neighbour_mS_cm=None
+            if beside is None
+            else kind.conductivity_mS_cm(salinity=beside[rows], temperature_degC=warmth),
         )
 
     def _samples(self, connection: sqlite3.Connection, own: Sensor) -> list[BenchSample]:

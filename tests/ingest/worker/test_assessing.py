@@ -101,6 +101,21 @@ def test_a_wrong_declaration_is_found_from_the_stored_values(bench):
     assert "compensates already" in bench.queries.sensor_health()["s0"].body["compensation"]["sentence"]
 
 
+@pytest.mark.slow
+def test_in_tidal_water_a_believed_neighbour_settles_what_the_sensor_declares(tmp_path):
+    def tidal(day: float) -> float:
+        return 26.0 + 4.0 * np.sin(2.0 * np.pi * day + 0.4)
+
+    text = site_text(port=1, sensors=2, sensors_a_tank=2, interval_s=600.0, animal=None)
+    with Bench(tmp_path, text, now_us=START_US) as bench:
+        live(bench, first=tidal, second=tidal, days=4)
+        assert assessed(bench)[0] is Belief.BELIEVE
+        alone = bench.queries.sensor_health()["s0"].body["compensation"]["verdict"]
+        assert alone == "undecided"
+        assert assessed(bench)[0] is Belief.BELIEVE
+        assert bench.queries.sensor_health()["s0"].body["compensation"]["verdict"] == "consistent"
+
+
 def test_a_sensor_that_never_spoke_is_not_to_be_used(bench):
     assert assessed(bench) == (Belief.DO_NOT_USE, ["silent"])
 

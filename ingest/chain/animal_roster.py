@@ -170,7 +170,7 @@ def animal_roster(
         found = [(stock, stage) for stock, stage in here if stage is not None]
         tank_stages.append(found[-1][1] if found else None)
         larval.append(any(is_larva(stage) for _, stage in found))
-        limits.append(_tolerable([stage for _, stage in found], kinds[tank.water]))
+        limits.append(_tolerable([stage for _, stage in found]))
         tanks += [index] * len(found)
         rows += [stock for stock, _ in found]
         row_stages += [stage for _, stage in found]
@@ -183,15 +183,26 @@ def animal_roster(
     return AnimalRoster(
         stages=tuple(tank_stages),
         is_larva=np.array(larval, dtype=np.bool_),
-        tolerable_salinity=np.array(limits, dtype=np.float64).reshape(-1, 2),
+        tolerable_salinity=_salinities(site, kinds, np.array(limits, dtype=np.float64).reshape(-1, 2)),
         tanks=row_tanks,
         first_row=np.where(count > 0, np.cumsum(count) - count, NO_ANIMALS),
         row_count=count,
         cohorts=tuple(stock.cohort for stock in rows),
         row_of={stock.cohort: row for row, stock in enumerate(rows)},
-        figures=StageArrays.from_stages(row_stages),
+        figures=_figures(row_stages),
         used_to_mOsm_kg=np.array(used_to, dtype=np.float64),
     )
+
+
+def _figures(stages: Sequence[Stage]) -> StageArrays:
+    """Return the figures of *stages*, worked out once for each different stage: a site has few, and many tanks."""
+    places: dict[int, int] = {}
+    different: list[Stage] = []
+    for stage in stages:
+        if id(stage) not in places:
+            places[id(stage)] = len(different)
+            different.append(stage)
+    return StageArrays.from_stages(different).take(np.array([places[id(stage)] for stage in stages], dtype=np.int64))
 
 
 def is_larva(stage: Stage | None) -> bool:
@@ -199,13 +210,24 @@ def is_larva(stage: Stage | None) -> bool:
     return stage is not None and not LARVAL_WORDS.isdisjoint(stage.id.partition("/")[2].split("-"))
 
 
-def _tolerable(stages: Sequence[Stage], kind: WaterKind) -> tuple[float, float]:
-    """Return the range that all *stages* tolerate, on either side the narrowest published limit."""
+def _tolerable(stages: Sequence[Stage]) -> tuple[float, float]:
+    """Return the range that all *stages* tolerate, on either side the narrowest published limit; NaN where there is none. [mOsm/kg]"""
     found = []
     for key, narrowest in (("tolerable_low", max), ("tolerable_high", min)):
         published = [resolved(stage).figures.get(key) for stage in stages]
         values = [
             figure.value for figure in published if figure is not None and figure.certainty is not Certainty.ASSUMED
         ]
-        found.append(float(kind.salinity_from_osmolality(narrowest(values))) if values else np.nan)
+        found.append(narrowest(values) if values else np.nan)
     return found[0], found[1]
+
+
+def _salinities(site: Site, kinds: Mapping[str, WaterKind], osmolality_mOsm_kg: FloatArray) -> FloatArray:
+    """Return the limits of each tank, shape (tanks, 2), in the salinity of its own kind of water."""
+    salinity = np.full(osmolality_mOsm_kg.shape, np.nan)
+    water = np.array([tank.water for tank in site.tanks], dtype=np.str_)
+    for name in np.unique(water).tolist():
+        place = (water == name)[:, None] & ~np.isnan(osmolality_mOsm_kg)
+        if place.any():
+            salinity[place] = kinds[name].salinity_from_osmolality(osmolality_mOsm_kg[place])
+    return salinity

@@ -229,8 +229,13 @@ def carried_animals(
     changed : mapping of str to CohortState
         Cohorts whose state is another than before, or that are new: of one element each.
     """
-    bodies = {cohort: animal_body(before, state, row) for row, cohort in enumerate(before.cohorts)}
-    after = restored_animals(roster, bodies)
+    after = fresh_animals(roster)
+    kept = [(row, before.row_of[cohort]) for row, cohort in enumerate(roster.cohorts) if cohort in before.row_of]
+    now, then = (np.array([pair[side] for pair in kept], dtype=np.int64) for side in (0, 1))
+    for new, old in ((after.cohorts, state.cohorts), (after.latest, state.latest)):
+        for member in fields(new):
+            getattr(new, member.name)[now] = getattr(old, member.name)[then]
+    after.recorded_us[now] = state.recorded_us[then]
     for cohort_id, own in changed.items():
         row = roster.row_of.get(cohort_id)
         if row is None:

@@ -30,6 +30,8 @@ if TYPE_CHECKING:
     from ingest.store.cohorts import CohortRow
     from ingest.store.samples import AnimalSample
 
+LEAST_STRESS = 1.0
+"""Below this no reason is given: the water suits them."""
 AHEAD_H = 24.0
 """For so long the water is taken to stay as it is where survival is looked ahead. [h]"""
 
@@ -147,7 +149,7 @@ def _sight(
         gap=gap,
         sentence=one_sentence(
             band=band,
-            driver=driver,
+            driver=Driver.NONE if _number(latest.get("stress")) < LEAST_STRESS else driver,
             water_mOsm_kg=water,
             acclimated_mOsm_kg=acclimated,
             optimal_low_mOsm_kg=math.nan if governed is None else resolved(governed).value("optimal_low"),

@@ -148,6 +148,7 @@ def test_what_the_board_sees_of_each_cohort(bench):
     assert "much saltier than what they are used to" in new.sentence
     assert new.gap == pytest.approx(new.internal - new.water)
     assert old.band is Band.SETTLED
+    assert old.sentence.startswith("Settled: the water suits them")
     assert old.blood is not None
     assert new.blood is None
     assert old.postlarvae_test is None

@@ -18,8 +18,9 @@ if TYPE_CHECKING:
     from analysis.acclimation.task import AcclimationTask, Water
     from analysis.arrays import BoolArray, FloatArray
 
-BLEND_STEP: Final = 0.2
-COARSE_BLEND_STEP: Final = 0.25
+FINE_PARTS: Final = 5
+"""Two sources for salinity and temperature together are tried in fifths, and in the blend that leads straight there."""
+COARSE_PARTS: Final = 2
 SUM_WEIGHT: Final = 1e3
 
 
@@ -70,7 +71,7 @@ class Problem:
     @property
     def window_h(self) -> float:
         """The longest window of a salinity limit, which is the time that a full share of it lasts. [h]"""
-        return max((limit.window_min for limit in self.rolling if limit.quantity == "salinity"), default=0.0) / 60.0
+        return max((limit.window_min for limit in self.rolling if limit.quantity == "salinity"), default=60.0) / 60.0
 
     def remaining_h(self, tank: ScenarioTank) -> FloatArray:
         """Return the hours that the limits themselves still need from the nominal water to the target.
@@ -173,10 +174,7 @@ def _blends(task: AcclimationTask, *, fine: bool) -> FloatArray:
     count = len(task.sources)
     if count == 0:
         return np.zeros((1, 0))
-    step = BLEND_STEP if fine else COARSE_BLEND_STEP
-    parts = round(1.0 / step)
-    if count > 3:
-        parts = 2
+    parts = FINE_PARTS if fine and count <= 2 else COARSE_PARTS
     rows = [row for row in product(range(parts + 1), repeat=count) if sum(row) == parts]
     blends = [np.array(row) / parts for row in rows]
     flows = np.array([source.max_L_per_h for source in task.sources])

@@ -27,7 +27,7 @@ SATURATED: Final = 99.0
 """A score at its end does not show that slower was better. [0-100]"""
 LADDER: Final = (0.7, 0.5, 0.35, 0.25, 0.15, 0.1, 0.05)
 """Shares of the rates to try, one after the other, until the stress of the journey is below its cap."""
-HALVINGS: Final = 4
+HALVINGS: Final = 3
 EXACT: Final = Allowances(volume_share=0.0, source_salinity=0.0, late_min=0.0)
 
 
@@ -108,9 +108,11 @@ def _runs(task: AcclimationTask, limits: Limits, work: Work) -> list[tuple[Pace,
     if task.method is Method.FLOW:
         pace = Pace(clock, 0.0)
         return [(pace, run(task, limits, pace, work=work))]
-    runs = [(pace, run(task, limits, pace, work=work)) for pace in (Pace(clock, unit, 0.1) for unit in roundings(task))]
+    blends = bool(np.isfinite(task.target.temperature_degC)) and len(task.sources) > 1
+    units = roundings(task)[::2] if blends else roundings(task)  # each run with blends costs several plain ones
+    runs = [(pace, run(task, limits, pace, work=work)) for pace in (Pace(clock, unit, 0.1) for unit in units)]
     unit = _preferred(runs)[0].unit
-    rooms = (0.25,) if limits.governs == "day" else (0.0, 0.25)
+    rooms = (0.25,) if limits.governs == "day" or blends else (0.0, 0.25)
     spread = max(
         clock, min(limit.window_min for limit in limits.rolling if limit.window_min >= 60.0) + task.allowances.late_min
     )

@@ -30,14 +30,14 @@ SHORTEST_STEP_MIN: Final = 5.0
 HORIZON_MIN: Final = 60.0 * 24.0 * 90.0
 MOST_STEPS: Final = 400
 SMALL_GAIN_H: Final = 1e-9
-DRIFT_WEIGHT_H_K: Final = 1e-4
-"""Of blends that gain the same, the one that moves the temperature least. [h/K]"""
-SOURCE_WEIGHT_H: Final = 0.05
-"""Each further source in a step must gain this much: a person measures it out. [h]"""
+DRIFT_WEIGHT_K: Final = 1e-4
+"""Of blends that gain the same, the one that moves the temperature least; share of the longest window. [1/K]"""
+SOURCE_WEIGHT: Final = 0.05
+"""Each further source in a step must gain this share of the longest window: a person measures it out. [1]"""
 ARRIVED_WEIGHT_H: Final = 1e-3
 """Of candidates that arrive, the one nearest to the target. [h]"""
-WATER_WEIGHT_H: Final = 0.1
-"""A blend that needs a whole tank volume more must gain this much by it. [h]"""
+WATER_WEIGHT: Final = 0.1
+"""A blend that needs a whole tank volume more must gain this share of the longest window by it. [1]"""
 
 
 @dataclass(frozen=True, slots=True)
@@ -336,7 +336,7 @@ def _chosen(
     drift = np.abs(after.temperature_degC[:, NOMINAL] - problem.task.start.temperature_degC)
     water = trial.add_L.sum(axis=1) / problem.task.vessel.volume_L
     further = np.maximum((trial.add_L > 0.0).sum(axis=1) - 1, 0)
-    cost = DRIFT_WEIGHT_H_K * drift + WATER_WEIGHT_H * water + SOURCE_WEIGHT_H * further
+    cost = problem.window_h * (DRIFT_WEIGHT_K * drift + WATER_WEIGHT * water + SOURCE_WEIGHT * further)
     score = np.where(allowed, remaining + cost, np.inf)
     before = float(problem.remaining_h(place.tank))
     for number in np.argsort(score, kind="stable"):

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 import threading
 from dataclasses import replace
 from datetime import datetime, timedelta
@@ -10,17 +9,13 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from analysis.alarm.set_point import HALF_WIDTH
-from dashboard.browser.installed import Installed, blood_at_rest, installed
+from dashboard.browser.installed import Installed, installed
+from dashboard.browser.sighting import alarm_sight, sensor_sight, tank_sights
 from dashboard.browser.sights import (
     MOST_BELIEVABLE_QUALITY,
-    NO_DAY,
     AlarmSight,
-    Band,
     DayLine,
-    SensorSight,
     Snapshot,
-    StressSight,
     TankSight,
 )
 from dashboard.browser.trend import LOOK_BACK_US, STANDING, Trend, limits_of, trend_of
@@ -29,7 +24,7 @@ from ingest.site.loading import load, load_text
 from ingest.store.errors import MissingStoreError, StoreBusyError
 from ingest.store.inbox import DEFAULT_LIFE_US, Command, Inbox
 from ingest.store.queries import DAY_US, HOUR_US, Queries
-from ingest.words.alarms import QUANTITY_OF_CODE, AlarmFacts
+from ingest.words.alarms import QUANTITY_OF_CODE
 from ingest.words.times import local
 
 if TYPE_CHECKING:
@@ -37,10 +32,8 @@ if TYPE_CHECKING:
 
     from ingest.clock import Clock
     from ingest.site.models import Site
-    from ingest.site.sensors import Sensor
-    from ingest.store.alarms import AlarmRow
     from ingest.store.ledger import Event
-    from ingest.store.queries import Cohort, History, Latest, LatestStress, Outcome, Refused, StressHistory
+    from ingest.store.queries import Cohort, History, Outcome, Refused, StressHistory
 
 SNAPSHOT_S = 0.9
 """One look at the store serves all screens for this long."""
@@ -48,7 +41,6 @@ SLOW_S = 20.0
 """Day lines and the list of animals change slowly: so long one look serves for them."""
 MOST_HISTORIES = 24
 """So many stretches of so many probes are kept for the next refresh; each is at most a megabyte."""
-STALE_INTERVALS = 3.0
 TREND_S = 5.0
 
 
@@ -178,7 +170,7 @@ class Access:
 
     def _without_store(self) -> Snapshot:
         what = self._keep("without store", SLOW_S, lambda: self._installed(self._file_site, ()))
-        tanks = _tanks(what, latest={}, alarms=(), days={}, stress={}, now_us=self.clock.now_us())
+        tanks = tank_sights(what, latest={}, alarms=(), days={}, stress={}, now_us=self.clock.now_us())
         return replace(self._blank(what.site), tanks=tanks)
 
     def _blank(self, site: Site) -> Snapshot:
@@ -202,12 +194,12 @@ class Access:
         site = self._revision[1]
         now_us = self.clock.now_us()
         what, days = self._keep("slow", SLOW_S, lambda: self._slow(site, now_us))
-        alarms = tuple(_alarm(row, what) for row in queries.alarms() if row.state != "normal")
+        alarms = tuple(alarm_sight(row, what) for row in queries.alarms() if row.state != "normal")
         present = tuple(sorted((a for a in alarms if a.is_present), key=lambda a: a.rank))
         stress = queries.latest_stress(since_us=now_us - 2 * HOUR_US)
         latest = queries.latest()
         alive = queries.meta().get("alive_at")
-        tanks = _tanks(what, latest=latest, alarms=present, days=days, stress=stress, now_us=now_us)
+        tanks = tank_sights(what, latest=latest, alarms=present, days=days, stress=stress, now_us=now_us)
         tanks = tuple(self._with_trend(tank) if tank.alarms or tank.is_outside else tank for tank in tanks)
         present = tuple(sorted(self._with_trends(present, tanks), key=lambda a: a.rank))
         return replace(
@@ -217,7 +209,7 @@ class Access:
             is_worker_running=queries.is_worker_running(),
             alive_at_us=int(alive) if isinstance(alive, int) else None,
             tanks=tanks,
-            waters=tuple(_sensor(s, latest.get(s.id), what) for s in site.sensors if s.tank is None),
+            waters=tuple(sensor_sight(s, latest.get(s.id), what) for s in site.sensors if s.tank is None),
             alarms=present,
             hidden_alarms=tuple(a for a in alarms if a.is_hidden),
             today=self._raised_today(site, now_us),
@@ -293,147 +285,3 @@ def midnight_us(now_us: int, site: Site) -> int:
 def next_midnight(start: datetime) -> datetime:
     """Return the end of the day that began at *start*, by the wall clock: a day is not always 24 h long."""
     return (start.replace(tzinfo=None) + timedelta(days=1)).replace(tzinfo=start.tzinfo)
-
-
-def _number(value: float | None) -> float:
-    return math.nan if value is None else float(value)
-
-
-def _sensor(sensor: Sensor, latest: Latest | None, what: Installed) -> SensorSight:
-    sight = SensorSight(
-        id=sensor.id,
-        name=sensor.name or sensor.id,
-        tank=sensor.tank,
-        source_water=sensor.source_water,
-        interval_s=sensor.interval_s,
-        stale_after_s=what.stale_after_s.get(sensor.id, max(60.0, STALE_INTERVALS * sensor.interval_s)),
-    )
-    if latest is None:
-        return sight
-    salinity = latest.practical_salinity
-    return replace(
-        sight,
-        measured_at_us=latest.measured_at,
-        received_at_us=latest.received_at,
-        conductivity_mS_cm=_number(latest.conductivity_mS_cm),
-        temperature_degC=_number(latest.temperature_degC),
-        salinity=_number(salinity if salinity is not None else latest.absolute_salinity_g_kg),
-        osmolality_mOsm_kg=_number(latest.osmolality_mOsm_kg),
-        density_kg_m3=_number(latest.density_kg_m3),
-        flags=latest.flags,
-        quality=latest.quality,
-    )
-
-
-def _alarm(row: AlarmRow, what: Installed) -> AlarmSight:
-    body = row.body
-    tank = row.subject.partition("/")[2]
-    kind = QUANTITY_OF_CODE.get(row.condition, "")
-    band = (what.temperature if kind == "temperature" else what.salinity).get(tank, Band())
-    facts = AlarmFacts(
-        code=row.condition,
-        quantity=kind,
-        value=_number(row.value),
-        limit=_number(row.limit_value),
-        set_point=band.target if kind else math.nan,
-        band=band.half_width if kind else math.nan,
-        since_us=row.raised_at,
-        sensor=str(body.get("sensor", "")),
-    )
-    return AlarmSight(
-        subject=row.subject,
-        condition=row.condition,
-        state=row.state,
-        priority=row.priority,
-        occurrence=row.occurrence,
-        raised_at_us=row.raised_at,
-        updated_at_us=row.updated_at,
-        acknowledged_by=str(body.get("acknowledged_by", "")),
-        acknowledged_at_us=int(body.get("acknowledged_at_us", 0)) or None,
-        facts=facts,
-    )
-
-
-def _tanks(
-    what: Installed,
-    *,
-    latest: dict[str, Latest],
-    alarms: tuple[AlarmSight, ...],
-    days: dict[str, DayLine],
-    stress: dict[str, LatestStress],
-    now_us: int,
-) -> tuple[TankSight, ...]:
-    site = what.site
-    hall_names = {hall.id: hall.name for hall in site.halls}
-    by_subject: dict[str, list[AlarmSight]] = {}
-    for alarm in alarms:
-        by_subject.setdefault(alarm.subject, []).append(alarm)
-    sights = []
-    for tank in site.tanks:
-        sensors = tuple(_sensor(s, latest.get(s.id), what) for s in site.sensors_of_tank(tank.id))
-        band = what.salinity[tank.id]
-        shown = shown_sensor(sensors, band, now_us)
-        felt = stress.get(tank.id)
-        animals = what.animals.get(tank.id)
-        if animals is not None:
-            animals = replace(animals, blood_mOsm_kg=_blood(animals.id, shown, felt))
-        sights.append(
-            TankSight(
-                id=tank.id,
-                name=tank.name,
-                hall=tank.hall,
-                hall_name=hall_names.get(tank.hall, tank.hall),
-                volume_L=tank.volume_L,
-                water=tank.water,
-                salinity_unit="g/kg" if tank.water != "seawater" else "",
-                salinity=band,
-                temperature=what.temperature[tank.id],
-                animals=animals,
-                sensors=sensors,
-                shown=shown,
-                stress=_stress(felt),
-                alarms=tuple(by_subject.get(f"tank/{tank.id}", ())),
-                day=days.get(shown.id, NO_DAY) if shown is not None else NO_DAY,
-                is_unwatched=shown is None or not (shown.is_fresh(now_us) and shown.is_believable),
-            )
-        )
-    return tuple(sights)
-
-
-def shown_sensor(sensors: tuple[SensorSight, ...], band: Band, now_us: int) -> SensorSight | None:
-    """Return the sensor whose value stands for the tank: the believable one nearest to a limit, never an average.
-
-    Without a believable fresh one: the one heard last, so that its age can be seen.
-    """
-    good = [s for s in sensors if s.is_fresh(now_us) and s.is_believable]
-    if good:
-        middle = band.target if math.isfinite(band.target) else (band.low + band.high) / 2
-        half = band.half_width if math.isfinite(band.half_width) else HALF_WIDTH
-        return max(good, key=lambda s: abs(s.salinity - middle) / half if math.isfinite(middle) else 0.0)
-    heard = [s for s in sensors if s.measured_at_us is not None]
-    return max(heard, key=lambda s: s.measured_at_us or 0, default=sensors[0] if sensors else None)
-
-
-def _blood(animal: str, shown: SensorSight | None, felt: LatestStress | None) -> float | None:
-    if felt is not None and felt.internal_mOsm_kg is not None:
-        return felt.internal_mOsm_kg
-    if shown is None or not animal:
-        return None
-    return blood_at_rest(animal, shown.osmolality_mOsm_kg)
-
-
-def _stress(felt: LatestStress | None) -> StressSight | None:
-    if felt is None or felt.stress is None:
-        return None
-    return StressSight(
-        measured_at_us=felt.measured_at,
-        stress=felt.stress,
-        strains={
-            "range": _number(felt.range_strain),
-            "change": _number(felt.change_strain),
-            "exposure": _number(felt.exposure_strain),
-            "thermal": _number(felt.thermal_strain),
-        },
-        driver=felt.driver or "",
-        gap_mOsm_kg=_number(felt.gap_mOsm_kg),
-    )

@@ -191,7 +191,7 @@ class TankSight:
     @property
     def needs_somebody(self) -> bool:
         """Return whether it stands first on the board."""
-        return self.priority in ("urgent", "soon") or self.is_unwatched
+        return self.priority in ("urgent", "soon") or self.is_unwatched or self.is_outside
 
     @property
     def is_doubted(self) -> bool:

@@ -46,7 +46,7 @@ def row(alarm: AlarmSight, snapshot: Snapshot, visit: Visit) -> str:
 def _calm(snapshot: Snapshot, visit: Visit) -> str:
     if not snapshot.is_watching:
         return ""
-    fine = sum(not (tank.needs_somebody or tank.is_outside) for tank in snapshot.tanks)
+    fine = sum(not tank.needs_somebody for tank in snapshot.tanks)
     unwatched = sum(tank.is_unwatched for tank in snapshot.tanks)
     lines = [visit.language.counted("tanks_fine", fine)]
     if unwatched:

@@ -51,7 +51,7 @@ def _counts(snapshot: Snapshot, visit: Visit) -> str:
 def worst_first(tank: TankSight) -> tuple[int, int]:
     """Return the order of the tanks that need somebody: the most pressing, then who has waited longest."""
     if not tank.alarms:
-        return 0, 0
+        return (0, 0) if tank.is_unwatched else (len(PRIORITY_RANK), 0)
     return PRIORITY_RANK[tank.priority], tank.alarms[0].raised_at_us or 0
 
 

@@ -9,7 +9,8 @@ from pathlib import Path
 import pytest
 
 from dashboard.browser import orders
-from dashboard.browser.access import Access, midnight_us, shown_sensor
+from dashboard.browser.access import Access, midnight_us
+from dashboard.browser.sighting import shown_sensor
 from dashboard.browser.sights import Band, SensorSight
 from dashboard.browser.visit import Order
 from ingest.clock import FakeClock

@@ -103,8 +103,8 @@ def test_a_new_value_appears_by_itself_with_nothing_lost(page: Page, live: Live)
     page.focus('article[data-k="n2"] a')
     page.wait_for_function("document.querySelector('[data-testid=stMain]').scrollTop > 100")
     scroll = page.evaluate("document.querySelector('[data-testid=stMain]').scrollTop")
-    live.scene.read_on("n2", salinity=17.3, temperature=28.0, at_us=SystemClock().now_us())
-    page.wait_for_selector('article[data-k="n2"] .big:text("17.3")')
+    live.scene.read_on("n2", salinity=18.7, temperature=29.0, at_us=SystemClock().now_us())
+    page.wait_for_selector('article[data-k="n2"] .big:text("18.7")')
     assert page.evaluate("window.sameDocument") is True
     assert page.evaluate("document.querySelector('[data-testid=stMain]').scrollTop") == scroll
     assert page.evaluate(FOCUSED) == "N2"

@@ -15,14 +15,13 @@ import structlog
 
 from analysis.alarm.call_out import DUTY, Phase, Reason
 from analysis.alarm.duty import local_time, on_duty, present
-from analysis.alarm.grouping import cause_of
 from analysis.alarm.kinds import ConditionKind
-from analysis.alarm.rules import Priority
-from analysis.alarm.transition import Happening
+from analysis.alarm.state import WAITING_STATES
 from ingest.clock import MICROSECONDS_PER_SECOND
 from ingest.notify import codes
-from ingest.notify.call_outs import CallOuts, News, entry_from_dict, entry_to_dict
-from ingest.notify.duty import plan_of, source_water_of
+from ingest.notify.call_outs import CallOuts, entry_from_dict, entry_to_dict
+from ingest.notify.duty import plan_of
+from ingest.notify.news import compare, news_of
 from ingest.notify.sending import Parcel, next_attempt_us
 from ingest.site.calls import minutes_of
 from ingest.store import calls as rows
@@ -78,6 +77,7 @@ class CallDesk:
     call_outs: CallOuts | None = None
     nobody_since_us: int | None = None
     people: dict[str, Person] = field(default_factory=dict)
+    _has_to_compare: bool = True
 
     def __post_init__(self) -> None:
         self.cursor = restoring.meta_number(self.store.connection, CURSOR)
@@ -88,6 +88,7 @@ class CallDesk:
         self.site = site
         self.plan = None if self.is_replay else plan_of(site)
         self.people = {person.id: person for person in site.people}
+        self._has_to_compare = True
         if self.plan is None:
             self.call_outs = None
             return
@@ -104,9 +105,13 @@ class CallDesk:
             return len(events) == MOST_EVENTS
         work = self.call_outs.copy(self.plan)
         for event_id, event in events:
-            news = self._news(event_id, event)
+            news = news_of(self.site, event_id, event)
             if news is not None:
                 work.hear(news, now_us=now_us)
+        if self._has_to_compare and len(events) < MOST_EVENTS:
+            waiting = rows.waiting_alarms(self.store.connection, WAITING_STATES)
+            compare(self.site, work, waiting, now_us=now_us)
+            self._has_to_compare = False
         work.look(now_us=now_us)
         if until > self.cursor or work.changed or work.calls:
             self._commit_calls(work, until, now_us)
@@ -209,26 +214,6 @@ class CallDesk:
         """Write named values that every screen can show."""
         with self.store.transaction() as connection:
             self._write_block(connection, [], meta)
-
-    def _news(self, event_id: int, event: Event) -> News | None:
-        body = event.body
-        if body.get("refusal") or "condition" not in body:
-            return None
-        tank, kind = event.subject.removeprefix("tank/"), ConditionKind(body["condition"])
-        source = source_water_of(self.site, tank) if tank in self.site.tank_index else ""
-        ids = {person.name: person.id for person in self.site.people}
-        return News(
-            event_id=event_id,
-            tank=tank,
-            kind=kind,
-            happening=Happening(body["happening"]),
-            occurrence=body["after"].get("occurrence", 0),
-            at_us=body["at_us"],
-            who=ids.get(body["who"], body["who"]),
-            is_announced=body["is_announced"],
-            priority=Priority(body["priority"]),
-            cause=cause_of(kind, tank=tank, source_water=source),
-        )
 
     def _call_of(self, code: codes.Code) -> rows.CallRow:
         call = rows.read_call(self.store.connection, call_out=code.call_out, number=code.call)

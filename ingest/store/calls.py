@@ -57,6 +57,17 @@ class Delivery(NamedTuple):
     attempts: int
 
 
+class WaitingAlarm(NamedTuple):
+    """An alarm that asks for a person, and the event that brought it where it stands."""
+
+    event_id: int
+    subject: str
+    condition: str
+    occurrence: int
+    raised_at: int
+    priority: str
+
+
 class AttemptRow(NamedTuple):
     """One attempt at a delivery, and how it ended."""
 
@@ -79,6 +90,16 @@ def alarm_events(connection: sqlite3.Connection, *, after_id: int, most: int) ->
     ).fetchall()
     found = [(int(row["id"]), ledger.from_row(row)) for row in rows]
     return found, found[-1][0] if len(found) == most else newest
+
+
+def waiting_alarms(connection: sqlite3.Connection, states: Iterable[str]) -> list[WaitingAlarm]:
+    """Return the alarms that hold and are in one of *states*."""
+    wanted = set(states)
+    rows = connection.execute(
+        "SELECT event_id, subject, condition, state, occurrence, raised_at, priority FROM alarm"
+        " WHERE is_active AND event_id IS NOT NULL ORDER BY event_id"
+    ).fetchall()
+    return [WaitingAlarm(row[0], row[1], row[2], row[4], row[5] or 0, row[6]) for row in rows if row["state"] in wanted]
 
 
 def close_outbox(connection: sqlite3.Connection, *, until_event: int, outcome: str, at_us: int) -> None:

@@ -44,6 +44,8 @@ CALLING_EVERY_S = 0.2
 PUBLISH_EVERY_S = 1.0
 LOOK_EVERY_S = 5.0
 ADDRESSES_EVERY_S = 300.0
+UNHEARD_AFTER_S = 60.0
+"""A broker that is away for less is no problem worth a word."""
 MOST_ANSWERS = 50
 
 
@@ -94,6 +96,7 @@ class Calling:
         self._unheard: list[Received] = []
         self._told: dict[str, str | int] = {}
         self._on_their_way = 0
+        self._heard_at_s = clock.monotonic_s()
         self.problem = ""
 
     def step(self, plant: Plant, state: ChainState, intake: Intake) -> None:
@@ -268,7 +271,10 @@ class Calling:
             found.append(problem_words("unsent", since=since))
         if desk.nobody_since_us is not None:
             found.append(problem_words("nobody"))
-        if plant.site.acknowledgements is not None and not (self._answers and self._answers.is_connected):
+        is_heard = self._answers is not None and self._answers.is_connected
+        if is_heard or plant.site.acknowledgements is None:
+            self._heard_at_s = self._clock.monotonic_s()
+        if self._clock.monotonic_s() - self._heard_at_s > UNHEARD_AFTER_S:
             found.append(problem_words("unheard"))
         if self._addresses is not None and self._addresses.faults:
             found.append(problem_words("addresses", reason=", ".join(self._addresses.faults)))

@@ -165,3 +165,41 @@ def test_a_call_out_goes_on_where_it_was(tmp_path):
         bench.step(901)
         assert bench.phases() == ["calling"]
         assert len({row["number"] for row in bench.deliveries()}) == 2
+
+
+def changed_site(bench: CallBench, old: str, new: str) -> None:
+    text = bench.site_file.read_text()
+    assert old in text
+    bench.site_file.write_text(text.replace(old, new))
+    assert bench.worker.reload(), bench.worker.last_problem
+
+
+def test_people_declared_while_an_alarm_waits_are_called(tmp_path):
+    hands = Hands()
+    with CallBench(tmp_path, people="", post=hands) as bench:
+        bench.fall("s0")
+        bench.step()
+        assert (bench.open_outbox(), bench.deliveries()) == (0, [])
+        changed_site(bench, "tanks:\n", ONE_PERSON + "tanks:\n")
+        bench.step_until(lambda: hands.channels() == {"mail", "push"}, "the call")
+        bench.restart()
+        bench.step()
+        bench.step()
+        assert len(bench.deliveries()) == 2, "one call, also after the next start"
+        store_agrees(bench)
+
+
+def test_a_tank_that_leaves_the_site_file_calls_nobody_any_more(tmp_path):
+    hands = Hands()
+    with CallBench(tmp_path, people=ONE_PERSON, sensors=2, post=hands) as bench:
+        bench.fall("s0")
+        bench.step()
+        assert bench.phases() == ["calling"]
+        text = bench.site_file.read_text()
+        first, second = text.index("  - id: t0"), text.index("  - id: t1")
+        without = text[:first] + text[second:]
+        first, second = without.index("  - id: s0"), without.index("  - id: s1")
+        bench.site_file.write_text(without[:first] + without[second:])
+        assert bench.worker.reload(), bench.worker.last_problem
+        bench.step()
+        assert bench.phases() == ["over"]

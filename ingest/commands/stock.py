@@ -191,10 +191,10 @@ def moment(at_us: int | None, context: Context, *, not_before_us: int = 0) -> in
 
 
 def _received(cohort_id: str, command: Command, context: Context) -> Ruling:
-    entry = msgspec.convert(command.body, ReceiveEntry)
     book = context.stock_book
-    at_us = moment(entry.at_us, context, not_before_us=0)
     _check_new_id(cohort_id, book)
+    entry = msgspec.convert(command.body, ReceiveEntry)
+    at_us = moment(entry.at_us, context)
     _check_tank(entry.tank, context)
     stage = book.stage(entry.animal)
     if stage is None:

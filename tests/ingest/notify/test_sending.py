@@ -6,8 +6,8 @@ import threading
 
 import pytest
 
-from ingest.clock import SystemClock
-from ingest.notify.sending import BACK_OFF_S, Parcel, Posted, Sender, next_attempt_us
+from ingest.clock import FakeClock, SystemClock
+from ingest.notify.sending import BACK_OFF_S, BURST, Parcel, Posted, Sender, next_attempt_us
 from tests.harness.process import wait_until
 
 
@@ -73,6 +73,17 @@ def test_a_thread_that_dies_is_a_failed_attempt_and_a_new_one_takes_over():
     sender.hand_over(parcel(2, "deadly"))
     wait_until(lambda: bool(reports.extend(sender.reports()) or len(reports) == 2), what="another")
     sender.stop()
+
+
+def test_a_burst_leaves_at_once_and_more_is_spaced():
+    slot, clock = Slot(), FakeClock()
+    sender = Sender(slot, clock, spacing_s={"webhook": 3600.0})
+    for number in range(BURST + 1):
+        sender.hand_over(parcel(number))
+    wait_until(lambda: len(slot.taken) == BURST, what="the burst")
+    assert BURST in sender.in_flight
+    sender.stop()
+    assert len(sender.reports()) == BURST
 
 
 def test_threads_have_names():

@@ -8,13 +8,13 @@ from typing import TYPE_CHECKING, NamedTuple
 
 import numpy as np
 
+from analysis.animal.osmoregulation import SPREAD_MOSM_KG, CohortState, GapRule
 from analysis.animal.strains import DANGER_LOSS, DANGER_STRAIN
 from analysis.animal.stress import advance, advance_series
 from analysis.arrays import MICROSECONDS_PER_SECOND
 from ingest.chain.animals import EVERY_US
 
 if TYPE_CHECKING:
-    from analysis.animal.osmoregulation import CohortState
     from analysis.animal.stage_arrays import StageArrays
     from analysis.arrays import FloatArray, IntArray
 
@@ -28,11 +28,26 @@ class WaterRecord(NamedTuple):
 
 
 def brought_to(figures: StageArrays, state: CohortState, at_us: int) -> CohortState:
-    """Return the state of one cohort at a later moment, in the water that it is in; an earlier moment changes nothing."""
+    """Return the state of one cohort at a later moment, in the water that it is in; an earlier moment changes nothing.
+
+    In water that nobody has measured what they are used to becomes doubtful with its settling time, and unknown after a day.
+    """
     updated_at_us = int(state.updated_at_us[0])
     if not 0 < updated_at_us < at_us:
         return state
     elapsed_s = (at_us - updated_at_us) / MICROSECONDS_PER_SECOND
+    if np.isnan(state.osmolality[0]):
+        unseen_s = elapsed_s + float(state.pending_s[0])
+        if unseen_s > GapRule().unknown_after_s:
+            return CohortState.unknown(1, at_us=at_us)
+        settling_h = np.maximum(figures.tau_up, figures.tau_down)
+        doubt = SPREAD_MOSM_KG * -np.expm1(-unseen_s / 3600.0 / settling_h)
+        return replace(
+            state,
+            uncertainty=np.hypot(state.uncertainty, np.nan_to_num(doubt, nan=SPREAD_MOSM_KG)),
+            pending_s=np.zeros(1),
+            updated_at_us=np.array([at_us], dtype=np.int64),
+        )
     after, _ = advance(
         figures,
         state,

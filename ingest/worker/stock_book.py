@@ -12,7 +12,7 @@ from analysis.arrays import MICROSECONDS_PER_SECOND
 from ingest.chain.animals import carried_animals
 from ingest.chain.moving import brought_to, exposure_from_strain, farthest_record, put_into
 from ingest.commands.stock_book import FeltNear
-from ingest.store import cohorts, water_record
+from ingest.store import cohorts, restoring, water_record
 from ingest.store.restoring import stocked
 from ingest.worker.committing import animal_states
 
@@ -75,7 +75,9 @@ class StockBook:
         """Return what the chain knows of a cohort at a moment, of one element: from its record where the moment is past."""
         row = self.plant.animals.row_of.get(cohort_id)
         if row is None:
-            return CohortState.unknown(1)
+            # In a tank that the site file has no more, or of a stage that no table knows: as it was when last seen.
+            body = restoring.animal_bodies(self._connection).get(cohort_id)
+            return CohortState.unknown(1) if body is None else CohortState.from_dicts([body["state"]])
         index = np.array([row])
         live = self.state_of_chain.animals.cohorts.take(index)
         if live.updated_at_us[0] <= at_us:

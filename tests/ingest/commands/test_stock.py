@@ -1,5 +1,6 @@
 from __future__ import annotations
 
+import sqlite3
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -319,6 +320,65 @@ def test_the_narrowest_published_limit_of_all_in_a_tank_holds(tmp_path):
         assert limits() == pytest.approx([8.0, 38.0], abs=0.05)
         do(bench, "stock.harvest", "n1")
         assert limits() == pytest.approx([6.0, 40.0], abs=0.05)
+
+
+def test_in_a_tank_that_nobody_watches_doubt_grows(tmp_path):
+    """Two tanks with a sensor each; the second loses its sensor, as in a site that has only one."""
+    text = site_text(port=1, sensors=2)
+    text = text[: text.index("  - id: s1\n")]
+    with Bench(tmp_path, text, now_us=START_US) as bench:
+        read_for(bench, 5, salinity={"s0": 31.0})
+        do(bench, "stock.move", to_tank="t1")
+        assert live(bench, "b0")["osmolality"] is None
+        assert bench.queries.latest_stress_of_cohorts(since_us=0)["b0"].stress is None
+        bench.clock.advance(6 * 3600.0)
+        do(bench, "stock.move", to_tank="t0")
+        assert 20.0 < live(bench, "b0")["uncertainty"] < 300.0
+        do(bench, "stock.move", to_tank="t1")
+        bench.clock.advance(30 * 3600.0)
+        do(bench, "stock.move", to_tank="t0")
+        assert live(bench, "b0")["acclimated"] is None, "after a day nobody can say"
+
+
+def test_a_store_that_refuses_leaves_everything_as_it_was(bench):
+    """All or nothing: the ledger, the cohorts, the chain's animals and the limits of the tanks."""
+    read_for(bench, 3, salinity={"s0": 31.0, "s1": 20.0})
+    before = memory(bench), table(bench, "SELECT * FROM cohort"), bench.worker.plant
+    connection = bench.worker.store.connection
+    connection.execute("CREATE TRIGGER full BEFORE INSERT ON animal_state BEGIN SELECT RAISE(ABORT, 'no room'); END")
+    with pytest.raises(sqlite3.IntegrityError, match="no room"):
+        do(bench, "stock.move", to_tank="t1")
+    assert (memory(bench), table(bench, "SELECT * FROM cohort"), bench.worker.plant) == before
+    assert bench.queries.events(kind_prefix="stock.moved") == []
+    connection.execute("DROP TRIGGER full")
+    bench.worker.take_commands(bench.stop)
+    assert book(bench)["b0"].tank == live(bench, "b0")["tank"] == "t1"
+
+
+def test_a_reload_keeps_the_animals_and_takes_up_the_sites_own_figures(bench):
+    read_for(bench, 5, salinity={"s0": 20.0, "s1": 31.0})
+    do(bench, "stock.receive", "n1", **NEWCOMERS)
+    before = memory(bench)
+    own = (
+        "{animal: penaeus-vannamei/pl10, figures: {tolerable_low_ppt: 18.0}, author: Ines Prado, reason: two lots lost}"
+    )
+    bench.site_file.write_text(f"{bench.site_file.read_text()}species:\n  - {own}\n")
+    assert bench.worker.reload()
+    assert memory(bench) == before
+    assert bench.worker.plant.animals.tolerable_salinity[0, 0] == pytest.approx(18.0, abs=0.05)
+
+
+def test_animals_of_a_tank_that_is_gone_can_be_moved_to_one_that_is_there(bench):
+    read_for(bench, 30, salinity={"s0": 31.0, "s1": 20.0})
+    before = live(bench, "b1")
+    text = bench.site_file.read_text()
+    start, end = text.index("  - id: t1\n"), text.index("sensors:\n")
+    bench.site_file.write_text((text[:start] + text[end:])[: text.index("  - id: s1\n") - (end - start)])
+    assert bench.worker.reload()
+    assert "b1" not in bench.worker.plant.animals.row_of
+    assert do(bench, "stock.move", "b1", to_tank="t0").outcome == "applied"
+    after = live(bench, "b1")
+    assert (after["tank"], after["acclimated"]) == ("t0", before["acclimated"])
 
 
 ACTS = st.one_of(

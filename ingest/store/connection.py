@@ -3,10 +3,10 @@
 from __future__ import annotations
 
 import sqlite3
-from contextlib import contextmanager
+from contextlib import closing, contextmanager
 from typing import TYPE_CHECKING
 
-from ingest.store.errors import MissingStoreError
+from ingest.store.errors import MissingStoreError, StoreBusyError
 
 if TYPE_CHECKING:
     from collections.abc import Iterator
@@ -40,17 +40,21 @@ def reader(path: Path) -> Iterator[sqlite3.Connection]:
     ------
     MissingStoreError
         If there is no such file, or nothing in it yet.
+    StoreBusyError
+        If the file cannot be read at this moment.
     """
     if not path.exists():
         raise MissingStoreError(str(path))
-    connection = sqlite3.connect(f"{path.resolve().as_uri()}?mode=ro", uri=True, timeout=READER_TIMEOUT_S)
-    connection.row_factory = sqlite3.Row
     try:
-        if connection.execute("PRAGMA user_version").fetchone()[0] == 0:
-            raise MissingStoreError(str(path))  # The worker is just making it.
-        yield connection
-    finally:
-        connection.close()
+        with closing(
+            sqlite3.connect(f"{path.resolve().as_uri()}?mode=ro", uri=True, timeout=READER_TIMEOUT_S)
+        ) as connection:
+            connection.row_factory = sqlite3.Row
+            if connection.execute("PRAGMA user_version").fetchone()[0] == 0:
+                raise MissingStoreError(str(path))  # The worker is just making it.
+            yield connection
+    except sqlite3.Error as error:
+        raise StoreBusyError(str(path), reason=str(error)) from error
 
 
 @contextmanager

@@ -30,7 +30,7 @@ from analysis.water.compensation import Compensation, CompensationMethod
 from analysis.water.uncertainty import uncertainty_of_readings
 from ingest.chain.trust import BITS_A_TEST
 from ingest.chain.uncertainty import accuracy_of
-from ingest.store import calibrations, recent
+from ingest.store import calibrations, recent, restoring
 from ingest.store.ledger import Event, append
 from ingest.store.recent import RecentRows
 from ingest.store.rollups import LEVELS
@@ -115,7 +115,12 @@ class _Assessment:
             return True
         count = len(plant.site.sensors)
         chosen = range(self.next_sensor, min(self.next_sensor + SENSORS_A_STEP, count))
-        verdicts = [(sensor, self._judged(connection, plant, sensor, self.rows)) for sensor in chosen]
+        heard = restoring.newest_times(connection)
+        verdicts = [
+            (sensor, self._judged(connection, plant, sensor, self.rows))
+            for sensor in chosen
+            if plant.site.sensors[sensor].id in heard  # one that has never spoken is not yet installed
+        ]
         with store.transaction():
             for sensor, (health, evidence) in verdicts:
                 _keep(connection, plant, sensor, health, evidence, self.now_us)

@@ -86,6 +86,8 @@ FORWARDING_EVERY_S = 2.0
 REDERIVE_EVERY_S = 0.1
 """A slice of what is derived again, or assessed, is done this often at most: live blocks have the greater part of the time."""
 ASSESS_EVERY_S = 3600.0
+ASSESS_AFTER_S = 300.0
+"""Sensors are not judged before what waited at the broker has come: all of them would be called silent."""
 AGES_EVERY_S = 600.0
 RETRY_S = (0.1, 0.5, 1.0, 2.0, 5.0)
 """Waits between attempts to commit; the last one repeats. Nothing is acknowledged meanwhile."""
@@ -144,6 +146,7 @@ class Worker:
         self._watching_since_us = clock.now_us()
         self._wants_reload = threading.Event()
         self._schedule = Schedule(clock)
+        self._began_s = clock.monotonic_s()
         self.counts: Counter[str] = Counter()
         self.stopwatch = Stopwatch(STEPS)
         self.last_problem = ""
@@ -299,7 +302,8 @@ class Worker:
             self.rederive()
         if self._schedule.is_due("ages of animals", AGES_EVERY_S):
             self.age_animals(stop)
-        if self._schedule.is_due("assess", ASSESS_EVERY_S):
+        is_settled = self._clock.monotonic_s() - self._began_s >= ASSESS_AFTER_S
+        if is_settled and self._schedule.is_due("assess", ASSESS_EVERY_S):
             self._assessor.begin(now_us=self._clock.now_us())
         if self._assessor.is_running and self._schedule.is_due("assess step", REDERIVE_EVERY_S):
             self._assessor.step(self.plant)

@@ -116,8 +116,12 @@ def test_in_tidal_water_a_believed_neighbour_settles_what_the_sensor_declares(tm
         assert bench.queries.sensor_health()["s0"].body["compensation"]["verdict"] == "consistent"
 
 
-def test_a_sensor_that_never_spoke_is_not_to_be_used(bench):
+def test_a_sensor_that_has_fallen_silent_is_not_to_be_used_and_one_that_never_spoke_is_not_judged(bench):
+    bench.read("s0", START_US, 31.0)
+    wait_until_time(bench, START_US + 20 * DAY_US)
     assert assessed(bench) == (Belief.DO_NOT_USE, ["silent"])
+    assert set(bench.queries.sensor_health()) == {"s0"}
+    assert len(bench.queries.events(kind_prefix="sensor.assessed")) == 1
 
 
 def test_an_overdue_calibration_is_a_task_and_changes_no_belief(bench):

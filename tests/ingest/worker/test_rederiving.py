@@ -291,6 +291,18 @@ def test_readings_are_taken_in_the_water_of_their_day(tmp_path):
         )
 
 
+def test_a_new_site_file_keeps_the_calibrations(bench):
+    ask(bench, "sensor.calibrate", as_found=[point(49.0)])
+    bench.site_file.write_text(bench.site_file.read_text().replace("name: Quay House", "name: Quay House South"))
+    assert bench.worker.reload()
+    send(bench, START_US + MINUTE_US, 49.0)
+    [row] = seen(bench)
+    assert row["conductivity_mS_cm"] == pytest.approx(true_mS_cm(), abs=1e-9)
+    derivations = table(bench, "SELECT * FROM derivation ORDER BY id")
+    assert derivations[-1]["id"] == row["derivation"]
+    assert (derivations[-1]["revision"], derivations[-1]["calibration_set"]) == (2, derivations[-2]["calibration_set"])
+
+
 @pytest.mark.slow
 def test_killed_in_the_middle_it_leaves_a_consistent_store_and_finishes_after_the_restart(tmp_path):
     count = 120_000

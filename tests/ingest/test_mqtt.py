@@ -154,10 +154,18 @@ def test_after_a_restart_of_the_broker_subscriptions_are_back_and_nothing_is_los
         intake.acknowledge(taken[:60])
         mosquitto.restart()
         publish(mosquitto, bodies(100, 100))
-        again = collect(intake, 140)
+        again: list[bytes] = []
+
+        def is_complete() -> bool:
+            messages = intake.take(1000)
+            intake.acknowledge(messages)
+            again.extend(payloads(messages))
+            return set(again) >= set(bodies(140, 60))
+
+        # Acknowledgements that the broker has not seen before its end are in vain: some more may come twice.
+        wait_until(is_complete, what="what was not acknowledged, and what came after the restart")
         assert intake.connects >= 2
-        assert set(payloads(again)) >= set(bodies(140, 60))
-        assert payloads(again)[-100:] == bodies(100, 100), "in order, the new after the old"
+        assert [body for body in again if int(body) >= 100] == bodies(100, 100), "in order"
 
 
 @pytest.mark.parametrize("is_version_5", [False, True])

@@ -189,12 +189,12 @@ def animal_roster(
         row_count=count,
         cohorts=tuple(stock.cohort for stock in rows),
         row_of={stock.cohort: row for row, stock in enumerate(rows)},
-        figures=_figures(row_stages),
+        figures=figures_of(row_stages),
         used_to_mOsm_kg=np.array(used_to, dtype=np.float64),
     )
 
 
-def _figures(stages: Sequence[Stage]) -> StageArrays:
+def figures_of(stages: Sequence[Stage]) -> StageArrays:
     """Return the figures of *stages*, worked out once for each different stage: a site has few, and many tanks."""
     places: dict[int, int] = {}
     different: list[Stage] = []

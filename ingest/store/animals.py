@@ -4,29 +4,27 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 import numpy as np
 
 from analysis.animal.blood import capacity_trend_per_d
-from analysis.animal.constants import constants
 from analysis.animal.explanation import one_sentence
 from analysis.animal.fallbacks import resolved
 from analysis.animal.foresight import DeathCount, Foresight, foresight
+from analysis.animal.stage import Certainty
 from analysis.animal.stress import Band, Driver
-from analysis.animal.survival import estimate, survival_basis, survival_of_schedule
-from ingest.chain.animal_roster import governing
+from analysis.animal.survival import estimate, peak_exposure, survival_basis
+from ingest.chain.animal_roster import figures_of, governing
 from ingest.store import cohorts, ledger, samples
 from ingest.store.restoring import animal_bodies, stocked
 
 if TYPE_CHECKING:
     import sqlite3
     from collections.abc import Mapping, Sequence
-    from typing import Any
 
     from analysis.animal.stage import Stage
     from analysis.animal.survival import SurvivalEstimate
-    from ingest.chain.animal_roster import Stocked
     from ingest.store.cohorts import CohortRow
     from ingest.store.samples import AnimalSample
 
@@ -34,6 +32,16 @@ LEAST_STRESS = 1.0
 """Below this no reason is given: the water suits them."""
 AHEAD_H = 24.0
 """For so long the water is taken to stay as it is where survival is looked ahead. [h]"""
+
+
+NOTHING_KNOWN: Mapping[str, Mapping[str, Any]] = {"state": {}, "latest": {}}
+
+
+class Estimates(NamedTuple):
+    """Survival of one cohort; None: not known."""
+
+    so_far: SurvivalEstimate | None
+    ahead: SurvivalEstimate | None
 
 
 @dataclass(frozen=True, slots=True)
@@ -108,37 +116,39 @@ def sights(connection: sqlite3.Connection, stages: Mapping[str, Stage]) -> list[
     taken: dict[str, list[AnimalSample]] = {}
     for sample in samples.read(connection):
         taken.setdefault(sample.cohort, []).append(sample)
-    found = []
-    for row in cohorts.read_all(connection):
-        if row.ended_at is None:
-            [[stock]] = stocked([row]).values()
-            found.append(_sight(row, stock, stages, bodies.get(row.id), taken.get(row.id, ())))
-    return found
+    present = [row for row in cohorts.read_all(connection) if row.ended_at is None]
+    stocks = [stock for row in present for [stock] in stocked([row]).values()]
+    governed = [governing(stock, stages) for stock in stocks]
+    minds = [bodies.get(row.id, NOTHING_KNOWN) for row in present]
+    survival = _survival(governed, [mind["state"] for mind in minds])
+    return [
+        _sight(row, stock.proposed, stages.get(row.animal), stage, mind, taken.get(row.id, ()), estimates)
+        for row, stock, stage, mind, estimates in zip(present, stocks, governed, minds, survival, strict=True)
+    ]
 
 
 def _sight(
     row: CohortRow,
-    stock: Stocked,
-    stages: Mapping[str, Stage],
-    body: Mapping[str, Any] | None,
+    proposed: str | None,
+    confirmed: Stage | None,
+    governed: Stage | None,
+    mind: Mapping[str, Any],
     taken: Sequence[AnimalSample],
+    survival: Estimates,
 ) -> AnimalSight:
-    state = {} if body is None else body["state"]
-    latest = {} if body is None else body["latest"]
-    governed = governing(stock, stages)
-    confirmed = stages.get(row.animal)
+    """Return one cohort; *mind* is what the chain remembers of it, *governed* the stage whose figures hold for it."""
+    state, latest = mind["state"], mind["latest"]
     band, driver = Band(latest.get("band") or 0), Driver(latest.get("driver") or 0)
     water, acclimated = _number(state.get("osmolality")), _number(state.get("acclimated"))
-    exposure, gap = _number(state.get("exposure")), _number(latest.get("gap_mOsm_kg"))
-    so_far, ahead = _survival(governed, water, acclimated, exposure, _number(state.get("temperature")))
+    stress, gap = _number(latest.get("stress")), _number(latest.get("gap_mOsm_kg"))
     bloods = [sample for sample in taken if sample.kind == samples.BLOOD]
     tests = [sample for sample in taken if sample.kind == samples.POSTLARVAE]
     return AnimalSight(
         cohort=row,
         stage=confirmed,
-        proposed=stock.proposed,
+        proposed=proposed,
         measured_at=state.get("updated_at_us"),
-        stress=_number(latest.get("stress")),
+        stress=stress,
         strains={name: _number(latest.get(f"{name}_strain")) for name in ("range", "change", "exposure", "thermal")},
         band=band,
         driver=driver,
@@ -149,44 +159,57 @@ def _sight(
         gap=gap,
         sentence=one_sentence(
             band=band,
-            driver=Driver.NONE if _number(latest.get("stress")) < LEAST_STRESS else driver,
+            driver=Driver.NONE if stress < LEAST_STRESS else driver,
             water_mOsm_kg=water,
             acclimated_mOsm_kg=acclimated,
             optimal_low_mOsm_kg=math.nan if governed is None else resolved(governed).value("optimal_low"),
             gap_mOsm_kg=gap,
         ),
-        survival=so_far,
-        survival_ahead=ahead,
-        has_own_figures=confirmed is not None and any(f.certainty == "site" for f in confirmed.figures.values()),
+        survival=survival.so_far,
+        survival_ahead=survival.ahead,
+        has_own_figures=confirmed is not None
+        and any(figure.certainty is Certainty.SITE for figure in confirmed.figures.values()),
         blood=bloods[-1] if bloods else None,
         capacity_trend_per_d=_trend(bloods),
         postlarvae_test=tests[-1] if tests else None,
     )
 
 
-def _survival(
-    stage: Stage | None, water: float, acclimated: float, exposure: float, temperature: float
-) -> tuple[SurvivalEstimate | None, SurvivalEstimate | None]:
-    """Return what they survive so far, and if the water stays; None where the literature does not say."""
-    if stage is None or math.isnan(water) or math.isnan(acclimated) or math.isnan(exposure):
-        return None, None
-    basis = survival_basis(stage, lowest=water, highest=water, home=acclimated)
-    if basis is None:
-        return None, None
-    ahead = survival_of_schedule(
-        stage,
-        acclimated_mOsm_kg=acclimated,
-        hours=np.array([AHEAD_H]),
-        osmolality_mOsm_kg=np.array([water]),
-        temperature_degC=np.array([temperature]),
+def _survival(stages: Sequence[Stage | None], states: Sequence[Mapping[str, Any]]) -> list[Estimates]:
+    """Return what cohorts survive so far, and if the water stays; None where the literature does not say. All at once."""
+    columns = [
+        np.array([_number(state.get(name)) for state in states])
+        for name in ("osmolality", "acclimated", "exposure", "temperature")
+    ]
+    water, home, exposure, _ = columns
+    is_known = np.isfinite(water) & np.isfinite(home) & np.isfinite(exposure)
+    told = {
+        index: (stage, basis)
+        for index, stage in enumerate(stages)
+        if stage is not None
+        and is_known[index]
+        and (basis := survival_basis(stage, lowest=water[index], highest=water[index], home=home[index])) is not None
+    }
+    estimates = [Estimates(None, None)] * len(stages)
+    if not told:
+        return estimates
+    index = np.array(list(told), dtype=np.int64)
+    figures = figures_of([stage for stage, _ in told.values()])
+    water, home, exposure, temperature = (column[index] for column in columns)
+    ahead = peak_exposure(
+        figures,
+        acclimated_mOsm_kg=home,
+        hours=np.full((1, index.size), AHEAD_H),
+        osmolality_mOsm_kg=water[None, :],
+        temperature_degC=temperature[None, :],
     )
-    if ahead is None:
-        return None, None
-    steepness = constants().steepness
-    so_far = estimate(exposure, steepness=steepness, certainty=basis[0], sources=basis[1])
-    return so_far, estimate(
-        exposure + ahead.exposure, steepness=steepness, certainty=ahead.certainty, sources=ahead.sources
-    )
+    for place, dose, more, (_, (certainty, sources)) in zip(index, exposure, ahead, told.values(), strict=True):
+        so_far, later = (
+            estimate(float(total), steepness=figures.steepness, certainty=certainty, sources=sources)
+            for total in (dose, dose + more)
+        )
+        estimates[place] = Estimates(so_far, later)
+    return estimates
 
 
 def _trend(bloods: Sequence[AnimalSample]) -> float:

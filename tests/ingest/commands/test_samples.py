@@ -5,12 +5,14 @@ from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pytest
 
 from analysis.animal.osmoregulation import StageArrays
 from analysis.animal.stage import Certainty
 from analysis.animal.strains import exposure_strain
 from analysis.animal.stress import Band, Driver
+from analysis.animal.survival import survival_of_schedule
 from analysis.animal.tables import load
 from ingest.chain.animal_roster import known_stages, own_figures
 from ingest.chain.moving import exposure_from_strain
@@ -159,6 +161,31 @@ def test_what_the_board_sees_of_each_cohort(bench):
     assert old.survival.alive == pytest.approx(1.0, abs=0.01)
     do(bench, "stock.harvest", "n1")
     assert len(bench.queries.animals(bench.worker.plant.stages)) == 2
+
+
+def test_survival_ahead_is_that_of_a_day_in_this_water_for_each_cohort_by_itself(bench):
+    """All cohorts are worked out at once; each must be as if alone (a check of our own, not of the science)."""
+    read_for(bench, 2, salinity={"s0": 3.0, "s1": 31.0})
+    do(bench, "stock.receive", "n1", tank="t0", animal="penaeus-vannamei/pl1-pl2", number=500, used_to_salinity=28.0)
+    do(bench, "stock.receive", "n2", tank="t0", animal=PL10, number=500)
+    read_for(bench, 1, salinity={"s0": 3.0, "s1": 31.0})
+    known = 0
+    for sight in bench.queries.animals(bench.worker.plant.stages):
+        state = live(bench, sight.cohort.id)
+        alone = survival_of_schedule(
+            load()[sight.cohort.animal],
+            acclimated_mOsm_kg=state["acclimated"],
+            hours=np.array([24.0]),
+            osmolality_mOsm_kg=np.array([state["osmolality"]]),
+            temperature_degC=np.array([state["temperature"]]),
+        )
+        assert (alone is None) == (sight.survival_ahead is None)
+        if alone is not None:
+            known += 1
+            assert sight.survival_ahead.exposure == pytest.approx(alone.exposure + state["exposure"], rel=1e-9)
+            assert sight.survival_ahead.sources == alone.sources
+            assert sight.survival_ahead.alive <= sight.survival.alive
+    assert known >= 2
 
 
 def test_losses_are_held_against_the_stress_before_them(bench):

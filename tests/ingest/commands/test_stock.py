@@ -240,6 +240,21 @@ def test_a_stage_that_age_proposes_makes_limits_stricter_until_a_person_confirms
     assert len(bench.queries.events(kind_prefix="stock.stage_proposed")) == 1
 
 
+@pytest.mark.parametrize(("temperature", "stages"), [(28.0, 1), (18.0, 0)])
+def test_in_the_cold_animals_age_more_slowly(tmp_path, temperature, stages):
+    """Development halves with ten kelvin (assumed in the animals' room): five days at 18 are not those of postlarvae 3 to 4."""
+    pl1 = "penaeus-vannamei/pl1-pl2"
+    with Bench(tmp_path, site_text(port=1, sensors=1, interval_s=3600.0), now_us=START_US) as bench:
+        do(bench, "stock.receive", "n1", **NEWCOMERS | {"animal": pl1}, metamorphosed_at=START_US)
+        read_for(bench, 60 * 24 * 5, salinity={"s0": 15.0}, step_s=3600.0, temperature=temperature)
+        bench.roll_up()
+        bench.worker.age_animals(bench.stop)
+        found = [event.body["proposed"] for _, event in bench.queries.events(kind_prefix="stock.stage_proposed")]
+        assert len(found) == stages
+        if found:
+            assert found[0]["age_d"] == pytest.approx(5.0)
+
+
 def test_a_declined_proposal_is_not_made_again(bench):
     pl1 = "penaeus-vannamei/pl1-pl2"
     do(bench, "stock.receive", "n1", **NEWCOMERS | {"animal": pl1}, metamorphosed_at=START_US - 10 * DAY_US)

@@ -26,6 +26,8 @@ EVERY_US = 10 * MICROSECONDS_PER_SECOND
 RECORD_EVERY_US = 60 * MICROSECONDS_PER_SECOND
 """A row of the record is kept for the first step of each such slice of measured time, and for each change of band."""
 _NAN_STRESS = float("nan")
+_STRESS_NAMES = tuple(member.name for member in fields(Stress))
+_COHORT_NAMES = tuple(member.name for member in fields(CohortState))
 
 
 @dataclass(frozen=True, slots=True)
@@ -156,19 +158,19 @@ def _keep(
     at_us: IntArray,
     record: list[StressStep],
 ) -> None:
-    """Take new states into *state* in place, and what belongs into the record."""
-    for index, (row, time_us) in enumerate(zip(rows.tolist(), at_us.tolist(), strict=True)):
-        is_due = time_us // RECORD_EVERY_US > state.recorded_us[row]
-        has_new_band = stress.band[index] != state.latest.band[row]
-        if is_due or has_new_band:
-            state.recorded_us[row] = time_us // RECORD_EVERY_US
-            values = stress_values(stress, index)
-            values["acclimated_mOsm_kg"] = _number(after.acclimated[index])
-            record.append(StressStep(int(roster.tanks[row]), time_us, roster.cohorts[row], values))
-        for member in fields(Stress):
-            getattr(state.latest, member.name)[row] = getattr(stress, member.name)[index]
-    for member in fields(CohortState):
-        getattr(state.cohorts, member.name)[rows] = getattr(after, member.name)
+    """Take new states into *state* in place, and what belongs into the record; each row stands in a wave once."""
+    slices = at_us // RECORD_EVERY_US
+    is_told = (slices > state.recorded_us[rows]) | (stress.band != state.latest.band[rows])
+    for index in np.flatnonzero(is_told).tolist():
+        row = int(rows[index])
+        values = stress_values(stress, index)
+        values["acclimated_mOsm_kg"] = _number(after.acclimated[index])
+        record.append(StressStep(int(roster.tanks[row]), int(at_us[index]), roster.cohorts[row], values))
+    state.recorded_us[rows[is_told]] = slices[is_told]
+    for name in _STRESS_NAMES:
+        getattr(state.latest, name)[rows] = getattr(stress, name)
+    for name in _COHORT_NAMES:
+        getattr(state.cohorts, name)[rows] = getattr(after, name)
 
 
 def stress_values(stress: Stress, index: int) -> dict[str, Any]:
@@ -188,7 +190,7 @@ def stress_values(stress: Stress, index: int) -> dict[str, Any]:
 
 def animal_body(roster: AnimalRoster, state: AnimalState, row: int) -> dict[str, Any]:
     """Return what the chain remembers of the animals of one row as plain JSON data."""
-    latest = {member.name: _number(getattr(state.latest, member.name)[row]) for member in fields(Stress)}
+    latest = {name: _number(getattr(state.latest, name)[row]) for name in _STRESS_NAMES}
     return {
         "cohort": roster.cohorts[row],
         "state": state.cohorts.take(np.array([row])).to_dicts()[0],

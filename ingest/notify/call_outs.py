@@ -10,6 +10,7 @@ from analysis.alarm.call_out import Phase, Reason
 from analysis.alarm.kinds import ConditionKind
 from analysis.alarm.rationale import RATIONALE
 from analysis.alarm.rules import Priority
+from analysis.alarm.state import NEVER_US
 from analysis.alarm.transition import Happening
 
 if TYPE_CHECKING:
@@ -107,6 +108,13 @@ class CallOuts:
         """Let everything happen that time alone brings."""
         for number in list(self.entries):
             self._step(number, call_out.TimePassed(), now_us)
+
+    def move(self, by_us: int) -> None:
+        """Follow a clock that was set: what is due stays as far ahead as it was. [us]"""
+        for number, entry in self.entries.items():
+            if entry.call.next_call_us != NEVER_US:
+                moved = replace(entry.call, next_call_us=entry.call.next_call_us + by_us)
+                self._keep(number, replace(entry, call=moved))
 
     def due_calls(self) -> list[tuple[int, Call]]:
         """Return the calls to make after all that happened: one a person and call-out, none for what is settled meanwhile."""

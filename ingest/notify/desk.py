@@ -49,6 +49,8 @@ FOLLOWERS_US = 10 * MICROSECONDS_PER_SECOND
 """The first message of a group leaves at once; tanks that join are gathered for so long."""
 TOO_OLD_US = 24 * 3600 * MICROSECONDS_PER_SECOND
 FAILING_AFTER_US = 120 * MICROSECONDS_PER_SECOND
+SET_BACK_US = 5 * MICROSECONDS_PER_SECOND
+"""A clock that was set back by more than this is followed: nobody waits an hour longer for a call because of it."""
 TEST = "test"
 CURSOR = "calls_event"
 TEST_DAY = "calls_test_day"
@@ -78,6 +80,7 @@ class CallDesk:
     nobody_since_us: int | None = None
     people: dict[str, Person] = field(default_factory=dict)
     _has_to_compare: bool = True
+    _followed_at_us: int = 0
 
     def __post_init__(self) -> None:
         self.cursor = restoring.meta_number(self.store.connection, CURSOR)
@@ -104,6 +107,11 @@ class CallDesk:
                 self._commit_cursor(until, outcome, now_us)
             return len(events) == MOST_EVENTS
         work = self.call_outs.copy(self.plan)
+        set_back_us = self._followed_at_us - now_us
+        if set_back_us > SET_BACK_US:
+            log.warning("the clock was set back", seconds=set_back_us / MICROSECONDS_PER_SECOND)
+            work.move(-set_back_us)
+        self._followed_at_us = now_us
         for event_id, event in events:
             news = news_of(self.site, event_id, event)
             if news is not None:

@@ -15,6 +15,8 @@ if TYPE_CHECKING:
     from ingest.store.ledger import Event
 
 ALARM_PREFIX = "alarm."
+LONGEST_WAIT_US = 600_000_000
+"""No delivery waits longer than this for its next attempt."""
 
 
 class CallOutRow(NamedTuple):
@@ -177,11 +179,14 @@ def add_delivery(connection: sqlite3.Connection, delivery: Delivery) -> int:
 
 
 def due_deliveries(connection: sqlite3.Connection, *, now_us: int, without: Iterable[int]) -> list[Delivery]:
-    """Return deliveries that are due and not in *without*, oldest first."""
+    """Return deliveries that are due and not in *without*, oldest first.
+
+    What seems to be due further ahead than anything waits is due now: the clock has been set back meanwhile.
+    """
     rows = connection.execute(
         "SELECT id, call_out, number, person, channel, address, reason, title, body, created_at, next_attempt_at, attempts"
-        " FROM delivery WHERE finished_at IS NULL AND next_attempt_at <= ? ORDER BY id",
-        (now_us,),
+        " FROM delivery WHERE finished_at IS NULL AND (next_attempt_at <= ? OR next_attempt_at > ?) ORDER BY id",
+        (now_us, now_us + LONGEST_WAIT_US),
     ).fetchall()
     taken = set(without)
     return [Delivery(*row) for row in rows if row["id"] not in taken]

@@ -10,7 +10,7 @@ import pytest
 
 from ingest.notify.sending import Parcel, Posted
 from ingest.store.ledger import first_broken_id
-from tests.ingest.notify.scene import ONE_PERSON, CallBench
+from tests.ingest.notify.scene import ONE_PERSON, PEOPLE, CallBench
 
 
 class Hands:
@@ -165,6 +165,17 @@ def test_a_call_out_goes_on_where_it_was(tmp_path):
         bench.step(901)
         assert bench.phases() == ["calling"]
         assert len({row["number"] for row in bench.deliveries()}) == 2
+
+
+def test_a_clock_that_is_set_back_delays_no_call_and_no_attempt(tmp_path):
+    hands = Hands(fails=2)
+    with CallBench(tmp_path, people=PEOPLE, post=hands) as bench:
+        bench.fall("s0")
+        bench.step_until(lambda: len(bench.rows("SELECT * FROM delivery_attempt")) == 2, "the first attempts")
+        bench.clock.step_wall(-7200)
+        bench.step_until(lambda: hands.channels() == {"mail", "push"}, "the second attempts")
+        bench.step(301)
+        bench.step_until(lambda: "voice" in hands.channels(), "the next person")
 
 
 def changed_site(bench: CallBench, old: str, new: str) -> None:

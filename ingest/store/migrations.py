@@ -128,6 +128,10 @@ STORE: tuple[Migration, ...] = (
             " from_us INTEGER NOT NULL, to_us INTEGER NOT NULL, reason TEXT NOT NULL, event_id INTEGER REFERENCES event(id),"
             " created_at INTEGER NOT NULL, next_us INTEGER NOT NULL, row_count INTEGER NOT NULL DEFAULT 0, finished_at INTEGER)",
             "CREATE INDEX rederivation_open ON rederivation (id) WHERE finished_at IS NULL",
+            # Sums of (best less seen) beside the rollups, which stay as seen.
+            "CREATE TABLE rollup_change (sensor INTEGER NOT NULL, level_us INTEGER NOT NULL, bucket INTEGER NOT NULL,"
+            " salinity_sum REAL NOT NULL, temperature_sum REAL NOT NULL, osmolality_sum REAL NOT NULL,"
+            " PRIMARY KEY (sensor, level_us, bucket)) WITHOUT ROWID",
             "CREATE TABLE bench_sample (taken_at INTEGER NOT NULL, event_id INTEGER NOT NULL REFERENCES event(id),"
             " tank INTEGER REFERENCES tank(id), sensor INTEGER REFERENCES sensor(id), actor TEXT NOT NULL, body TEXT NOT NULL,"
             " PRIMARY KEY (taken_at, event_id)) WITHOUT ROWID",

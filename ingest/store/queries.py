@@ -62,7 +62,7 @@ class History:
 
     All arrays have one length; NaN where nothing is known. `resolution_us` is 0 for single readings, else the
     length of a bucket, whose time is its start. `salinity` is practical salinity, or g/kg in water that has none.
-    `is_best` says whether corrected rows stand in the place of those that were seen: buckets of the rollups are as seen.
+    `is_best` says whether corrected rows stand in the place of those that were seen.
     """
 
     resolution_us: int
@@ -207,7 +207,7 @@ class Queries:
             [us UTC]
         set : {"best", "seen"}
             Best: of each reading the newest corrected row, where there is one. Seen: what the operator saw, for audits.
-            Spans that are drawn from rollups show what was seen.
+            In spans that are drawn from rollups the mean of each bucket is the best, its extremes are moved by as much.
         """
         span = to_us - from_us
         with reader(self._path) as connection:
@@ -216,7 +216,7 @@ class Queries:
             if span <= RAW_SPAN_US:
                 return _raw_history(connection, number, from_us, to_us, is_best=set == "best")
             table = "q15" if span <= Q15_SPAN_US else "h1" if span <= H1_SPAN_US else "d1"
-            return _rolled_history(connection, table, number, from_us, to_us)
+            return _rolled_history(connection, table, number, from_us, to_us, is_best=set == "best")
 
     def day_lines(self, *, from_us: int, to_us: int) -> dict[str, tuple[IntArray, FloatArray]]:
         """Return (time, salinity) of every sensor in quarter hours: for small lines beside many tanks."""
@@ -463,20 +463,32 @@ def _thinned_history(connection: Any, sensor: int, from_us: int, to_us: int, *, 
         f" FROM {_source(is_best)} WHERE measured_at >= ? AND measured_at < ? AND sensor = ? GROUP BY bucket ORDER BY bucket",
         (step, step, from_us, to_us, sensor),
     ).fetchall()
-    return _bucket_history(rows, resolution_us=step)
+    return _bucket_history(rows, resolution_us=step, is_best=is_best)
 
 
-def _rolled_history(connection: Any, table: str, sensor: int, from_us: int, to_us: int) -> History:
+def _rolled_history(connection: Any, table: str, sensor: int, from_us: int, to_us: int, *, is_best: bool) -> History:
+    level_us = rollups.LEVELS[table]
+
+    def changed(quantity: str) -> str:
+        return f"coalesce(change.{quantity}_sum, 0)" if is_best else "0"
+
+    # A correction hardly differs within a bucket: its extremes move by as much as its mean.
+    columns = ", ".join(
+        f"(seen.{q}_sum + {changed(q)}) / nullif({q}_n, 0), {q}_min + {changed(q)} / nullif({q}_n, 0),"
+        f" {q}_max + {changed(q)} / nullif({q}_n, 0)"
+        for q in ("salinity", "temperature")
+    )
     rows = connection.execute(
-        "SELECT bucket, salinity_sum / nullif(salinity_n, 0), salinity_min, salinity_max,"
-        " temperature_sum / nullif(temperature_n, 0), temperature_min, temperature_max, osmolality_sum / nullif(salinity_n, 0),"
-        f" CASE WHEN suspect_n * 2 > n THEN 3 ELSE 1 END FROM {table} WHERE sensor = ? AND bucket >= ? AND bucket < ? ORDER BY bucket",
-        (sensor, from_us, to_us),
+        f"SELECT seen.bucket, {columns}, (seen.osmolality_sum + {changed('osmolality')}) / nullif(salinity_n, 0),"
+        f" CASE WHEN suspect_n * 2 > n THEN 3 ELSE 1 END FROM {table} AS seen"
+        " LEFT JOIN rollup_change AS change ON change.sensor = seen.sensor AND change.level_us = ? AND change.bucket = seen.bucket"
+        " WHERE seen.sensor = ? AND seen.bucket >= ? AND seen.bucket < ? ORDER BY seen.bucket",
+        (level_us, sensor, from_us, to_us),
     ).fetchall()
-    return _bucket_history(rows, resolution_us=rollups.LEVELS[table])
+    return _bucket_history(rows, resolution_us=level_us, is_best=is_best)
 
 
-def _bucket_history(rows: list[Any], *, resolution_us: int) -> History:
+def _bucket_history(rows: list[Any], *, resolution_us: int, is_best: bool) -> History:
     return History(
         resolution_us=resolution_us,
         time_us=np.array([row[0] for row in rows], dtype=np.int64),
@@ -488,4 +500,5 @@ def _bucket_history(rows: list[Any], *, resolution_us: int) -> History:
         temperature_max=_floats(rows, 6),
         osmolality_mOsm_kg=_floats(rows, 7),
         quality=np.array([row[8] for row in rows], dtype=np.int64),
+        is_best=is_best,
     )

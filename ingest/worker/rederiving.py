@@ -26,7 +26,7 @@ from ingest.chain.services import MOST_PERCENT, prorated
 from ingest.chain.trust import BITS_A_TEST
 from ingest.chain.water import Measured, measured, water_of
 from ingest.site.loading import load_text
-from ingest.store import corrected
+from ingest.store import best_rollups, corrected
 from ingest.store.corrected import JobRow
 from ingest.store.ledger import Event, append
 from ingest.store.readings import ReadingRows
@@ -86,6 +86,7 @@ class Rederiver:
             rows = self._superseding(plant, job, seen)
             is_done = end_us >= job.to_us
             with self._store.transaction() as connection:
+                best_rollups.add(connection, rows, sensor=job.sensor)
                 corrected.insert(connection, rows, reason=job.reason, now_us=now_us)
                 corrected.advance(
                     connection, job, next_us=end_us, rows=len(rows), finished_at=now_us if is_done else None

@@ -106,6 +106,38 @@ def test_charts_use_the_best_and_audits_what_was_seen(bench):
     assert other.salinity.tolist() == seen_set.salinity.tolist(), "the other sensor was not touched"
 
 
+@pytest.mark.parametrize("is_swept_before", [True, False])
+def test_long_charts_show_the_best_too_and_what_was_seen_stays(bench, monkeypatch, is_swept_before):
+    monkeypatch.setattr("ingest.worker.rederiving.MOST_OF_SENSOR", 7)
+    ten_hours(bench, step_us=5 * MINUTE_US)
+    if is_swept_before:
+        bench.roll_up()
+    find_fouling_and_drift(bench)
+    rederive(bench)
+    bench.clock.advance(60)
+    ask(bench, "sensor.calibrate", as_found=[point(47.0)], performed_at_us=END_US)
+    rederive(bench)
+    send(bench, END_US + HOUR_US, 45.0)
+    bench.roll_up()
+    span = {"from_us": START_US - 2 * 86_400_000_000, "to_us": END_US}
+    best, seen_set = bench.queries.history("s0", **span), bench.queries.history("s0", **span, set="seen")
+    assert best.resolution_us == seen_set.resolution_us == 15 * MINUTE_US
+    newest = max(row["derivation"] for row in corrected(bench))
+    better = {row["measured_at"]: row for row in corrected(bench) if row["derivation"] == newest}
+    for index, start in enumerate(best.time_us.tolist()):
+        rows = [row for at_us, row in better.items() if start <= at_us < start + 15 * MINUTE_US]
+        assert best.salinity[index] == pytest.approx(
+            sum(row["practical_salinity"] for row in rows) / len(rows), rel=1e-9
+        )
+        assert best.osmolality_mOsm_kg[index] == pytest.approx(
+            sum(row["osmolality_mOsm_kg"] for row in rows) / len(rows), rel=1e-9
+        )
+        # Rounding apart: every reading of a bucket was seen with one and the same value here.
+        assert best.salinity_min[index] == pytest.approx(best.salinity[index], rel=1e-12)
+        assert best.salinity_max[index] == pytest.approx(best.salinity[index], rel=1e-12)
+    assert seen_set.salinity == pytest.approx([seen(bench)[0]["practical_salinity"]] * len(seen_set.salinity), rel=1e-9)
+
+
 def test_below_the_criterion_the_record_stays_as_it_is_and_is_rated(bench):
     ten_hours(bench)
     ask(bench, "sensor.calibrate", as_found=[point(true_mS_cm() / 1.02)])

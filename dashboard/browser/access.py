@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from dashboard.browser.installed import Installed, installed
-from dashboard.browser.sighting import alarm_sight, sensor_sight, tank_sights
+from dashboard.browser.sighting import Trust, alarm_sight, sensor_sight, tank_sights
 from dashboard.browser.sights import (
     MOST_BELIEVABLE_QUALITY,
     AlarmSight,
@@ -19,6 +19,7 @@ from dashboard.browser.sights import (
     TankSight,
 )
 from dashboard.browser.trend import LOOK_BACK_US, STANDING, Trend, limits_of, trend_of
+from ingest.chain.uncertainty import latest_uncertainties
 from ingest.clock import MICROSECONDS_PER_SECOND, to_microseconds
 from ingest.site.loading import load, load_text
 from ingest.store.errors import MissingStoreError, StoreBusyError
@@ -199,7 +200,11 @@ class Access:
         stress = queries.latest_stress(since_us=now_us - 2 * HOUR_US)
         latest = queries.latest()
         alive = queries.meta().get("alive_at")
-        tanks = tank_sights(what, latest=latest, alarms=present, days=days, stress=stress, now_us=now_us)
+        trust = Trust(
+            uncertainties=latest_uncertainties(site, what.kinds, latest),
+            health=self._keep("health", SLOW_S, queries.sensor_health),
+        )
+        tanks = tank_sights(what, latest=latest, alarms=present, days=days, stress=stress, now_us=now_us, trust=trust)
         tanks = tuple(self._with_trend(tank) if tank.alarms or tank.is_outside else tank for tank in tanks)
         present = tuple(sorted(self._with_trends(present, tanks), key=lambda a: a.rank))
         return replace(
@@ -209,7 +214,7 @@ class Access:
             is_worker_running=queries.is_worker_running(),
             alive_at_us=int(alive) if isinstance(alive, int) else None,
             tanks=tanks,
-            waters=tuple(sensor_sight(s, latest.get(s.id), what) for s in site.sensors if s.tank is None),
+            waters=tuple(sensor_sight(s, latest.get(s.id), what, trust) for s in site.sensors if s.tank is None),
             alarms=present,
             hidden_alarms=tuple(a for a in alarms if a.is_hidden),
             today=self._raised_today(site, now_us),

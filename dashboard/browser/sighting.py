@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import replace
+from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING
 
 from analysis.alarm.set_point import HALF_WIDTH
@@ -20,8 +20,12 @@ from dashboard.browser.sights import (
 from ingest.words.alarms import QUANTITY_OF_CODE, AlarmFacts
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
+    from ingest.chain.uncertainty import ReadingUncertainty
     from ingest.site.sensors import Sensor
     from ingest.store.alarms import AlarmRow
+    from ingest.store.calibrations import HealthRow
     from ingest.store.queries import Latest, LatestStress
 
 STALE_INTERVALS = 3.0
@@ -31,8 +35,20 @@ def _number(value: float | None) -> float:
     return math.nan if value is None else float(value)
 
 
-def sensor_sight(sensor: Sensor, latest: Latest | None, what: Installed) -> SensorSight:
-    """Return a sensor of the site with its newest reading."""
+@dataclass(frozen=True, slots=True)
+class Trust:
+    """What is known of the sensors besides their readings, by the sensor's id."""
+
+    uncertainties: Mapping[str, ReadingUncertainty] = field(default_factory=dict)
+    health: Mapping[str, HealthRow] = field(default_factory=dict)
+
+
+NO_TRUST = Trust()
+
+
+def sensor_sight(sensor: Sensor, latest: Latest | None, what: Installed, trust: Trust = NO_TRUST) -> SensorSight:
+    """Return a sensor of the site with its newest reading, and how far to believe it."""
+    health, uncertainty = trust.health.get(sensor.id), trust.uncertainties.get(sensor.id)
     sight = SensorSight(
         id=sensor.id,
         name=sensor.name or sensor.id,
@@ -40,6 +56,9 @@ def sensor_sight(sensor: Sensor, latest: Latest | None, what: Installed) -> Sens
         source_water=sensor.source_water,
         interval_s=sensor.interval_s,
         stale_after_s=what.stale_after_s.get(sensor.id, max(60.0, STALE_INTERVALS * sensor.interval_s)),
+        salinity_uncertainty=_number(None if uncertainty is None else uncertainty.salinity),
+        belief=None if health is None else health.belief,
+        reasons=() if health is None else tuple(health.body["reasons"]),
     )
     if latest is None:
         return sight
@@ -96,6 +115,7 @@ def tank_sights(
     days: dict[str, DayLine],
     stress: dict[str, LatestStress],
     now_us: int,
+    trust: Trust = NO_TRUST,
 ) -> tuple[TankSight, ...]:
     """Return every tank of the site with all that is known about it."""
     site = what.site
@@ -105,7 +125,7 @@ def tank_sights(
         by_subject.setdefault(alarm.subject, []).append(alarm)
     sights = []
     for tank in site.tanks:
-        sensors = tuple(sensor_sight(s, latest.get(s.id), what) for s in site.sensors_of_tank(tank.id))
+        sensors = tuple(sensor_sight(s, latest.get(s.id), what, trust) for s in site.sensors_of_tank(tank.id))
         band = what.salinity[tank.id]
         shown = shown_sensor(sensors, band, now_us)
         felt = stress.get(tank.id)

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 from datetime import tzinfo
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
@@ -13,6 +13,8 @@ from dashboard.browser.glyphs import Balance
 from ingest.words.alarms import AlarmFacts
 
 if TYPE_CHECKING:
+    from collections.abc import Mapping
+
     from analysis.arrays import FloatArray
 
 PRIORITY_RANK = {"urgent": 0, "soon": 1, "note": 2}
@@ -83,6 +85,12 @@ class SensorSight:
     density_kg_m3: float = math.nan
     flags: int = 0
     quality: int = 9
+    salinity_uncertainty: float = math.nan
+    """Plus or minus, from the accuracy that the data sheet states and the water model."""
+    belief: int | None = None
+    """Of `analysis.sensor.health.Belief`, as last assessed; None before the first time."""
+    reasons: tuple[Mapping[str, Any], ...] = ()
+    """Why: each with `finding` and `figures`, as the store keeps them, the weightiest first."""
 
     def is_fresh(self, now_us: int) -> bool:
         """Return whether its newest reading came within the time in which the next is due."""

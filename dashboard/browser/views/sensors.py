@@ -5,12 +5,14 @@ from __future__ import annotations
 from html import escape
 from typing import NamedTuple
 
+from analysis.flags import Quality
+from analysis.sensor.health import Belief
 from dashboard.browser.sights import SensorSight, Snapshot
 from dashboard.browser.views.frame import framed, teach
 from dashboard.browser.visit import Visit, age, link
 from ingest.store.queries import Refused
 from ingest.words import numbers, times
-from ingest.words.trust import flag_words, quality_word, refusal_words
+from ingest.words.trust import belief_word, finding_words, flag_words, quality_word, refusal_words
 
 SHOWN_BYTES = 160
 
@@ -47,7 +49,18 @@ def trust_words(sensor: SensorSight, snapshot: Snapshot, visit: Visit) -> tuple[
     if not sensor.is_fresh(snapshot.now_us):
         expected = times.duration(sensor.interval_s, language=language)
         return str(language.SENSOR_STATES["silent"]), language.text("expected_every", interval=expected)
-    return quality_word(sensor.quality, language=language), ", ".join(flag_words(sensor.flags, language=language))
+    why = flag_words(sensor.flags, language=language)
+    if sensor.belief is None or sensor.belief <= doubt_of(sensor.quality):
+        return quality_word(sensor.quality, language=language), ", ".join(why)
+    why += [finding_words(reason, language=language) for reason in sensor.reasons if reason["belief"] > Belief.BELIEVE]
+    return belief_word(sensor.belief, language=language), ", ".join(why)
+
+
+def doubt_of(quality: int) -> Belief:
+    """Return how far the flag of the newest reading alone lets a sensor be believed."""
+    if quality in (Quality.PASS, Quality.NOT_EVALUATED):
+        return Belief.BELIEVE
+    return Belief.DOUBT if quality == Quality.SUSPECT else Belief.DO_NOT_USE
 
 
 def _table(snapshot: Snapshot, visit: Visit, sensors: list[Placed]) -> str:
@@ -74,10 +87,15 @@ def _row(placed: Placed, snapshot: Snapshot, visit: Visit) -> str:
     sensor, place = placed.sensor, escape(placed.place)
     where = link("tank", place, tank=placed.tank, classes="word") if placed.tank else place
     word, reason = trust_words(sensor, snapshot, visit)
-    is_calm = sensor.is_fresh(snapshot.now_us) and sensor.quality <= 2
+    is_calm = sensor.is_fresh(snapshot.now_us) and max(doubt_of(sensor.quality), sensor.belief or 0) == Belief.BELIEVE
     style = "" if is_calm else ' style="color:var(--soon);font-weight:600"'
     cells = (
-        ("salinity", numbers.quantity(sensor.salinity, placed.salinity_kind, language=language)),
+        (
+            "salinity",
+            numbers.quantity(
+                sensor.salinity, placed.salinity_kind, uncertainty=sensor.salinity_uncertainty, language=language
+            ),
+        ),
         ("conductivity", numbers.quantity(sensor.conductivity_mS_cm, "conductivity", language=language)),
         ("temperature", numbers.quantity(sensor.temperature_degC, "temperature", language=language)),
     )

@@ -193,7 +193,9 @@ def _believe(tank: TankSight, snapshot: Snapshot, visit: Visit) -> str:
     rows = ""
     for sensor in tank.sensors:
         word, reason = trust_words(sensor, snapshot, visit)
-        value = numbers.quantity(sensor.salinity, tank.salinity_kind, language=visit.language)
+        value = numbers.quantity(
+            sensor.salinity, tank.salinity_kind, uncertainty=sensor.salinity_uncertainty, language=visit.language
+        )
         heard = age(
             sensor.measured_at_us, now_us=snapshot.now_us, stale_after_s=sensor.stale_after_s, language=visit.language
         )

@@ -100,10 +100,12 @@ def run_through(folder: Path, broker: Broker, *, kills: int, seed: int) -> Worke
             worker.start()
         wait_until(lambda: queries.reading_count() >= READINGS, what=f"all readings, seed {seed}", limit_s=120)
         feeder.join()
+        assert worker.stop() == 0
     finally:
         client.disconnect()
         client.loop_stop()
-    assert worker.stop() == 0
+        if worker.process is not None and worker.process.poll() is None:
+            worker.kill()
     return worker
 
 

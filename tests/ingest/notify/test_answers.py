@@ -15,7 +15,7 @@ from tests.ingest.notify.scene import PEOPLE, CallBench
 from tests.ingest.notify.test_restarts import Hands
 
 TOPIC = "quay/answers"
-CODE = re.compile(r"[a-z]+\.[0-9]+\.[0-9]+\.[a-z2-7]{23}")
+CODE = re.compile(r"[a-z]+\.[0-9]+\.[0-9]+\.[a-z2-7]{32}")
 
 
 def people(port: int) -> str:

@@ -31,10 +31,10 @@ def test_a_code_names_what_it_was_made_for(person, call_out, call, minutes):
 def test_the_seal_is_the_standard_librarys_hmac():
     text = written(CODE, KEY)
     minute = (CODE.expires_at_us // 60_000_000).to_bytes(4, "big")
-    expected = hmac.new(KEY, b"ana|1042|3|" + minute, hashlib.sha256).digest()[:10]
+    expected = hmac.new(KEY, b"ana|1042|3|" + minute, hashlib.sha256).digest()[:16]
     import base64
 
-    assert base64.b32decode(text.split(".")[3].upper() + "=") == minute + expected
+    assert base64.b32decode(text.split(".")[3].upper()) == minute + expected
 
 
 @pytest.mark.parametrize("place", range(3))
@@ -46,11 +46,11 @@ def test_another_person_call_out_or_call_is_not_believed(place):
     assert caught.value.reason == "wrong_seal"
 
 
-@given(st.integers(0, 22), st.sampled_from("abcdefghijklmnopqrstuvwxyz234567"))
+@given(st.integers(0, 31), st.sampled_from("abcdefghijklmnopqrstuvwxyz234567"))
 def test_a_changed_letter_of_the_seal_is_not_believed(place, letter):
     text = written(CODE, KEY)
     seal = text.rpartition(".")[2]
-    if seal[place] == letter or place == 22:  # the last letter holds bits that mean nothing
+    if seal[place] == letter:
         return
     changed = f"{text.rpartition('.')[0]}.{seal[:place]}{letter}{seal[place + 1 :]}"
     with pytest.raises(CodeError):

@@ -16,7 +16,7 @@ from analysis.animal.stress import BAND_WORDS, DRIVER_WORDS, Band, Driver, Stres
 from analysis.arrays import MICROSECONDS_PER_SECOND
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
 
     from analysis.alarm.nearest import JudgedRows
     from analysis.arrays import FloatArray, IntArray
@@ -188,19 +188,28 @@ def stress_values(stress: Stress, index: int) -> dict[str, Any]:
     }
 
 
-def animal_body(roster: AnimalRoster, state: AnimalState, row: int) -> dict[str, Any]:
-    """Return what the chain remembers of the animals of one row as plain JSON data."""
-    latest = {name: _number(getattr(state.latest, name)[row]) for name in _STRESS_NAMES}
-    return {
-        "cohort": roster.cohorts[row],
-        "state": state.cohorts.take(np.array([row])).to_dicts()[0],
-        "latest": latest,
-        "recorded_us": int(state.recorded_us[row]),
-    }
+def animal_bodies(roster: AnimalRoster, state: AnimalState, rows: Sequence[int]) -> list[dict[str, Any]]:
+    """Return what the chain remembers of the animals of *rows*, each as plain JSON data.
+
+    All rows are taken out of the arrays at once: this runs for every block.
+    """
+    index = np.asarray(rows, dtype=np.int64)
+    columns = [getattr(state.latest, name)[index].tolist() for name in _STRESS_NAMES]
+    latest = [
+        {name: None if value != value else value for name, value in zip(_STRESS_NAMES, values, strict=True)}
+        for values in zip(*columns, strict=True)
+    ]
+    minds = zip(
+        index.tolist(), state.cohorts.take(index).to_dicts(), latest, state.recorded_us[index].tolist(), strict=True
+    )
+    return [
+        {"cohort": roster.cohorts[row], "state": own, "latest": felt, "recorded_us": recorded}
+        for row, own, felt, recorded in minds
+    ]
 
 
 def restored_animals(roster: AnimalRoster, bodies: Mapping[str, Mapping[str, Any]]) -> AnimalState:
-    """Return the state kept with `animal_body`, by the cohorts' ids; a cohort that came since starts fresh."""
+    """Return the state kept with `animal_bodies`, by the cohorts' ids; a cohort that came since starts fresh."""
     state = fresh_animals(roster)
     for row, cohort_id in enumerate(roster.cohorts):
         body = bodies.get(cohort_id)

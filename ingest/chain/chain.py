@@ -325,7 +325,7 @@ def restored_state(
     lives: Mapping[str, Mapping[str, Any]],
     alarms: Mapping[tuple[ConditionKind, int], AlarmState],
 ) -> ChainState:
-    """Return the state that was kept with `tank_bodies`, by the tanks' ids, and `animal_body`, by the cohorts', and the alarms.
+    """Return the state that was kept with `tank_bodies`, by the tanks' ids, and `animal_bodies`, by the cohorts', and the alarms.
 
     Restoring fires nothing. Sensors, tanks and cohorts that are gone are left out; new ones start fresh.
     """

@@ -9,7 +9,7 @@ import numpy as np
 from analysis.alarm.state import name_of, state_to_dict
 from analysis.alarm.transition import transition_to_dict
 from analysis.flags import Flag
-from ingest.chain.animals import animal_body
+from ingest.chain.animals import animal_bodies
 from ingest.chain.chain import tank_bodies
 from ingest.store.alarms import AlarmRow
 from ingest.store.amendments import AmendmentRow
@@ -138,12 +138,12 @@ def tank_states(plant: Plant, state: ChainState, tanks: Sequence[int]) -> list[T
 
 def animal_states(plant: Plant, state: ChainState, rows: Sequence[int]) -> list[AnimalRow]:
     """Return what the chain remembers of the animals of *rows* of the roster as rows of the store."""
-    found = []
-    for row in rows:
-        body = animal_body(plant.animals, state.animals, row)
-        number = int(plant.numbers.tank[plant.animals.tanks[row]])
-        found.append(AnimalRow(body["cohort"], number, body["state"]["updated_at_us"], body))
-    return found
+    tanks = plant.numbers.tank[plant.animals.tanks[np.asarray(rows, dtype=np.int64)]].tolist()
+    bodies = animal_bodies(plant.animals, state.animals, rows)
+    return [
+        AnimalRow(body["cohort"], tank, body["state"]["updated_at_us"], body)
+        for body, tank in zip(bodies, tanks, strict=True)
+    ]
 
 
 def stress_rows(plant: Plant, output: ChainOutput) -> list[StressRow]:

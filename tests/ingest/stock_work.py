@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from ingest.chain.animals import animal_body
+from ingest.chain.animals import animal_bodies
 from ingest.store.cohorts import CohortRow, read_all
 from ingest.store.inbox import Command, Inbox
 from ingest.store.queries import Outcome
@@ -49,13 +49,15 @@ def live(bench: Bench, cohort: str) -> dict[str, Any]:
     animals = bench.worker.plant.animals
     row = animals.row_of[cohort]
     tank = bench.worker.plant.tanks.tanks[animals.tanks[row]]
-    return {**animal_body(animals, bench.worker.state.animals, row)["state"], "tank": tank}
+    [body] = animal_bodies(animals, bench.worker.state.animals, [row])
+    return {**body["state"], "tank": tank}
 
 
 def memory(bench: Bench) -> dict[str, Any]:
     """Return all that the chain remembers of the animals, by cohort."""
     animals, state = bench.worker.plant.animals, bench.worker.state.animals
-    found = {cohort: animal_body(animals, state, row) for row, cohort in enumerate(animals.cohorts)}
+    bodies = animal_bodies(animals, state, range(len(animals.cohorts)))
+    found = {body["cohort"]: body for body in bodies}
     return json.loads(json.dumps(found)) | {"tanks": animals.tanks.tolist()}
 
 

@@ -82,7 +82,7 @@ def upsert_latest(
     """Make the rows at the indices *chosen* the newest of their sensors, each with the state of its sensor.
 
     *newest_at* is the newest measured time that was admitted of each (empty: that of the row). It never falls, also where a clock that
-    steps     back makes an older reading the one to be shown: by it, readings that are stored already are known.
+    steps back makes an older reading the one to be shown: by it, readings that are stored already are known.
     """
     columns = [getattr(rows, name)[chosen].tolist() for name in _LATEST_COLUMNS]
     connection.executemany(

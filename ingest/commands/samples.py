@@ -118,9 +118,7 @@ def _blood(row: CohortRow, entry: BloodEntry, command: Command, context: Context
     felt = context.stock_book.felt_near(row.id, at_us)
     states: dict[str, CohortState] = {}
     if value.is_usable and stage is not None:
-        after = _reset(
-            context.stock_book.state(row.id, at_us=context.now_us), value, stage, felt, at_us, context.now_us
-        )
+        after = _reset(context.stock_book.live_state(row.id), value, stage, felt, at_us, context.now_us)
         states = {} if after is None else {row.id: after}
     body = {
         **msgspec.to_builtins(entry),

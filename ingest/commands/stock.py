@@ -18,6 +18,16 @@ from analysis.animal import cohort as herd
 from analysis.animal.osmoregulation import StageArrays, steady_internal
 from analysis.errors import InvalidInputError
 from ingest.commands.ruling import Ruling
+from ingest.commands.stock_entries import (
+    CountEntry,
+    DeadEntry,
+    HarvestEntry,
+    JoinEntry,
+    MoveEntry,
+    ReceiveEntry,
+    SplitEntry,
+    StageEntry,
+)
 from ingest.site.section import SLUG_LENGTH, SLUG_PATTERN
 from ingest.store import cohorts
 from ingest.store.block import Occurrence
@@ -29,6 +39,7 @@ if TYPE_CHECKING:
     from analysis.animal.osmoregulation import CohortState
     from ingest.commands.context import Context
     from ingest.commands.stock_book import StockBook
+    from ingest.commands.stock_entries import Entry
     from ingest.store.cohorts import CohortRow
     from ingest.store.inbox import Command
 
@@ -54,83 +65,6 @@ NEEDED_ROLE = {
 
 MOST_ANIMALS = 10_000_000_000
 LARGEST_SALINITY = 300.0
-
-
-class _Entry(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """What every entry may hold. Without `at_us` it happened now."""
-
-    at_us: int | None = None
-    note: str = ""
-
-
-class ReceiveEntry(_Entry, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """Animals that came. What nobody knows is left out.
-
-    `used_to_salinity` is that of the water they lived in (practical salinity in seawater, g/kg in other waters) and
-    `used_for_h` for how long; `from_water` names it; the rest tells of the transport. Dates in us UTC.
-    """
-
-    tank: str
-    animal: str
-    number: int
-    name: str | None = None
-    from_water: str = ""
-    used_to_salinity: float | None = None
-    used_for_h: float | None = None
-    temperature_degC: float | None = None
-    hours_packed: float | None = None
-    density_per_L: float | None = None
-    ph: float | None = None
-    hatched_at: int | None = None
-    metamorphosed_at: int | None = None
-
-
-class MoveEntry(_Entry, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """All animals went to another tank."""
-
-    to_tank: str
-
-
-class SplitEntry(_Entry, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """Some animals became a cohort of their own; `to_tank` may be the tank in which they are."""
-
-    new_id: str
-    to_tank: str
-    number: int
-    name: str | None = None
-
-
-class JoinEntry(_Entry, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """Another cohort was put to this one, into this one's tank, and ends."""
-
-    other: str
-
-
-class CountEntry(_Entry, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """The number alive was counted."""
-
-    number: int
-
-
-class DeadEntry(_Entry, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """Dead animals were taken out; `from_us` is since when they died, where somebody knows better than "since the count before"."""
-
-    number: int
-    from_us: int | None = None
-
-
-class HarvestEntry(_Entry, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """Living animals left the site; without a number all."""
-
-    number: int | None = None
-
-
-class StageEntry(_Entry, frozen=True, kw_only=True, forbid_unknown_fields=True):
-    """The stage that a person saw. Confirming the present one declines what age proposes. Dates in us UTC."""
-
-    animal: str
-    hatched_at: int | None = None
-    metamorphosed_at: int | None = None
 
 
 class RefusedError(Exception):
@@ -263,8 +197,8 @@ def _split(row: CohortRow, entry: SplitEntry, at_us: int, command: Command, cont
         "new_name": entry.name,
     }
     # Those that stay are where they were: what the chain knows of them now is right as it is.
-    state = context.stock_book.state(row.id, at_us=context.now_us) if new.tank == row.tank else None
-    states = {new.id: _there(new, at_us, context) if state is None else state}
+    stays = new.tank == row.tank
+    states = {new.id: context.stock_book.live_state(row.id) if stays else _there(new, at_us, context)}
     return _entered(cohorts.SPLIT, row.id, at_us, _noted(body, entry), states, command, context)
 
 
@@ -395,7 +329,7 @@ def _entered(
     return Ruling("applied", occurrences=(Occurrence(event),))
 
 
-def _noted(body: Mapping[str, Any], entry: _Entry) -> dict[str, Any]:
+def _noted(body: Mapping[str, Any], entry: Entry) -> dict[str, Any]:
     return {**body, "note": entry.note} if entry.note else dict(body)
 
 

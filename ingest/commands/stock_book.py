@@ -38,6 +38,10 @@ class StockBook(Protocol):
         """Return what the chain knows of a cohort at a moment, of one element: from its record where the moment is past."""
         ...
 
+    def live_state(self, cohort_id: str) -> CohortState:
+        """Return what the chain knows of a cohort as its last reading left it, of one element."""
+        ...
+
     def after_coming(self, state: CohortState, stage: Stage, *, tank: str, at_us: int) -> CohortState:
         """Return the state of animals that came into a tank at a moment, after all that was measured there since."""
         ...

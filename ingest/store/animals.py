@@ -54,6 +54,8 @@ class AnimalSight:
         Tank, stage, number, dates, what was noted; `event_id` is what a command on it is to expect.
     stage : Stage or None
         The confirmed stage with the site's own figures; None if no table knows it.
+    governing : Stage or None
+        What holds: the confirmed stage, on each side made stricter by the proposed one.
     proposed : str or None
         The stage to which its age points and that nobody has confirmed; until then the stricter figures govern.
     measured_at : int or None
@@ -83,6 +85,7 @@ class AnimalSight:
 
     cohort: CohortRow
     stage: Stage | None
+    governing: Stage | None
     proposed: str | None
     measured_at: int | None
     stress: float
@@ -146,6 +149,7 @@ def _sight(
     return AnimalSight(
         cohort=row,
         stage=confirmed,
+        governing=governed,
         proposed=proposed,
         measured_at=state.get("updated_at_us"),
         stress=stress,

@@ -73,15 +73,12 @@ class StockBook:
 
     def state(self, cohort_id: str, *, at_us: int) -> CohortState:
         """Return what the chain knows of a cohort at a moment, of one element: from its record where the moment is past."""
+        live = self.live_state(cohort_id)
         row = self.plant.animals.row_of.get(cohort_id)
         if row is None:
-            # In a tank that the site file has no more, or of a stage that no table knows: as it was when last seen.
-            body = restoring.animal_bodies(self._connection).get(cohort_id)
-            return CohortState.unknown(1) if body is None else CohortState.from_dicts([body["state"]])
-        index = np.array([row])
-        live = self.state_of_chain.animals.cohorts.take(index)
+            return live
         if live.updated_at_us[0] <= at_us:
-            return brought_to(self.plant.animals.figures.take(index), live, at_us)
+            return brought_to(self.plant.animals.figures.take(np.array([row])), live, at_us)
         felt = self.felt_near(cohort_id, at_us)
         if felt is None:
             return live
@@ -93,6 +90,15 @@ class StockBook:
             # Beyond the published median the strain says no more how far.
             exposure=live.exposure if np.isnan(exposure) else np.array([exposure]),
         )
+
+    def live_state(self, cohort_id: str) -> CohortState:
+        """Return what the chain knows of a cohort as its last reading left it, of one element."""
+        row = self.plant.animals.row_of.get(cohort_id)
+        if row is not None:
+            return self.state_of_chain.animals.cohorts.take(np.array([row]))
+        # In a tank that the site file has no more, or of a stage that no table knows: as it was when last seen.
+        body = restoring.animal_bodies(self._connection).get(cohort_id)
+        return CohortState.unknown(1) if body is None else CohortState.from_dicts([body["state"]])
 
     def after_coming(self, state: CohortState, stage: Stage, *, tank: str, at_us: int) -> CohortState:
         """Return the state of animals that came into a tank at a moment, after all that was measured there since."""

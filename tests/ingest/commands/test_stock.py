@@ -145,6 +145,15 @@ def test_a_split_and_a_join_balance_and_mix(bench):
     assert not table(bench, "SELECT * FROM animal_state WHERE cohort = 'n1'")
 
 
+def test_animals_parted_in_their_own_tank_stay_the_same(bench):
+    read_for(bench, 10, salinity={"s0": 29.0})
+    bench.clock.advance(45.0)
+    assert do(bench, "stock.split", new_id="b2", to_tank="t0", number=500).outcome == "applied"
+    assert live(bench, "b2") == live(bench, "b0")
+    read_for(bench, 10, salinity={"s0": 24.0})
+    assert live(bench, "b2") == live(bench, "b0")
+
+
 def test_an_emptied_tank_feels_nothing_and_its_limits_are_those_of_the_water_alone(bench):
     read_for(bench, 2, salinity={"s0": 31.0, "s1": 31.0})
     assert do(bench, "stock.harvest", number=79_990).outcome == "applied"

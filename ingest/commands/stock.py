@@ -231,7 +231,7 @@ def _counted(row: CohortRow, entry: CountEntry, at_us: int, command: Command, co
 
 
 def _died(row: CohortRow, entry: DeadEntry, at_us: int, command: Command, context: Context) -> Ruling:
-    from_us = row.changed_at if entry.from_us is None else entry.from_us
+    from_us = row.body.get("counted_at", row.since) if entry.from_us is None else entry.from_us
     if not 0 <= from_us <= at_us:
         raise RefusedError("unusable_details")
     [after] = herd.after(_cohort(row, at_us, context), herd.Died(at_us, entry.number))

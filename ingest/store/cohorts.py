@@ -56,7 +56,7 @@ class CohortRow(NamedTuple):
     event_id, changed_at : int
         The newest event that tells of it, and of what moment. [us UTC]
     body : dict
-        `used_to_salinity` and what else was noted when it came, `name`, `in_tank_since`, `hatched_at`, `metamorphosed_at`,
+        `used_to_salinity` and what else was noted when it came, `name`, `in_tank_since`, `counted_at`, `hatched_at`, `metamorphosed_at`,
         `proposed` (stage, age_d, developed_d, since), `declined`, `split_from`, `joined_to`.
     """
 
@@ -112,7 +112,7 @@ def projected(known: Mapping[str, CohortRow], event: Event, *, event_id: int) ->
             None,
             event_id,
             at_us,
-            kept | {"in_tank_since": at_us},
+            kept | {"in_tank_since": at_us, "counted_at": at_us},
         )
         return (row,)
     if not event.kind.startswith(PREFIX) or body.get("cohort") not in known:
@@ -143,6 +143,8 @@ def projected(known: Mapping[str, CohortRow], event: Event, *, event_id: int) ->
         dates = {name: body[name] for name in ("hatched_at", "metamorphosed_at") if body.get(name) is not None}
         notes = row.body | dates | {"proposed": None, "declined": body.get("declined")}
         return (row._replace(animal=body["animal"], body=notes),)
+    if event.kind in (COUNTED, DIED):
+        return (row._replace(body=row.body | {"counted_at": at_us}),)
     return (row,)
 
 

@@ -58,7 +58,8 @@ def memory(bench: Bench) -> dict[str, Any]:
     animals, state = bench.worker.plant.animals, bench.worker.state.animals
     bodies = animal_bodies(animals, state, range(len(animals.cohorts)))
     found = {body["cohort"]: body for body in bodies}
-    return json.loads(json.dumps(found)) | {"tanks": animals.tanks.tolist()}
+    copied: dict[str, Any] = json.loads(json.dumps(found))
+    return copied | {"tanks": animals.tanks.tolist()}
 
 
 def read_for(

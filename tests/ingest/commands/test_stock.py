@@ -311,6 +311,19 @@ def test_what_cannot_be_is_refused_and_leaves_nothing(bench, reason, kind, cohor
     assert len(bench.queries.events(kind_prefix="stock.")) == 2
 
 
+def test_the_dead_are_those_since_the_count_before_whatever_else_happened(bench):
+    counted_at = bench.clock.now_us()
+    do(bench, "stock.count", number=79_990)
+    bench.clock.advance(86_400.0)
+    do(bench, "stock.move", to_tank="t1")
+    bench.clock.advance(60.0)
+    do(bench, "stock.remove_dead", number=80)
+    do(bench, "stock.remove_dead", number=8, from_us=bench.clock.now_us() - 5 * MINUTE_US)
+    first, second = (event.body for _, event in bench.queries.events(kind_prefix="stock.died"))
+    assert (first["from_us"], first["number_before"], first["number"]) == (counted_at, 79_990, 79_910)
+    assert second["from_us"] == bench.clock.now_us() - 5 * MINUTE_US
+
+
 def test_two_stages_are_never_joined(bench):
     do(bench, "stock.receive", "n1", **NEWCOMERS | {"animal": "penaeus-vannamei/pl1-pl2"})
     assert do(bench, "stock.join", "b0", other="n1").reason == "another_stage"

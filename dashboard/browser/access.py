@@ -202,6 +202,7 @@ class Access:
         alive = queries.meta().get("alive_at")
         trust = Trust(
             uncertainties=latest_uncertainties(site, what.kinds, latest),
+            channels=self._keep("channels", TREND_S, lambda: queries.latest_channels(since_us=now_us - HOUR_US)),
             health=self._keep("health", SLOW_S, queries.sensor_health),
         )
         tanks = tank_sights(what, latest=latest, alarms=present, days=days, stress=stress, now_us=now_us, trust=trust)

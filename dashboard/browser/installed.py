@@ -9,7 +9,8 @@ from typing import TYPE_CHECKING
 from analysis.animal.fallbacks import resolved
 from analysis.animal.tables import load
 from analysis.errors import EuryhaleError
-from dashboard.browser.sights import Animals, Band, SpeciesLimit
+from analysis.water.ionic_ratios import verdicts
+from dashboard.browser.sights import Animals, Band, ShortOf, SpeciesLimit
 from ingest.chain.animal_roster import Stocked, animal_roster
 from ingest.chain.roster import roster
 from ingest.chain.tanks import tank_roster
@@ -23,6 +24,7 @@ if TYPE_CHECKING:
     from analysis.animal.stage import Stage
     from analysis.water.properties import WaterKind
     from ingest.site.models import Site
+    from ingest.site.waters import Analysis
     from ingest.store.queries import Cohort
 
 
@@ -36,6 +38,8 @@ class Installed:
     temperature: Mapping[str, Band]
     animals: Mapping[str, Animals]
     stale_after_s: Mapping[str, float]
+    short_of: Mapping[str, tuple[ShortOf, ...]]
+    """What analysed waters are short of, by the id of the analysis."""
 
 
 def installed(site: Site, cohorts: tuple[Cohort, ...], *, tables: Path) -> Installed:
@@ -63,7 +67,17 @@ def installed(site: Site, cohorts: tuple[Cohort, ...], *, tables: Path) -> Insta
             found = _animals(stock, numbers.get(stock.cohort), stages.stages[i], kinds[tank.water])
             animals[tank.id] = replace(found, further=len(here) - 1)
     stale = {sensors.sensors[w]: float(us) / 1e6 for w, us in zip(tanks.watchers, tanks.stale_after_us, strict=True)}
-    return Installed(site, kinds, salinity, temperature, animals, stale)
+    short_of = {analysis.id: _short_of(analysis) for analysis in site.analyses}
+    return Installed(site, kinds, salinity, temperature, animals, stale, short_of)
+
+
+def _short_of(analysis: Analysis) -> tuple[ShortOf, ...]:
+    """Return the published thresholds that a laboratory analysis crosses."""
+    return tuple(
+        ShortOf(one.threshold.quantity, one.found, one.threshold.limit, one.threshold.is_upper, one.threshold.source)
+        for one in verdicts(analysis.ion_analysis())
+        if one.is_crossed
+    )
 
 
 def stocked_tanks(site: Site, cohorts: tuple[Cohort, ...]) -> dict[str, list[Stocked]]:

@@ -7,6 +7,7 @@ from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING
 
 from analysis.alarm.set_point import HALF_WIDTH
+from dashboard.browser.beside import beside
 from dashboard.browser.installed import Installed, blood_at_rest
 from dashboard.browser.sights import (
     NO_DAY,
@@ -22,11 +23,13 @@ from ingest.words.alarms import QUANTITY_OF_CODE, AlarmFacts
 if TYPE_CHECKING:
     from collections.abc import Mapping
 
+    from dashboard.browser.sights import Beside
     from ingest.chain.uncertainty import ReadingUncertainty
     from ingest.site.sensors import Sensor
+    from ingest.site.tanks import Tank
     from ingest.store.alarms import AlarmRow
     from ingest.store.calibrations import HealthRow
-    from ingest.store.queries import Latest, LatestStress
+    from ingest.store.queries import Latest, LatestChannel, LatestStress
 
 STALE_INTERVALS = 3.0
 
@@ -40,6 +43,7 @@ class Trust:
     """What is known of the sensors besides their readings, by the sensor's id."""
 
     uncertainties: Mapping[str, ReadingUncertainty] = field(default_factory=dict)
+    channels: Mapping[str, Mapping[str, LatestChannel]] = field(default_factory=dict)
     health: Mapping[str, HealthRow] = field(default_factory=dict)
 
 
@@ -150,6 +154,7 @@ def tank_sights(
                 alarms=tuple(by_subject.get(f"tank/{tank.id}", ())),
                 day=days.get(shown.id, NO_DAY) if shown is not None else NO_DAY,
                 is_unwatched=shown is None or not (shown.is_fresh(now_us) and shown.is_believable),
+                beside=_beside(what, tank, shown, trust),
             )
         )
     return tuple(sights)
@@ -192,3 +197,13 @@ def _stress(felt: LatestStress | None) -> StressSight | None:
         driver=felt.driver or "",
         gap_mOsm_kg=_number(felt.gap_mOsm_kg),
     )
+
+
+def _beside(what: Installed, tank: Tank, shown: SensorSight | None, trust: Trust) -> Beside:
+    units: dict[str, str] = {}
+    values: dict[str, LatestChannel] = {}
+    for sensor in what.site.sensors_of_tank(tank.id):
+        units |= {name: channel.unit for name, channel in sensor.channels.items()}
+        values |= trust.channels.get(sensor.id, {})
+    short_of = what.short_of.get(tank.water, ())
+    return beside(shown, water=tank.water, units=units, channels=values, short_of=short_of)

@@ -166,6 +166,33 @@ NO_DAY = DayLine(np.empty(0), np.empty(0))
 
 
 @dataclass(frozen=True, slots=True)
+class ShortOf:
+    """One published threshold that an analysed water crosses: quantity (an ion in mg/L, or a ratio), found, limit, source."""
+
+    quantity: str
+    found: float
+    limit: float
+    is_upper: bool
+    source: str
+
+
+@dataclass(frozen=True, slots=True)
+class Beside:
+    """What stands beside the stress because the stress does not see it; NaN where no channel says it."""
+
+    is_osmotic_part_only: bool = False
+    """In water not shown to be like sea water in K, Mg and Ca."""
+    oxygen_mg_L: float = math.nan
+    oxygen_saturation_percent: float = math.nan
+    unionised_ammonia_mg_L: float = math.nan
+    """As nitrogen."""
+    chloride_to_nitrite: float = math.nan
+    """By mass."""
+    short_of: tuple[ShortOf, ...] = ()
+    """Published thresholds that the laboratory analysis of this water crosses."""
+
+
+@dataclass(frozen=True, slots=True)
 class TankSight:
     """One tank with all that is known about it now."""
 
@@ -185,6 +212,7 @@ class TankSight:
     alarms: tuple[AlarmSight, ...]
     day: DayLine
     is_unwatched: bool
+    beside: Beside = Beside()
 
     @property
     def salinity_kind(self) -> str:

@@ -9,7 +9,18 @@ import msgspec
 import numpy as np
 
 from analysis.animal.stress import BAND_WORDS, DRIVER_WORDS, Band, Driver
-from ingest.store import alarms, amendments, animals, calibrations, corrected, ledger, registry, rollups, samples
+from ingest.store import (
+    alarms,
+    amendments,
+    animals,
+    calibrations,
+    corrected,
+    ledger,
+    plans,
+    registry,
+    rollups,
+    samples,
+)
 from ingest.store.connection import reader
 from ingest.store.lock import is_held
 from ingest.store.store import store_path
@@ -26,6 +37,7 @@ if TYPE_CHECKING:
     from ingest.store.calibrations import HealthRow, KeptService, PeriodOfRecord
     from ingest.store.corrected import JobState
     from ingest.store.ledger import Event
+    from ingest.store.plans import TankPlan
     from ingest.store.samples import AnimalSample
 
 HOUR_US = 3_600_000_000
@@ -54,6 +66,14 @@ class Latest:
     osmolality_mOsm_kg: float | None
     flags: int
     quality: int
+
+
+@dataclass(frozen=True, slots=True)
+class LatestChannel:
+    """The newest value of a further channel, in its declared unit; None where it was unusable."""
+
+    measured_at: int
+    value: float | None
 
 
 @dataclass(frozen=True, slots=True)
@@ -288,6 +308,19 @@ class Queries:
         found = {row["cohort"]: _latest_stress(row["slug"], msgspec.json.decode(row["body"])) for row in rows}
         return {cohort: felt for cohort, felt in found.items() if felt.measured_at >= since_us}
 
+    def latest_channels(self, *, since_us: int) -> dict[str, dict[str, LatestChannel]]:
+        """Return the newest value of each further channel measured since *since_us*, by the sensor's id and the channel."""
+        with reader(self._path) as connection:
+            rows = connection.execute(
+                "SELECT slug, channel, max(measured_at) AS measured_at, value FROM channel_reading"
+                " JOIN sensor ON sensor.id = channel_reading.sensor WHERE measured_at >= ? GROUP BY sensor, channel",
+                (since_us,),
+            ).fetchall()
+        found: dict[str, dict[str, LatestChannel]] = {}
+        for row in rows:
+            found.setdefault(row["slug"], {})[row["channel"]] = LatestChannel(row["measured_at"], row["value"])
+        return found
+
     def alarms(self) -> list[AlarmRow]:
         """Return where every alarm that ever was stands now."""
         with reader(self._path) as connection:
@@ -339,6 +372,11 @@ class Queries:
         """Return values of body fluid and stress tests of postlarvae, of one cohort or of all, oldest first."""
         with reader(self._path) as connection:
             return samples.read(connection, cohort=cohort, since_us=since_us)
+
+    def plans(self) -> list[TankPlan]:
+        """Return the acclimation plans of all tanks in the order in which they were started, those that have ended too."""
+        with reader(self._path) as connection:
+            return plans.read_all(connection)
 
     def foresight(self, cohort: str) -> Foresight:
         """Return how the losses of a cohort and its stress before them went together."""

@@ -154,7 +154,40 @@ def _feel(tank: TankSight, visit: Visit) -> str:
         if key
         else ""
     )
-    return _panel("feel", visit.text("feel"), f"{drawn}<p>{escape(label)}</p>{note}{figures}")
+    return _panel("feel", visit.text("feel"), f"{drawn}<p>{escape(label)}</p>{note}{_beside(tank, visit)}{figures}")
+
+
+def _beside(tank: TankSight, visit: Visit) -> str:
+    """Return what the stress does not see; in water that is not of the sea the stress is said to be a part only."""
+    found, language = tank.beside, visit.language
+    lines = []
+    if math.isfinite(found.oxygen_saturation_percent):
+        share = numbers.quantity(found.oxygen_saturation_percent, "percent", language=language)
+        lines.append(
+            visit.text("beside_oxygen", share=share, value=numbers.number(found.oxygen_mg_L, 1, language=language))
+        )
+    if math.isfinite(found.unionised_ammonia_mg_L):
+        value = numbers.number(found.unionised_ammonia_mg_L, 3, language=language)
+        lines.append(visit.text("beside_ammonia", value=value))
+    if math.isfinite(found.chloride_to_nitrite):
+        lines.append(
+            visit.text("beside_nitrite", value=numbers.number(found.chloride_to_nitrite, 0, language=language))
+        )
+    for short in found.short_of:
+        key = "short_of_upper" if short.is_upper else "short_of_lower"
+        lines.append(
+            visit.text(
+                key,
+                quantity=short.quantity.removesuffix("_mg_L_CaCO3"),
+                found=numbers.number(short.found, 1, language=language),
+                limit=numbers.plain(short.limit, language=language),
+                source=short.source,
+            )
+        )
+    text = "".join(f"<p>{line}</p>" for line in lines)
+    if found.is_osmotic_part_only and tank.animals is not None:
+        text += f'<p class="source">{visit.text("osmotic_part_only")}</p>'
+    return text
 
 
 def _figures(tank: TankSight, visit: Visit) -> list[str]:

@@ -88,8 +88,11 @@ def stocked_tanks(site: Site, cohorts: tuple[Cohort, ...]) -> dict[str, list[Sto
     found: dict[str, list[Stocked]] = {}
     for cohort in sorted(cohorts, key=lambda c: (c.since, c.id)):
         if cohort.tank is not None and cohort.ended_at is None:
-            used_to = float(cohort.body.get("used_to_salinity", math.nan))
-            found.setdefault(cohort.tank, []).append(Stocked(cohort.id, cohort.animal, used_to))
+            used_to = cohort.body.get("used_to_salinity")
+            proposed = cohort.body.get("proposed")
+            stage = None if proposed is None else str(proposed["stage"])
+            salinity = math.nan if used_to is None else float(used_to)
+            found.setdefault(cohort.tank, []).append(Stocked(cohort.id, cohort.animal, salinity, stage))
     return found
 
 

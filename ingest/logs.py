@@ -4,9 +4,19 @@ from __future__ import annotations
 
 import logging
 import sys
-from typing import Any
+from typing import Any, TextIO, cast
 
 import structlog
+
+
+class _StandardError:
+    """Standard error as it is at the moment of writing: a logger lives longer than a redirection of it."""
+
+    def write(self, text: str) -> int:
+        return sys.stderr.write(text)
+
+    def flush(self) -> None:
+        sys.stderr.flush()
 
 
 def set_up(*, level: int = logging.INFO) -> None:
@@ -22,6 +32,6 @@ def set_up(*, level: int = logging.INFO) -> None:
             renderer,
         ],
         wrapper_class=structlog.make_filtering_bound_logger(level),
-        logger_factory=structlog.PrintLoggerFactory(sys.stderr),
+        logger_factory=structlog.PrintLoggerFactory(cast("TextIO", _StandardError())),
         cache_logger_on_first_use=True,
     )

@@ -255,7 +255,7 @@ def judged(state: Followed, *, at: datetime) -> Followed:
         if state.progress is Progress.HALTED:
             return replace(state, why=why)
         return _noted(replace(state, progress=Progress.HALTED, why=why), at, "halted", "monitor", why)
-    if state.due is None and _has_arrived(state):
+    if state.due is None and has_arrived(state):
         return _noted(replace(state, progress=Progress.FINISHED, why=""), at, "finished", "monitor")
     progress, why = _progress(state, at)
     return replace(state, progress=progress, why=why)
@@ -273,7 +273,8 @@ def _halting_reason(state: Followed, at: datetime) -> str:
     return ""
 
 
-def _has_arrived(state: Followed) -> bool:
+def has_arrived(state: Followed) -> bool:
+    """Return whether the newest reading is at the target, as near as the plan is to come."""
     if state.last is None:
         return False
     target, tolerance = state.task.target.salinity, state.task.tolerance_salinity

@@ -28,6 +28,7 @@ if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
 
     from analysis.alarm.bank import AlarmBank
+    from analysis.alarm.conditions import ObservedBlock
     from analysis.alarm.events import Event
     from analysis.alarm.nearest import JudgedRows
     from analysis.alarm.state import AlarmState
@@ -274,6 +275,12 @@ def tick(tanks: TankRoster, state: ChainState, *, now_us: int, watching_since_us
         bank, seen = alarm_bank.observe(bank, block)
         due += seen
     return _output(state, replace(state, bank=bank), due, ())
+
+
+def told(state: ChainState, block: ObservedBlock) -> ChainOutput:
+    """Let observations happen that were made beside the chain, such as where plans stand."""
+    bank, outcomes = alarm_bank.observe(state.bank, block)
+    return _output(state, replace(state, bank=bank), outcomes, ())
 
 
 def act(state: ChainState, *, tank: int, kind: ConditionKind, event: Event, now_us: int) -> ChainOutput:

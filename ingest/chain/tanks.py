@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from typing import TYPE_CHECKING
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, NamedTuple
 
 import numpy as np
 
@@ -40,6 +40,18 @@ LIMIT_KINDS = (
 )
 
 
+class Kept(NamedTuple):
+    """At what the tanks are kept by the site file, and what their animals tolerate; one entry a tank, NaN where nothing is said."""
+
+    point: FloatArray
+    half_width: FloatArray
+    tide_low: FloatArray
+    tide_high: FloatArray
+    is_larva: BoolArray
+    tolerable: FloatArray
+    """Shape (tanks, 2)."""
+
+
 @dataclass(frozen=True, slots=True)
 class TankRoster:
     """What the chain needs to know of every tank, one entry a tank in the order of the site file.
@@ -57,6 +69,8 @@ class TankRoster:
     sensors_of : tuple of tuple of str
         Their ids.
     interval_us, stale_after_us : ndarray of int64, one per watcher
+    kept : Kept
+        From what the limits of salinity follow where no plan runs.
     salinity, temperature : SetPointBand
         Between which limits the water alarms.
     conditions : tuple of LimitCondition
@@ -73,6 +87,7 @@ class TankRoster:
     sensors_of: tuple[tuple[str, ...], ...]
     interval_us: IntArray
     stale_after_us: IntArray
+    kept: Kept
     salinity: SetPointBand
     temperature: SetPointBand
     dry_below: FloatArray
@@ -81,6 +96,20 @@ class TankRoster:
 
     def __len__(self) -> int:
         return len(self.tanks)
+
+    def under_plans(self, *, target: FloatArray, low: FloatArray, high: FloatArray) -> TankRoster:
+        """Return the same tanks with the salinities that plans bring.
+
+        Parameters
+        ----------
+        target : ndarray of float64, one per tank
+            What stands in the place of the site file's set point: where a plan has led; NaN: nothing.
+        low, high : ndarray of float64, one per tank
+            The band of the plan that runs; NaN: none. What the animals tolerate may tighten it, as it does a set point's band.
+        """
+        salinity, dry_below = _salinity(self.kept, target=target, low=low, high=high)
+        conditions = _conditions(salinity, self.temperature, dry_below)
+        return replace(self, salinity=salinity, dry_below=dry_below, conditions=conditions)
 
 
 def tank_roster(site: Site, roster: Roster, *, is_larva: BoolArray, tolerable: FloatArray) -> TankRoster:
@@ -100,21 +129,13 @@ def tank_roster(site: Site, roster: Roster, *, is_larva: BoolArray, tolerable: F
     watcher_of = np.full(len(roster), NO_TANK, dtype=np.int64)
     watcher_of[watchers] = np.arange(len(watchers))
     watchers_of = tuple(np.flatnonzero(roster.tank[watchers] == tank) for tank in range(len(site.tanks)))
-    point = _points(site, "salinity")
     tide = np.array([_tide(tank) for tank in site.tanks], dtype=np.float64).reshape(-1, 2)
-    salinity = salinity_band(
-        point,
-        is_larva=is_larva,
-        site_half_width=_points(site, "band"),
-        tidal_low=tide[:, 0],
-        tidal_high=tide[:, 1],
-        tolerable_low=tolerable[:, 0],
-        tolerable_high=tolerable[:, 1],
-    )
+    kept = Kept(_points(site, "salinity"), _points(site, "band"), tide[:, 0], tide[:, 1], is_larva, tolerable)
+    nothing = np.full(len(site.tanks), np.nan)
+    salinity, dry_below = _salinity(kept, target=nothing, low=nothing, high=nothing)
     temperature = temperature_band(_points(site, "temperature_degC"), half_width_K=_points(site, "temperature_band_K"))
-    dry_below = dry_limit(np.where(np.isnan(tide[:, 0]), point, tide[:, 0]))
     intervals = _intervals_s(site)
-    kinds = (*LIMIT_KINDS, ConditionKind.UNWATCHED, ConditionKind.SENSOR_CLOCK_WRONG)
+    kinds = (*LIMIT_KINDS, ConditionKind.UNWATCHED, ConditionKind.SENSOR_CLOCK_WRONG, ConditionKind.OFF_PLAN)
     return TankRoster(
         tanks=tuple(tank.id for tank in site.tanks),
         watchers=watchers,
@@ -130,12 +151,32 @@ def tank_roster(site: Site, roster: Roster, *, is_larva: BoolArray, tolerable: F
             ],
             dtype=np.int64,
         ),
+        kept=kept,
         salinity=salinity,
         temperature=temperature,
         dry_below=dry_below,
         conditions=_conditions(salinity, temperature, dry_below),
         rules={kind: tuple(first_rules(kind, interval_s=interval) for interval in intervals) for kind in kinds},
     )
+
+
+def _salinity(kept: Kept, *, target: FloatArray, low: FloatArray, high: FloatArray) -> tuple[SetPointBand, FloatArray]:
+    """Return between which salinities the tanks alarm, and below which nothing but air is at the probe."""
+    has_target, has_plan = ~np.isnan(target), ~np.isnan(low)
+    point = np.where(has_target, target, kept.point)
+    # The band of a plan is taken as that of a tide: water that is meant to move.
+    moving_low = np.where(has_plan, low, np.where(has_target, np.nan, kept.tide_low))
+    moving_high = np.where(has_plan, high, np.where(has_target, np.nan, kept.tide_high))
+    band = salinity_band(
+        point,
+        is_larva=kept.is_larva,
+        site_half_width=kept.half_width,
+        tidal_low=moving_low,
+        tidal_high=moving_high,
+        tolerable_low=kept.tolerable[:, 0],
+        tolerable_high=kept.tolerable[:, 1],
+    )
+    return band, dry_limit(np.where(np.isnan(moving_low), point, moving_low))
 
 
 def _conditions(salinity: SetPointBand, temperature: SetPointBand, dry_below: FloatArray) -> tuple[LimitCondition, ...]:

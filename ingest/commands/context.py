@@ -5,13 +5,15 @@ from __future__ import annotations
 from typing import TYPE_CHECKING, NamedTuple, Protocol
 
 if TYPE_CHECKING:
-    from analysis.alarm.events import Event
+    from analysis.alarm.events import Event as Act
     from analysis.alarm.transition import Transition
     from analysis.water.properties import WaterKind
     from ingest.chain.services import Service
     from ingest.commands.stock_book import StockBook
     from ingest.site.models import Site
     from ingest.store.block import Occurrence
+    from ingest.store.ledger import Event
+    from ingest.store.plans import TankPlan
 
 
 class Seen(NamedTuple):
@@ -32,7 +34,7 @@ class Context(Protocol):
         """The time of this ruling. [us UTC]"""
         ...
 
-    def act(self, subject: str, condition: str, event: Event) -> tuple[Transition, ...] | None:
+    def act(self, subject: str, condition: str, event: Act) -> tuple[Transition, ...] | None:
         """Put a person's act to an alarm; None if there is no such alarm."""
         ...
 
@@ -76,6 +78,18 @@ class Context(Protocol):
     @property
     def stock_book(self) -> StockBook:
         """The animals on the site."""
+        ...
+
+    def species_in(self, tank: str) -> str | None:
+        """Return the species in a tank, of several that which came last; None where none is known."""
+        ...
+
+    def plan(self, tank: str) -> TankPlan | None:
+        """Return the acclimation plan that runs on a tank, or that has led to what it is kept at; None if there is none."""
+        ...
+
+    def enter_plan(self, event: Event) -> None:
+        """Take an event of a plan up into the plans that are followed; it raises InvalidInputError where that cannot be."""
         ...
 
     @property

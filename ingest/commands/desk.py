@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import TYPE_CHECKING
 
-from ingest.commands import alarms, bench_sample, calibration, samples, stock
+from ingest.commands import alarms, bench_sample, calibration, plans, samples, stock
 from ingest.commands.roles import is_at_least, weaker
 from ingest.commands.ruling import Ruling
 
@@ -22,6 +22,7 @@ NEEDED_ROLE: dict[str, str] = {
     **bench_sample.NEEDED_ROLE,
     **stock.NEEDED_ROLE,
     **samples.NEEDED_ROLE,
+    **plans.NEEDED_ROLE,
     RELOAD: "manager",
 }
 """Which role each kind of command needs; what is not here is not known."""
@@ -37,6 +38,7 @@ _ROOMS: dict[str, Callable[[Command, Context], Ruling]] = {
     bench_sample.BY_HAND: bench_sample.rule,
     **dict.fromkeys(stock.NEEDED_ROLE, stock.rule),
     **dict.fromkeys(samples.NEEDED_ROLE, samples.rule),
+    **dict.fromkeys(plans.NEEDED_ROLE, plans.rule),
     RELOAD: _reload,
 }
 
@@ -53,7 +55,7 @@ def rule(command: Command, context: Context, *, roles: Mapping[str, str]) -> Rul
     roles : mapping of str to str
         The role of every person known here, by name. The role in the command can only make it weaker.
     """
-    needed = NEEDED_ROLE.get(command.kind)
+    needed = plans.needed_role(command) or NEEDED_ROLE.get(command.kind)
     if needed is None:
         return Ruling.refused("unknown_kind")
     if command.expires_at <= context.now_us:

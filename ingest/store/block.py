@@ -15,6 +15,7 @@ from ingest.store import (
     corrected,
     forwarding,
     ledger,
+    plans,
     readings,
     refused,
     registry,
@@ -31,6 +32,7 @@ if TYPE_CHECKING:
     from ingest.store.calibrations import PeriodRow, SampleRow, ServiceRow
     from ingest.store.corrected import JobRow
     from ingest.store.ledger import Event
+    from ingest.store.plans import TankPlan
     from ingest.store.readings import ReadingRows
     from ingest.store.refused import Refusal
 
@@ -149,6 +151,7 @@ class BlockCommit:
     animal_states: list[AnimalRow] = field(default_factory=list)
     pending_alarms: list[AlarmRow] = field(default_factory=list)
     occurrences: list[Occurrence] = field(default_factory=list)
+    plans: list[TankPlan] = field(default_factory=list)
     outcomes: list[OutcomeRow] = field(default_factory=list)
     forward: list[str] = field(default_factory=list)
     queued_at: int = 0
@@ -192,6 +195,7 @@ def write(connection: sqlite3.Connection, block: BlockCommit, *, rolled_until: i
     for row in block.pending_alarms:
         alarms.upsert(connection, row, event_id=None)
     event_ids = [_write_occurrence(connection, occurrence) for occurrence in block.occurrences]
+    plans.upsert(connection, block.plans)
     connection.executemany(
         "INSERT INTO command_outcome (id, kind, subject, actor, outcome, reason, decided_at, event_id)"
         " VALUES (?, ?, ?, ?, ?, ?, ?, ?)",

@@ -117,6 +117,10 @@ STORE: tuple[Migration, ...] = (
             " changed_at INTEGER NOT NULL, body TEXT NOT NULL) WITHOUT ROWID",
             "CREATE TABLE animal_sample (cohort TEXT NOT NULL, taken_at INTEGER NOT NULL, event_id INTEGER NOT NULL REFERENCES event(id),"
             " kind TEXT NOT NULL, actor TEXT NOT NULL, body TEXT NOT NULL, PRIMARY KEY (cohort, taken_at, event_id)) WITHOUT ROWID",
+            # An acclimation plan on a tank, with what the worker remembers of the water.
+            "CREATE TABLE plan (tank INTEGER NOT NULL REFERENCES tank(id), started_at INTEGER NOT NULL, ended_at INTEGER,"
+            " animal TEXT NOT NULL, progress TEXT NOT NULL, target REAL, updated_at INTEGER NOT NULL, body TEXT NOT NULL,"
+            " PRIMARY KEY (tank, started_at)) WITHOUT ROWID",
             # Work done on a sensor: a calibration or a cleaning. Of two rows of one moment the later event holds.
             "CREATE TABLE service (sensor INTEGER NOT NULL REFERENCES sensor(id), performed_at INTEGER NOT NULL,"
             " event_id INTEGER NOT NULL REFERENCES event(id), kind TEXT NOT NULL, actor TEXT NOT NULL, next_due INTEGER,"

@@ -11,7 +11,7 @@ from ingest.chain.chain import Happened, act
 from ingest.chain.water import uncompensated
 from ingest.clock import MICROSECONDS_PER_SECOND
 from ingest.commands.context import Seen
-from ingest.store import corrected, restoring
+from ingest.store import corrected, plans, restoring
 from ingest.worker.committing import occurrence
 from ingest.worker.registering import code_version
 from ingest.worker.stock_book import StockBook
@@ -19,13 +19,15 @@ from ingest.worker.stock_book import StockBook
 if TYPE_CHECKING:
     import sqlite3
 
-    from analysis.alarm.events import Event
+    from analysis.alarm.events import Event as Act
     from analysis.alarm.transition import Transition
     from analysis.water.properties import WaterKind
     from ingest.chain.chain import ChainState
     from ingest.chain.services import Service
     from ingest.site.models import Site
     from ingest.store.block import AnimalRow, Occurrence
+    from ingest.store.ledger import Event
+    from ingest.store.plans import TankPlan
     from ingest.worker.plant import Plant
 
 
@@ -43,13 +45,14 @@ class Bench:
         self.state = state
         self._now_us = now_us
         self._stock_book: StockBook | None = None
+        self.changed_plans: list[TankPlan] = []
 
     @property
     def now_us(self) -> int:
         """The time of this ruling. [us UTC]"""
         return self._now_us
 
-    def act(self, subject: str, condition: str, event: Event) -> tuple[Transition, ...] | None:
+    def act(self, subject: str, condition: str, event: Act) -> tuple[Transition, ...] | None:
         """Put a person's act to an alarm; None if there is no such alarm."""
         tank = self._plant.site.tank_index.get(subject.removeprefix("tank/"))
         kinds = {kind.value: kind for kind in self._plant.tanks.rules}
@@ -122,6 +125,21 @@ class Bench:
     def tank_number(self, tank: str) -> int:
         """Return the store's number of a tank."""
         return int(self._plant.numbers.tank[self._plant.site.tank_index[tank]])
+
+    def species_in(self, tank: str) -> str | None:
+        """Return the species in a tank, of several that which came last; None where none is known."""
+        stage = self._plant.animals.stages[self._plant.site.tank_index[tank]]
+        return None if stage is None else stage.id.partition("/")[0]
+
+    def plan(self, tank: str) -> TankPlan | None:
+        """Return the acclimation plan that runs on a tank, or that has led to what it is kept at; None if there is none."""
+        return self._plant.plans.get(tank)
+
+    def enter_plan(self, event: Event) -> None:
+        """Take an event of a plan up into the plans that are followed; it raises InvalidInputError where that cannot be."""
+        plan = plans.projected(self._plant.plans.get(event.subject.removeprefix("tank/")), event)
+        self._plant = self._plant.after_plans({**self._plant.plans, plan.tank: plan}, now_us=self._now_us)
+        self.changed_plans.append(plan)
 
     @property
     def derives_as(self) -> tuple[str, int]:

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING, Any
+
+import numpy as np
 
 from ingest.chain.animal_roster import animal_roster, known_stages
 from ingest.chain.calibrated import in_force
@@ -21,6 +23,7 @@ if TYPE_CHECKING:
     from pathlib import Path
 
     from analysis.animal.stage import Stage
+    from analysis.arrays import FloatArray
     from analysis.sensor.quality.thresholds import Thresholds
     from analysis.water.properties import WaterKind
     from ingest.chain.animal_roster import AnimalRoster, Stocked
@@ -28,6 +31,7 @@ if TYPE_CHECKING:
     from ingest.chain.services import Period, Service
     from ingest.chain.tanks import TankRoster
     from ingest.site.models import Site
+    from ingest.store.plans import TankPlan
     from ingest.worker.registering import Numbers
 
 
@@ -36,7 +40,8 @@ class Plant:
     """What is installed, in the forms in which the worker needs it.
 
     `stages` are the species tables with the site's own figures. `services` holds the work done on each sensor; `periods`
-    what it says of their records, where these are corrected.
+    what it says of their records, where these are corrected. `plans` holds for tanks the acclimation plan from which their
+    limits of salinity follow, `moved` those limits: target, low and high of every tank, NaN where no plan says anything.
     """
 
     site: Site
@@ -51,6 +56,8 @@ class Plant:
     stages: Mapping[str, Stage]
     services: Mapping[str, tuple[Service, ...]]
     periods: Mapping[str, tuple[Period, ...]]
+    plans: Mapping[str, TankPlan] = field(default_factory=dict)
+    moved: FloatArray | None = None
 
     def after_services(self, services: Mapping[str, tuple[Service, ...]], *, derivation: int) -> Plant:
         """Return the same plant after more work on its sensors.
@@ -80,7 +87,31 @@ class Plant:
         """
         animals = animal_roster(self.site, self.kinds, stocked, self.stages)
         tanks = tank_roster(self.site, self.roster, is_larva=animals.is_larva, tolerable=animals.tolerable_salinity)
-        return replace(self, animals=animals, tanks=tanks)
+        return replace(self, animals=animals, tanks=_moved(tanks, self.moved))
+
+    def after_plans(self, plans: Mapping[str, TankPlan], *, now_us: int) -> Plant:
+        """Return the same plant with other plans on its tanks, or at another time, and the limits that follow from them.
+
+        Parameters
+        ----------
+        plans : mapping of str to TankPlan
+            By the tank's id; those that have no say any more are let go.
+        now_us : int
+            [us UTC]
+        """
+        index = self.site.tank_index
+        plans = {tank: plan for tank, plan in plans.items() if plan.has_say and tank in index}
+        if not plans and self.moved is None:
+            return self
+        moved = np.full((3, len(self.tanks)), np.nan)
+        for tank, plan in plans.items():
+            moved[0, index[tank]] = plan.target
+            if plan.is_running:
+                band = plan.band(now_us)
+                moved[1:, index[tank]] = band.low, band.high
+        if self.moved is not None and np.array_equal(moved, self.moved, equal_nan=True):
+            return replace(self, plans=plans)
+        return replace(self, plans=plans, moved=moved, tanks=_moved(self.tanks, moved))
 
     @property
     def topics(self) -> tuple[str, ...]:
@@ -157,6 +188,10 @@ def plant(
         services=services,
         periods=_periods(site, services),
     )
+
+
+def _moved(tanks: TankRoster, moved: FloatArray | None) -> TankRoster:
+    return tanks if moved is None else tanks.under_plans(target=moved[0], low=moved[1], high=moved[2])
 
 
 def _periods(site: Site, services: Mapping[str, tuple[Service, ...]]) -> Mapping[str, tuple[Period, ...]]:

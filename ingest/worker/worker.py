@@ -15,14 +15,14 @@ from analysis.alarm.kinds import ConditionKind
 from analysis.errors import EuryhaleError
 from ingest.chain.admission import admit
 from ingest.chain.block import RawBlock
-from ingest.chain.chain import fresh_state, restored_state, run, tick
+from ingest.chain.chain import fresh_state, restored_state, run, tick, told
 from ingest.clock import MICROSECONDS_PER_SECOND, ReplayClock, SystemClock
 from ingest.commands import desk
 from ingest.commands.ruling import Ruling
 from ingest.mqtt import Access, Intake
 from ingest.secrets import read_secret
 from ingest.site.differences import differences
-from ingest.store import calibrations, registry, restoring
+from ingest.store import calibrations, plans, registry, restoring
 from ingest.store.block import BlockCommit, Occurrence
 from ingest.store.inbox import Inbox, InboxTaker
 from ingest.store.readings import as_sent
@@ -47,6 +47,7 @@ from ingest.worker.committing import (
     tank_states,
 )
 from ingest.worker.decoding import decode
+from ingest.worker.following import look, off_plan
 from ingest.worker.outgoing import Outgoing, outgoing
 from ingest.worker.plant import Plant, plant
 from ingest.worker.rederiving import Rederiver, late_jobs
@@ -76,6 +77,7 @@ IDLE_WAIT_S = 0.25
 """The inbox is looked into at least this often."""
 INBOX_EVERY_S = 0.2
 TICK_EVERY_S = 1.0
+FOLLOW_EVERY_S = 3.0
 HEARTBEAT_EVERY_S = 5.0
 ROLLUP_EVERY_S = 20.0
 ROLLUP_LAG_US = 5 * 60 * MICROSECONDS_PER_SECOND
@@ -322,6 +324,8 @@ class Worker:
 
     def tick(self, stop: threading.Event) -> None:
         """Let everything happen that time alone brings."""
+        if self._schedule.is_due("plans", FOLLOW_EVERY_S):
+            self.follow_plans(stop)
         overdue = self.plant.decoder.pairing.expired(self._clock.now_us())
         if overdue:
             self._take_in(overdue, BlockCommit(), stop)
@@ -332,6 +336,18 @@ class Worker:
             if not self._commit(self._with_output(BlockCommit(), output), stop):
                 return
             self.state = output.state
+
+    def follow_plans(self, stop: threading.Event) -> None:
+        """Hold every acclimation plan that runs against the newest readings of its tank."""
+        now_us = self._clock.now_us()
+        seen = look(self.plant, self.state, now_us=now_us)
+        output = told(self.state, off_plan(seen.plant, self.state, now_us=now_us))
+        if seen.changed or output.happened or output.pending:
+            commit = self._with_output(BlockCommit(plans=seen.changed), output)
+            commit.occurrences = [*seen.occurrences, *commit.occurrences]
+            if not self._commit(commit, stop):
+                return
+        self.plant, self.state = seen.plant, output.state
 
     def _roll_up_for_a_while(self) -> bool:
         """Take steps of the rollups that hold up no block for long; a step of thin records is short. Return whether more is to do."""
@@ -379,6 +395,7 @@ class Worker:
             plant, state = self.plant, self.state
             if ruling.outcome == "applied":
                 plant, state, commit.animal_states = context.taken_up()
+                commit.plans = context.changed_plans
             if not self._commit(commit, stop):
                 return
             self._inbox_seq = seq
@@ -468,7 +485,7 @@ class Worker:
     def _plant(self, site: Site, text: str, numbers: Numbers) -> Plant:
         connection = self.store.connection
         self._committed_halves = restoring.meta_text(connection, "waiting_halves") or "{}"
-        return plant(
+        installed = plant(
             site,
             text=text,
             has_horizon=not self._is_replay,
@@ -479,6 +496,7 @@ class Worker:
             waiting_halves=msgspec.json.decode(self._committed_halves),
             services=restoring.services(connection),
         )
+        return installed.after_plans(plans.with_say(connection), now_us=self._clock.now_us())
 
     def _restore(self) -> None:
         """Take up chain state and newest times from the store, by the ids of the plant."""

@@ -36,7 +36,9 @@ def print_memory(folder: Path) -> None:
 
 
 def print_quality() -> None:
-    print("a million readings through conversion, uncertainty and all quality tests (asked for: less than 8 times bare):")
+    print(
+        "a million readings through conversion, uncertainty and all quality tests (asked for: less than 8 times bare):"
+    )
     for line in speed.measure().lines():
         print(f"   {line}")
 

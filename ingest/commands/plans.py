@@ -36,6 +36,7 @@ NEEDED_ROLE = {START: "biologist", STEP_DONE: "operator", PAUSE: "operator", RES
 ROLE_FOR_ANOTHER_PLAN = "biologist"
 
 MOST_LITRES = 1e9
+LONGEST_STEP_MIN = 366 * 24 * 60.0
 
 
 class StartEntry(msgspec.Struct, frozen=True, kw_only=True, forbid_unknown_fields=True):
@@ -175,7 +176,8 @@ def _check(tank: str, record: dict[str, Any], agreed: dict[str, str], context: C
         raise _RefusedError("unusable_details")
     for step in plan.steps:
         is_sound = 0 <= step.salinity_low <= step.salinity <= step.salinity_high < math.inf
-        if not is_sound or step.start.tzinfo is None or step.start < moment or not step.duration_min >= 0:
+        is_sound = is_sound and 0 <= step.duration_min <= LONGEST_STEP_MIN
+        if not is_sound or step.start.tzinfo is None or step.start < moment:
             raise _RefusedError("unusable_details")
         moment = step.start
 

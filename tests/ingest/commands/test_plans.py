@@ -83,6 +83,8 @@ def _with_step(of: Plan, **change: object) -> Plan:
         (replace(DOWN, steps=DOWN.steps[1:]), "unusable_details"),
         (_with_step(DOWN, salinity_low=math.nan), "unusable_details"),
         (_with_step(DOWN, salinity_high=math.inf), "unusable_details"),
+        (_with_step(DOWN, duration_min=math.inf), "unusable_details"),
+        (_with_step(DOWN, duration_min=math.nan), "unusable_details"),
     ],
 )
 def test_a_plan_that_is_none_or_is_not_for_this_tank_is_refused(bench: Bench, wrong: Plan, reason: str) -> None:

@@ -29,11 +29,13 @@ from ingest.words.alarms import QUANTITY_OF_CODE
 from ingest.words.times import local
 
 if TYPE_CHECKING:
+    from collections.abc import Sequence
     from pathlib import Path
 
     from ingest.clock import Clock
     from ingest.site.models import Site
     from ingest.store.ledger import Event
+    from ingest.store.plans import TankPlan
     from ingest.store.queries import Cohort, History, Outcome, Refused, StressHistory
 
 SNAPSHOT_S = 0.9
@@ -221,8 +223,10 @@ class Access:
             today=self._raised_today(site, now_us),
         )
 
-    def _installed(self, site: Site, cohorts: tuple[Cohort, ...]) -> Installed:
-        return installed(site, cohorts, tables=self._queries.folder / "ion_tables")
+    def _installed(
+        self, site: Site, cohorts: tuple[Cohort, ...], plans: Sequence[TankPlan] = (), now_us: int = 0
+    ) -> Installed:
+        return installed(site, cohorts, tables=self._queries.folder / "ion_tables", plans=plans, now_us=now_us)
 
     def trend(self, tank: TankSight, kind: str) -> Trend:
         """Return where a tank's "salinity" or "temperature" is heading; looked up anew every few seconds."""
@@ -274,7 +278,8 @@ class Access:
     def _slow(self, site: Site, now_us: int) -> tuple[Installed, dict[str, DayLine]]:
         lines = self._queries.day_lines(from_us=now_us - DAY_US, to_us=now_us + HOUR_US)
         days = {sensor: DayLine(times / MICROSECONDS_PER_SECOND, values) for sensor, (times, values) in lines.items()}
-        return self._installed(site, tuple(self._queries.cohorts())), days
+        plans = self._queries.plans()
+        return self._installed(site, tuple(self._queries.cohorts()), plans, now_us), days
 
     def _raised_today(self, site: Site, now_us: int) -> tuple[tuple[int, str], ...]:
         events = self._queries.events(kind_prefix="alarm.raised", from_us=midnight_us(now_us, site), most=200)

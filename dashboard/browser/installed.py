@@ -6,6 +6,8 @@ import math
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
+import numpy as np
+
 from analysis.animal.fallbacks import resolved
 from analysis.animal.tables import load
 from analysis.errors import EuryhaleError
@@ -17,7 +19,7 @@ from ingest.chain.tanks import tank_roster
 from ingest.water_kinds import kinds_of
 
 if TYPE_CHECKING:
-    from collections.abc import Mapping
+    from collections.abc import Mapping, Sequence
     from pathlib import Path
 
     from analysis.animal.fallbacks import Resolved
@@ -25,6 +27,7 @@ if TYPE_CHECKING:
     from analysis.water.properties import WaterKind
     from ingest.site.models import Site
     from ingest.site.waters import Analysis
+    from ingest.store.plans import TankPlan
     from ingest.store.queries import Cohort
 
 
@@ -42,13 +45,21 @@ class Installed:
     """What analysed waters are short of, by the id of the analysis."""
 
 
-def installed(site: Site, cohorts: tuple[Cohort, ...], *, tables: Path) -> Installed:
+def installed(
+    site: Site, cohorts: tuple[Cohort, ...], *, tables: Path, plans: Sequence[TankPlan] = (), now_us: int = 0
+) -> Installed:
     """Return what follows from *site* and the animals in its tanks; the bands are the very ones that the chain judges."""
     kinds = kinds_of(site, tables=tables)
     stocked = stocked_tanks(site, cohorts)
     sensors = roster(site, kinds)
     stages = animal_roster(site, kinds, stocked)
     tanks = tank_roster(site, sensors, is_larva=stages.is_larva, tolerable=stages.tolerable_salinity)
+    moved = np.full((3, len(site.tanks)), np.nan)
+    for plan in plans:
+        if plan.has_say and plan.tank in site.tank_index:
+            moved[:, site.tank_index[plan.tank]] = plan.salinities(now_us)
+    if not np.isnan(moved).all():
+        tanks = tanks.under_plans(target=moved[0], low=moved[1], high=moved[2])
     numbers = {cohort.id: cohort.number for cohort in cohorts}
     numbers |= {tank.first_stock.id: tank.first_stock.number for tank in site.tanks if tank.first_stock and not cohorts}
     salinity, temperature, animals = {}, {}, {}
@@ -57,6 +68,10 @@ def installed(site: Site, cohorts: tuple[Cohort, ...], *, tables: Path) -> Insta
         tide = point is not None and point.tidal_band is not None
         low, high = float(tanks.salinity.low[i]), float(tanks.salinity.high[i])
         target = math.nan if point is None or point.salinity is None else point.salinity
+        if np.isfinite(moved[1, i]):
+            target, tide = (low + high) / 2, False  # A plan runs: its band is what the alarms judge.
+        elif np.isfinite(moved[0, i]):
+            target, tide = float(moved[0, i]), False
         salinity[tank.id] = _band(target, low, high, is_tidal=tide)
         warm = math.nan if point is None or point.temperature_degC is None else point.temperature_degC
         temperature[tank.id] = _band(warm, float(tanks.temperature.low[i]), float(tanks.temperature.high[i]))

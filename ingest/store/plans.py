@@ -72,6 +72,13 @@ class TankPlan:
         """Whether the limits of its tank follow from it: while it runs, and after where it has led."""
         return self.is_running or not math.isnan(self.target)
 
+    def salinities(self, at_us: int) -> tuple[float, float, float]:
+        """Return where the tank should be now (NaN: where the site file says) and the band of the plan that runs (NaN: none)."""
+        if not self.is_running:
+            return self.target, math.nan, math.nan
+        band = self.band(at_us)
+        return self.target, band.low, band.high
+
     def moment(self, at_us: int) -> datetime:
         """Return a time as the plan's clock shows it."""
         return to_datetime(at_us).astimezone(self.state.task.begins_at.tzinfo)

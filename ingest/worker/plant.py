@@ -105,10 +105,7 @@ class Plant:
             return self
         moved = np.full((3, len(self.tanks)), np.nan)
         for tank, plan in plans.items():
-            moved[0, index[tank]] = plan.target
-            if plan.is_running:
-                band = plan.band(now_us)
-                moved[1:, index[tank]] = band.low, band.high
+            moved[:, index[tank]] = plan.salinities(now_us)
         if self.moved is not None and np.array_equal(moved, self.moved, equal_nan=True):
             return replace(self, plans=plans)
         return replace(self, plans=plans, moved=moved, tanks=_moved(self.tanks, moved))

@@ -19,6 +19,8 @@ from ingest.store.inbox import Inbox, InboxTaker
 from ingest.words import times
 from tests.dashboard.browser.conftest import NOW_US
 from tests.dashboard.browser.scene import Scene, make_scene
+from tests.harness.hatchery import START_US, Bench
+from tests.ingest import plan_work
 
 
 def sensor(name: str = "a", **changes) -> SensorSight:
@@ -168,3 +170,16 @@ def test_the_day_begins_at_the_sites_midnight(access: Access):
     start = midnight_us(NOW_US, access.site)
     assert times.clock(start, access.site.zone, has_seconds=True) == "00:00:00"
     assert 0 <= NOW_US - start < 25 * 3600 * 10**6
+
+
+def test_a_tank_under_a_plan_shows_the_band_that_the_alarms_judge(tmp_path: Path) -> None:
+    with Bench(tmp_path, plan_work.text(), now_us=START_US) as bench:
+        plan_work.water_until(bench, 0.0, 20.0)
+        down = plan_work.plan()
+        plan_work.start(bench, down)
+        plan_work.follow_down(bench, down, steps=4)
+        judged = bench.worker.plant.tanks.salinity
+        clock = FakeClock(bench.clock.now_us())
+        (tank,) = (sight for sight in Access(bench.site_file, clock).snapshot().tanks if sight.id == "t0")
+        assert tank.salinity.limits == pytest.approx((float(judged.low[0]), float(judged.high[0])))
+        assert tank.salinity.limits[0] < 19.0, "below the band of the site file's set point"

@@ -180,6 +180,6 @@ def test_a_tank_under_a_plan_shows_the_band_that_the_alarms_judge(tmp_path: Path
         plan_work.follow_down(bench, down, steps=4)
         judged = bench.worker.plant.tanks.salinity
         clock = FakeClock(bench.clock.now_us())
-        (tank,) = (sight for sight in Access(bench.site_file, clock).snapshot().tanks if sight.id == "t0")
+        (tank,) = (sight for sight in Access(bench.site_file, clock=clock).snapshot().tanks if sight.id == "t0")
         assert tank.salinity.limits == pytest.approx((float(judged.low[0]), float(judged.high[0])))
         assert tank.salinity.limits[0] < 19.0, "below the band of the site file's set point"

@@ -12,7 +12,12 @@ pytest_plugins = ["tests.harness.broker", "tests.harness.influx"]
 
 # The same examples on every machine: a failure is the code's, never the dice's.
 settings.register_profile(
-    "euryhale", derandomize=True, deadline=None, suppress_health_check=[HealthCheck.too_slow], print_blob=True
+    "euryhale",
+    max_examples=60,
+    derandomize=True,
+    deadline=None,
+    suppress_health_check=[HealthCheck.too_slow],
+    print_blob=True,
 )
 settings.load_profile("euryhale")
 

@@ -42,10 +42,11 @@ def run(args: argparse.Namespace) -> int:
     """Work until told to stop."""
     logs.set_up()
     stop = threading.Event()
-    clock = ReplayClock() if args.clock == "replay" else SystemClock()
-    worker = Worker(args.site, clock=clock)
+    # Before the worker takes its store: whoever asks it to stop while it starts is heard too.
     for number in (signal.SIGINT, signal.SIGTERM):
         signal.signal(number, lambda *_: stop.set())
+    clock = ReplayClock() if args.clock == "replay" else SystemClock()
+    worker = Worker(args.site, clock=clock)
     signal.signal(signal.SIGHUP, lambda *_: worker.reload_soon())
     # What is loaded now stays for years: the collector need not look at it again at every block.
     gc.collect()

@@ -637,7 +637,7 @@ BOARD: Final = {
     "lasted": "lasted",
     "taken": "taken by",
     "again": "raised again",
-    "times": "{n} times",
+    "times": "{n} ×",
     "still_there": "still there",
     "by_nobody": "nobody",
     "after": "after {waited}",
